@@ -1,0 +1,36 @@
+# Paths here are relative, so that the project may lie in a folder with a space in its name.
+PYTHON ?= python3
+ARGS ?=
+VENV_PYTHON := .venv/bin/python
+
+.DEFAULT_GOAL := help
+.PHONY: help demo test check bench lock clean setup-run setup-test setup-dev
+.NOTPARALLEL:
+MAKEFLAGS += --no-print-directory
+
+help: ## This list
+	@echo "make TARGET [ARGS=\"...\"] [PYTHON=python3.12]"
+	@awk -F ':.*## ' '/^[a-z-]+:.*## / { printf "  %-7s %s\n", $$1, $$2 }' Makefile
+
+demo: setup-run ## The demonstration: a request, its stock, its written procedure
+	@$(VENV_PYTHON) manage.py demo $(ARGS)
+
+test: setup-test ## All tests, on SQLite and on PostgreSQL; ARGS="-k name" picks some
+	@$(VENV_PYTHON) tools/run_tests.py $(ARGS)
+
+check: setup-dev ## Style, types, import rules, migrations, nothing of this machine in the tree
+	@$(VENV_PYTHON) tools/run_checks.py
+
+bench: setup-test ## Measure the speed of planning and of the ledger
+	@$(VENV_PYTHON) -m tests.bench $(ARGS)
+
+lock: ## Make the lock files again from pyproject.toml; ARGS=--upgrade takes new versions
+	@$(PYTHON) tools/make_locks.py $(ARGS)
+
+clean: ## Delete what the targets above made: .venv and caches; your data in var and out stays
+	@if [ -e .venv/setup.json ]; then rm -rf .venv; fi
+	@rm -rf .pytest_cache .mypy_cache .ruff_cache .hypothesis .import_linter_cache
+	@find . \( -name .git -o -name .venv \) -prune -o -name __pycache__ -type d -prune -exec rm -rf {} +
+
+setup-run setup-test setup-dev:
+	@$(PYTHON) tools/setup_env.py $(@:setup-%=%)

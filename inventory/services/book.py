@@ -1,0 +1,109 @@
+"""The one writer of movements: balances and book change together or not at all."""
+
+import uuid
+from collections import defaultdict
+from collections.abc import Sequence
+from dataclasses import dataclass
+from decimal import Decimal
+
+from inventory import locks
+from inventory.errors import Shortfall, StockShort
+from inventory.models import Balance, Movement
+from labplan.base import clock
+from labplan.base.rights import Actor
+
+
+@dataclass(frozen=True)
+class BookLine:
+    """One movement to be written. Amounts in the base unit of the bottle."""
+
+    bottle_id: int
+    kind: str
+    on_hand_change: int = 0
+    held_change: int = 0
+    entered_amount: str = ""
+    entered_unit: str = ""
+    density_g_per_ml: Decimal | None = None
+    amount_nmol: int | None = None
+    hold_id: int | None = None
+    keep_back: int = 0
+
+
+def write_lines(
+    lines: Sequence[BookLine], *, actor: Actor, project_id: int | None, reason: str
+) -> uuid.UUID:
+    """Move the balances and append the movements in the caller's transaction.
+
+    Raises StockShort with every bottle that has too little; the caller's transaction must then
+    roll back. Returns the operation id that all the movements share.
+    """
+    by_bottle: dict[int, list[tuple[int, BookLine]]] = defaultdict(list)
+    for number, line in enumerate(lines, start=1):
+        by_bottle[line.bottle_id].append((number, line))
+    after = locks.move_balances([_change(bottle, found) for bottle, found in by_bottle.items()])
+    if len(after) < len(by_bottle):
+        raise _short({b: found for b, found in by_bottle.items() if b not in after})
+    operation = uuid.uuid4()
+    booked_on, recorded_at = clock.today(), clock.now()
+    rows = []
+    for bottle_id in sorted(by_bottle):
+        found = [line for _, line in by_bottle[bottle_id]]
+        for line, seq, on_hand, held in _walk(found, after[bottle_id]):
+            rows.append(
+                Movement(
+                    bottle_id=bottle_id, seq=seq, kind=line.kind,
+                    on_hand_change=line.on_hand_change, held_change=line.held_change,
+                    on_hand_after=on_hand, held_after=held,
+                    entered_amount=line.entered_amount, entered_unit=line.entered_unit,
+                    density_g_per_ml=line.density_g_per_ml, amount_nmol=line.amount_nmol,
+                    hold_id=line.hold_id, operation=operation, project_id=project_id,
+                    actor_code=actor.code, reason=reason, booked_on=booked_on,
+                    recorded_at=recorded_at,
+                )
+            )  # fmt: skip
+    Movement.objects.bulk_create(rows, batch_size=500)
+    return operation
+
+
+def _change(bottle_id: int, found: list[tuple[int, BookLine]]) -> locks.BalanceChange:
+    lines = [line for _, line in found]
+    return locks.BalanceChange(
+        bottle_id=bottle_id,
+        on_hand_change=sum(line.on_hand_change for line in lines),
+        held_change=sum(line.held_change for line in lines),
+        lines=len(lines),
+        keep_back=max(line.keep_back for line in lines),
+    )
+
+
+def _walk(lines: list[BookLine], after: locks.BalanceAfter) -> list[tuple[BookLine, int, int, int]]:
+    """Number the lines of one bottle and give the sums after each, ending in the new balance."""
+    seq = after.seq - len(lines)
+    on_hand = after.on_hand - sum(line.on_hand_change for line in lines)
+    held = after.held - sum(line.held_change for line in lines)
+    walked = []
+    for line in lines:
+        seq, on_hand, held = seq + 1, on_hand + line.on_hand_change, held + line.held_change
+        walked.append((line, seq, on_hand, held))
+    return walked
+
+
+def _short(refused: dict[int, list[tuple[int, BookLine]]]) -> StockShort:
+    balances = Balance.objects.select_related("bottle").in_bulk(refused)
+    shortfalls = []
+    for bottle_id, found in refused.items():
+        balance = balances[bottle_id]
+        keep_back = max(line.keep_back for _, line in found)
+        shortfalls.append(
+            Shortfall(
+                line=found[0][0],
+                bottle=balance.bottle.code,
+                needed=sum(line.held_change for _, line in found),
+                usable=max(0, balance.on_hand - balance.held - keep_back),
+            )
+        )
+    bottles = ", ".join(sorted(shortfall.bottle for shortfall in shortfalls))
+    return StockShort(
+        f"Not enough left in {bottles}: somebody may have claimed it meanwhile.",
+        shortfalls=tuple(sorted(shortfalls, key=lambda s: s.line)),
+    )

@@ -1,0 +1,119 @@
+"""Set amounts aside and give them back."""
+
+import uuid
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import date
+from decimal import Decimal
+
+from django.db.models import F
+
+from inventory import locks
+from inventory.errors import StockShort
+from inventory.models import Bottle, Hold, Reservation
+from inventory.services.book import BookLine, write_lines
+from labplan.base import clock
+from labplan.base.errors import NotFound, StateForbids
+from labplan.base.rights import Actor, require
+
+
+@dataclass(frozen=True)
+class HoldLine:
+    """One line to set aside: an amount of a bottle in its base unit, as it was asked for."""
+
+    bottle_code: str
+    amount: int
+    entered_amount: str
+    entered_unit: str
+    density_g_per_ml: Decimal | None = None
+    amount_nmol: int | None = None
+
+
+def hold_lines(
+    *, actor: Actor, project_id: int, purpose: str, expires_on: date, lines: Sequence[HoldLine],
+    operation: str = "procedure.request",
+) -> Reservation:  # fmt: skip
+    """Set every line aside or none, in the caller's open transaction.
+
+    Guarantees that on hand - held never falls under the heel of a bottle. Raises NotAllowed,
+    StockShort (all short bottles listed; the caller rolls back) or NotFound for a bottle code.
+    """
+    require(actor, operation, project_id=project_id)
+    bottles = _bottles_by_code(lines)
+    reservation = Reservation.objects.create(
+        code=uuid.uuid4(), project_id=project_id, actor_code=actor.code, purpose=purpose,
+        expires_on=expires_on, created_at=clock.now(),
+    )  # fmt: skip
+    holds = Hold.objects.bulk_create(
+        Hold(
+            reservation=reservation,
+            line=number,
+            bottle=bottles[line.bottle_code],
+            amount=line.amount,
+        )
+        for number, line in enumerate(lines, start=1)
+    )
+    write_lines(
+        [_book_line(line, hold, bottles) for line, hold in zip(lines, holds, strict=True)],
+        actor=actor, project_id=project_id, reason=purpose,
+    )  # fmt: skip
+    return reservation
+
+
+def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
+    """Give back what a reservation still holds, in the caller's open transaction.
+
+    Raises NotFound, NotAllowed, and StateForbids when it is closed already.
+    """
+    reservation = Reservation.objects.select_for_update(no_key=True).filter(code=code).first()
+    if reservation is None:
+        raise NotFound("There is no reservation with this code.")
+    require(actor, "reservation.release", project_id=reservation.project_id)
+    if reservation.state != Reservation.State.OPEN:
+        raise StateForbids("This reservation is closed; it holds nothing any more.")
+    holds = list(reservation.holds.filter(state=Hold.State.OPEN).order_by("line"))
+    write_lines(
+        [_give_back_line(hold) for hold in holds],
+        actor=actor, project_id=reservation.project_id, reason=reason,
+    )  # fmt: skip
+    reservation.holds.filter(state=Hold.State.OPEN).update(
+        given_back=F("amount") - F("used"), state=Hold.State.RELEASED
+    )
+    reservation.state = Reservation.State.CLOSED
+    reservation.version += 1
+    reservation.save(update_fields=["state", "version"])
+
+
+def keep_still(bottle_codes: Sequence[str]) -> None:
+    """Let nobody else move these bottles until the caller's transaction ends."""
+    locks.lock_balances(Bottle.objects.filter(code__in=bottle_codes).values_list("pk", flat=True))
+
+
+def _bottles_by_code(lines: Sequence[HoldLine]) -> dict[str, Bottle]:
+    codes = {line.bottle_code for line in lines}
+    bottles = {bottle.code: bottle for bottle in Bottle.objects.filter(code__in=codes)}
+    missing = sorted(codes - bottles.keys())
+    if missing:
+        raise NotFound(f"There is no bottle {', '.join(missing)}.")
+    unusable = sorted(c for c, b in bottles.items() if b.status != Bottle.Status.USABLE)
+    if unusable:
+        raise StockShort(f"Set aside from use: {', '.join(unusable)}.")
+    return bottles
+
+
+def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLine:
+    bottle = bottles[line.bottle_code]
+    return BookLine(
+        bottle_id=bottle.pk, kind="hold", held_change=line.amount,
+        entered_amount=line.entered_amount, entered_unit=line.entered_unit,
+        density_g_per_ml=line.density_g_per_ml, amount_nmol=line.amount_nmol,
+        hold_id=hold.pk, keep_back=bottle.heel,
+    )  # fmt: skip
+
+
+def _give_back_line(hold: Hold) -> BookLine:
+    left = hold.amount - hold.used
+    return BookLine(
+        bottle_id=hold.bottle_id, kind="release", held_change=-left, hold_id=hold.pk,
+        entered_amount=str(left), entered_unit="base unit",
+    )  # fmt: skip

@@ -1,0 +1,92 @@
+"""Read a stock list from CSV: everything or nothing, every error with its row and column."""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from django.db import transaction
+
+from inventory.errors import ImportRefused
+from inventory.models import Bottle, Place
+from inventory.services.csv_rows import RowErrors, read_rows
+from inventory.services.receipt import BottleReceipt, receive_bottles
+from inventory.services.stock_row import PLACE_COLUMNS, STOCK_COLUMNS, read_receipt
+from inventory.services.substances import SubstanceFinder
+from labplan.base.events import record_event
+from labplan.base.rights import Actor, require
+
+MOST_ERRORS_SHOWN = 200
+
+
+@dataclass(frozen=True)
+class ImportResult:
+    places: int
+    bottles: int
+
+
+def import_stock(
+    *, actor: Actor, bottles_file: Path, places_file: Path | None = None,
+    progress: Callable[[int, int], None] | None = None,
+) -> ImportResult:  # fmt: skip
+    """Import places and bottles from CSV in one transaction.
+
+    Raises NotAllowed, and ImportRefused listing every error; then nothing has changed. A second
+    import of the same file is refused: its bottles are there already.
+    """
+    require(actor, "stock.receive")
+    errors = RowErrors()
+    with transaction.atomic(durable=True):
+        places = _import_places(places_file, errors) if places_file else 0
+        receipts = _read_receipts(bottles_file, errors, progress)
+        if errors.found:
+            raise ImportRefused(
+                f"{len(errors.found)} error(s) in the file; correct them and import it again. "
+                "Nothing was changed.",
+                errors=tuple(errors.found[:MOST_ERRORS_SHOWN]),
+            )
+        count = receive_bottles(receipts, actor=actor, reason=f"import of {bottles_file.name}")
+        record_event(
+            actor_code=actor.code, kind="stock.imported", subject=bottles_file.name,
+            after={"places": places, "bottles": count},
+        )  # fmt: skip
+    return ImportResult(places=places, bottles=count)
+
+
+def _import_places(path: Path, errors: RowErrors) -> int:
+    count = 0
+    for row in read_rows(path, PLACE_COLUMNS, required={"code", "name"}, errors=errors):
+        _, made = Place.objects.update_or_create(
+            code=row.text("code"),
+            defaults={
+                "name": row.text("name"),
+                "is_locked": row.choice("is_locked", ("yes", "no", "")) == "yes",
+                "temperature_c": row.decimal("temperature_c"),
+            },
+        )
+        count += made
+    return count
+
+
+def _read_receipts(
+    path: Path, errors: RowErrors, progress: Callable[[int, int], None] | None
+) -> list[BottleReceipt]:
+    rows = read_rows(
+        path, STOCK_COLUMNS, errors=errors,
+        required={"code", "substance", "amount", "unit", "place", "received_on"},
+    )  # fmt: skip
+    places = {place.code: place for place in Place.objects.all()}
+    finder = SubstanceFinder()
+    codes = {row.text("code") for row in rows}
+    there = set(Bottle.objects.filter(code__in=codes).values_list("code", flat=True))
+    receipts, seen = [], set()
+    for number, row in enumerate(rows, start=1):
+        code = row.text("code")
+        if code in there or code in seen:
+            row.error("code", "bottle_exists", f"There is a bottle {code} already.")
+        seen.add(code)
+        receipt = read_receipt(row, places, finder)
+        if receipt is not None:
+            receipts.append(receipt)
+        if progress:
+            progress(number, len(rows))
+    return receipts

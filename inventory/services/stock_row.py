@@ -1,0 +1,187 @@
+"""One line of a stock list -> one bottle to be received."""
+
+import re
+from decimal import Decimal
+from typing import Any
+
+from inventory.models import Bottle, Form, Place
+from inventory.models.checks import LARGEST_AMOUNT
+from inventory.services.csv_rows import Row
+from inventory.services.receipt import BottleReceipt
+from inventory.services.substances import SubstanceFinder
+from labplan.base import clock
+from labplan.chemistry.masses import molar_mass_of_formula
+
+PLACE_COLUMNS = ("code", "name", "is_locked", "temperature_c")
+STOCK_COLUMNS = (
+    "code", "substance", "cas", "smiles", "kind",
+    "form", "hydrate_water", "solution_basis", "solution_value", "solution_solvent",
+    "solution_temperature_c", "active_share_pct",
+    "amount", "unit", "assay_pct", "assay_of", "assay_kind",
+    "density_g_per_ml", "density_temperature_c", "water_ppm", "water_read_on", "activated_on",
+    "stabiliser", "stabiliser_amount_pct", "stabiliser_basis",
+    "lot", "supplier", "place", "received_on", "opened_on", "expires_on", "status", "note",
+)  # fmt: skip
+# unit -> (how the bottle is measured, base units in one)
+UNITS = {
+    "mg": ("mass", 1_000),
+    "g": ("mass", 1_000_000),
+    "kg": ("mass", 1_000_000_000),
+    "uL": ("volume", 1_000),
+    "mL": ("volume", 1_000_000),
+    "L": ("volume", 1_000_000_000),
+    "pieces": ("count", 1),
+}
+ACTIVATION_C = Decimal(300)
+_CODE = re.compile(r"[A-Za-z0-9][A-Za-z0-9._-]{0,23}")
+
+
+def read_receipt(
+    row: Row, places: dict[str, Place], finder: SubstanceFinder
+) -> BottleReceipt | None:
+    """Check one line; note every error on the row and return None if there was one."""
+    before = len(row.errors.found)
+    if row.text("code") and not _CODE.fullmatch(row.text("code")):
+        row.error("code", "bad_code", "1 to 24 letters, digits, dots, dashes or underscores.")
+    measured_by, amount = _amount(row)
+    place = places.get(row.text("place"))
+    if place is None and row.text("place"):
+        row.error("place", "unknown_place", f"There is no place {row.text('place')!r}.")
+    form = _form(row, finder)
+    fields = _bottle_fields(row)
+    readings = _readings(row)
+    substance = finder.find(row)
+    if len(row.errors.found) > before or substance is None or place is None:
+        return None
+    return BottleReceipt(
+        code=row.text("code"), substance=substance, form=form, place=place,
+        measured_by=measured_by, amount=amount,
+        entered_amount=row.text("amount"), entered_unit=row.text("unit"),
+        fields=fields, readings=readings,
+    )  # fmt: skip
+
+
+def _amount(row: Row) -> tuple[str, int]:
+    unit = row.text("unit")
+    value = row.decimal("amount", lowest="0", highest="1e15", places=9)
+    if unit and unit not in UNITS:
+        row.error("unit", "unknown_unit", f"{unit!r} is not one of: {', '.join(UNITS)}.")
+    if value is None or unit not in UNITS:
+        return "mass", 0
+    measured_by, factor = UNITS[unit]
+    base = value * factor
+    if base != base.to_integral_value():
+        row.error("amount", "too_many_digits", "More digits than micrograms or nanolitres hold.")
+    elif not 1 <= base <= LARGEST_AMOUNT:
+        row.error("amount", "out_of_range", "The amount must be above 0 and below 1 Gg.")
+    return measured_by, int(base)
+
+
+def _form(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
+    kind = row.choice("form", ("", *Form.Kind.values)) or "neat"
+    fields: dict[str, Any] = {"kind": kind, "label": kind.replace("_", " ")}
+    if kind == "hydrate":
+        water = _needed(row, "hydrate_water", lowest="0.001", highest="30", places=3)
+        fields |= {"hydrate_water": water, "label": f"hydrate, {_plain(water)} water"}
+    if kind == "solution":
+        fields |= _solution(row, finder)
+    if kind == "anomer_mixture":
+        share = _needed(row, "active_share_pct", lowest="0.001", highest="100", places=3)
+        fields |= {
+            "active_share_pct": share,
+            "label": f"anomer mixture, {_plain(share)} % reacts",
+        }
+    return fields
+
+
+def _solution(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
+    basis = row.choice("solution_basis", tuple(Form.SolutionBasis.values))
+    value = _needed(row, "solution_value", lowest="0.0001", highest="10000")
+    solvent = finder.find_solvent(row)
+    temperature = row.decimal("solution_temperature_c", places=1)
+    words = {"pct_w_w": "% w/w", "pct_w_v": "% w/v", "mol_per_l": "mol/L",
+             "equiv_per_g": "equiv/g", "equiv_per_l": "equiv/L"}.get(basis, basis)  # fmt: skip
+    inside = f" in {solvent.name.lower()}" if solvent else ""
+    return {
+        "solution_basis": basis, "solution_value": value, "solution_solvent": solvent,
+        "solution_temperature_c": temperature,
+        "label": f"solution, {_plain(value)} {words}{inside}",
+    }  # fmt: skip
+
+
+def _needed(row: Row, column: str, **bounds: Any) -> Decimal | None:
+    value = row.decimal(column, **bounds)
+    if value is None and not row.text(column):
+        row.error(column, "missing", f"A {row.text('form')} needs this value.")
+    return value
+
+
+def _plain(value: Decimal | None) -> str:
+    return f"{value.normalize():f}" if value is not None else "?"
+
+
+def _bottle_fields(row: Row) -> dict[str, Any]:
+    opened, expires = row.day("opened_on"), row.day("expires_on")
+    fields = {
+        "lot": row.text("lot"),
+        "supplier": row.text("supplier"),
+        "assay_pct": row.decimal("assay_pct", lowest="0.0001", highest="100"),
+        "assay_of": _assay_of(row),
+        "assay_kind": row.choice("assay_kind", ("", *Bottle.AssayKind.values)) or "unspecified",
+        "density_g_per_ml": row.decimal("density_g_per_ml", lowest="0.1", highest="25"),
+        "density_temperature_c": row.decimal("density_temperature_c", places=1),
+        "received_on": row.day("received_on"),
+        "opened_on": opened,
+        "expires_on": expires,
+        "status": row.choice("status", ("", *Bottle.Status.values)) or "usable",
+        "note": row.text("note"),
+    }
+    for column, longest in (("lot", 60), ("supplier", 80), ("note", 200)):
+        if len(row.text(column)) > longest:
+            row.error(column, "too_long", f"At most {longest} characters.")
+    return fields | _stabiliser(row)
+
+
+def _assay_of(row: Row) -> str:
+    of = row.text("assay_of") or "as_is"
+    if of not in ("as_is", "anhydrous", "hydrate"):
+        try:
+            molar_mass_of_formula(of)
+        except ValueError:
+            row.error(
+                "assay_of", "not_a_formula",
+                "Give as_is, anhydrous, hydrate, or the formula the assay counts, such as BF3.",
+            )  # fmt: skip
+    return of
+
+
+def _stabiliser(row: Row) -> dict[str, Any]:
+    """`none`, a name, `unknown`, or nothing where no stabiliser is in question."""
+    name = row.text("stabiliser")
+    state = {"": "not_applicable", "none": "none", "unknown": "unknown"}.get(name.lower(), "known")
+    return {
+        "stabiliser_state": state,
+        "stabiliser_name": name if state == "known" else "",
+        "stabiliser_amount_pct": row.decimal(
+            "stabiliser_amount_pct", lowest="0", highest="100", places=6
+        ),
+        "stabiliser_basis": row.choice("stabiliser_basis", ("", "w/w", "v/v")),
+    }
+
+
+def _readings(row: Row) -> tuple[tuple[str, Decimal, Any], ...]:
+    found = []
+    water = row.decimal("water_ppm", lowest="0", highest="1000000")
+    if water is not None:
+        read_on = row.day("water_read_on")
+        if read_on is None:
+            row.error("water_read_on", "missing", "A water reading needs its date.")
+        found.append(("water_ppm", water, read_on))
+    activated = row.day("activated_on")
+    if activated is not None:
+        found.append(("activation_c", ACTIVATION_C, activated))
+    for column in ("water_read_on", "activated_on", "received_on", "opened_on"):
+        day = row.day(column) if row.text(column) else None
+        if day is not None and day > clock.today():
+            row.error(column, "in_the_future", f"{day} has not come yet.")
+    return tuple(found)

@@ -1,0 +1,89 @@
+"""Serializer building blocks that refuse instead of guessing."""
+
+from decimal import Decimal, InvalidOperation
+from typing import Any
+
+from rest_framework import serializers
+
+from labplan.base.errors import FieldProblem, InvalidValue, MalformedRequest, UnknownField
+
+
+class QuantityField(serializers.Field):
+    """An amount: finite, within [lowest, highest], no more decimals than the base unit holds."""
+
+    default_error_messages = {
+        "not_a_number": "Give a decimal number, as a JSON number or a string like \"2.000\".",
+        "out_of_range": "Give a value from {lowest} to {highest}.",
+        "too_many_digits": "Give at most {places} decimals: {unit} is the smallest unit kept.",
+    }  # fmt: skip
+
+    def __init__(
+        self, *, lowest: str, highest: str, places: int, smallest: str, **kwargs: Any
+    ) -> None:
+        super().__init__(**kwargs)
+        self.lowest, self.highest = Decimal(lowest), Decimal(highest)
+        self.places, self.smallest = places, smallest
+
+    def to_internal_value(self, data: Any) -> Decimal:
+        if isinstance(data, bool) or not isinstance(data, int | str | Decimal):
+            self.fail("not_a_number")
+        if len(str(data)) > 40:
+            self.fail("out_of_range", lowest=self.lowest, highest=self.highest)
+        try:
+            value = Decimal(str(data).strip())
+        except InvalidOperation:
+            self.fail("not_a_number")
+        if not value.is_finite():
+            self.fail("not_a_number")
+        if not self.lowest <= value <= self.highest:
+            self.fail("out_of_range", lowest=self.lowest, highest=self.highest)
+        if value.as_tuple().exponent < -self.places:
+            self.fail("too_many_digits", places=self.places, unit=self.smallest)
+        return value
+
+    def to_representation(self, value: Decimal) -> str:
+        return f"{value:f}"
+
+
+class StrictSerializer(serializers.Serializer):
+    """Unknown fields are an error: a typo must not be taken for a default."""
+
+    def read(self) -> dict[str, Any]:
+        """Return the checked values; raise MalformedRequest, UnknownField or InvalidValue."""
+        if not isinstance(self.initial_data, dict):
+            raise MalformedRequest("Send a JSON object with named fields.")
+        unknown = sorted(set(self.initial_data) - set(self.fields))
+        if unknown:
+            known = ", ".join(sorted(self.fields))
+            raise UnknownField(
+                f"Not known here: {', '.join(unknown)}. The fields are: {known}.",
+                errors=tuple(
+                    FieldProblem(name, "unknown_field", "Remove it or correct its name.")
+                    for name in unknown
+                ),
+            )
+        if not self.is_valid():
+            raise InvalidValue("Correct the fields listed in errors.", errors=_lines(self.errors))
+        return dict(self.validated_data)
+
+
+def _lines(errors: Any) -> tuple[FieldProblem, ...]:
+    return tuple(
+        FieldProblem(field, str(detail.code), str(detail))
+        for field, details in errors.items()
+        for detail in details
+    )
+
+
+def require_known_parameters(request: Any, known: set[str]) -> None:
+    """Refuse a query parameter nobody reads; a typo must not return everything."""
+    unknown = sorted(set(request.query_params) - known)
+    if unknown:
+        raise UnknownField(
+            f"Not known here: {', '.join(unknown)}. "
+            f"This list takes: {', '.join(sorted(known)) or 'no parameters'}.",
+            errors=tuple(
+                FieldProblem(name, "unknown_parameter", "Remove it or correct its name.")
+                for name in unknown
+            ),
+        )

@@ -1,0 +1,31 @@
+"""Make a token for a person and print it once."""
+
+from typing import Any
+
+from django.core.management.base import BaseCommand, CommandError, CommandParser
+
+from labplan.base.errors import DomainError
+from labplan.base.models import ApiToken
+from labplan.base.tokens import DEFAULT_DAYS, create_token
+
+
+class Command(BaseCommand):
+    help = "Make a token for a person; it is printed once and cannot be read again."
+
+    def add_arguments(self, parser: CommandParser) -> None:
+        parser.add_argument("person", help="the person's code")
+        parser.add_argument("--name", required=True, help="what the token is for")
+        parser.add_argument("--scope", choices=ApiToken.Scope.values, default="write")
+        parser.add_argument("--days", type=int, default=DEFAULT_DAYS)
+
+    def handle(self, *args: Any, **options: Any) -> None:
+        try:
+            text = create_token(
+                person_code=options["person"],
+                name=options["name"],
+                scope=options["scope"],
+                days=options["days"],
+            )
+        except DomainError as error:
+            raise CommandError(error.detail) from error
+        self.stdout.write(text)

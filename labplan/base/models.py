@@ -1,0 +1,150 @@
+"""People, projects, tokens; the outbox, the event log and the memory of repeated requests."""
+
+from typing import Any
+
+from django.contrib.auth.base_user import AbstractBaseUser, BaseUserManager
+from django.db import models
+from django.db.models import Q
+
+from labplan.base.append_only import AppendOnlyModel
+
+
+class PersonManager(BaseUserManager):
+    def create_user(self, code: str, password: str | None = None, **fields: Any) -> "Person":
+        person = self.model(code=code, **fields)
+        person.set_password(password)
+        person.save(using=self._db)
+        return person
+
+    def get_by_natural_key(self, code: str) -> "Person":
+        return self.get(code=code)
+
+
+class Person(AbstractBaseUser):
+    """Whoever acts. Ledger and records know the code only; the name can be erased."""
+
+    class SiteRole(models.TextChoices):
+        NONE = "none"
+        ADMINISTRATOR = "administrator"
+        AUDITOR = "auditor"
+
+    code = models.SlugField(max_length=24, unique=True)
+    site_role = models.CharField(max_length=16, choices=SiteRole, default=SiteRole.NONE)
+    is_active = models.BooleanField(default=True)
+
+    USERNAME_FIELD = "code"
+    objects = PersonManager()
+
+    def __str__(self) -> str:
+        return self.code
+
+
+class PersonName(models.Model):
+    """The one row that says who a code is; erasing it leaves every record valid."""
+
+    person = models.OneToOneField(Person, models.CASCADE, primary_key=True, related_name="named")
+    full_name = models.CharField(max_length=120)
+    email = models.EmailField(blank=True)
+
+
+class Project(models.Model):
+    code = models.SlugField(max_length=24, unique=True)
+    title = models.CharField(max_length=160)
+    is_open = models.BooleanField(default=True)
+    created_at = models.DateTimeField()
+
+    def __str__(self) -> str:
+        return self.code
+
+
+class Membership(models.Model):
+    class Role(models.TextChoices):
+        VIEWER = "viewer"
+        CHEMIST = "chemist"
+        STOCK_KEEPER = "stock_keeper"
+        APPROVER = "approver"
+        LEAD = "lead"
+
+    person = models.ForeignKey(Person, models.CASCADE, related_name="memberships")
+    project = models.ForeignKey(Project, models.CASCADE, related_name="memberships")
+    role = models.CharField(max_length=16, choices=Role)
+
+    class Meta:
+        constraints = [
+            models.UniqueConstraint(fields=["person", "project"], name="membership_once"),
+        ]
+
+
+class ApiToken(models.Model):
+    """A token is shown once and kept as its SHA-256."""
+
+    class Scope(models.TextChoices):
+        READ = "read"
+        WRITE = "write"
+
+    person = models.ForeignKey(Person, models.CASCADE, related_name="tokens")
+    name = models.CharField(max_length=60)
+    digest = models.CharField(max_length=64, unique=True)
+    scope = models.CharField(max_length=8, choices=Scope)
+    created_at = models.DateTimeField()
+    expires_at = models.DateTimeField()
+    revoked_at = models.DateTimeField(null=True)
+
+
+class RememberedAnswer(models.Model):
+    """What a request with an Idempotency-Key was answered; written with the work itself."""
+
+    person = models.ForeignKey(Person, models.CASCADE)
+    route = models.CharField(max_length=80)
+    key = models.CharField(max_length=128)
+    fingerprint = models.CharField(max_length=64)
+    status = models.PositiveSmallIntegerField(default=0)
+    headers = models.TextField(default="{}")
+    body = models.TextField(default="")
+    created_at = models.DateTimeField()
+
+    class Meta:
+        constraints = [
+            models.UniqueConstraint(
+                fields=["person", "route", "key"], name="remembered_answer_once"
+            ),
+        ]
+
+
+class OutboxMessage(models.Model):
+    """Work to be done, written in the transaction that asked for it."""
+
+    class State(models.TextChoices):
+        NEW = "new"
+        SENT = "sent"
+        DONE = "done"
+        DEAD = "dead"
+
+    topic = models.CharField(max_length=40)
+    payload = models.TextField()
+    state = models.CharField(max_length=8, choices=State, default=State.NEW)
+    attempts = models.PositiveSmallIntegerField(default=0)
+    created_at = models.DateTimeField()
+    available_at = models.DateTimeField()
+    lease_until = models.DateTimeField(null=True)
+    done_at = models.DateTimeField(null=True)
+    last_error = models.TextField(default="")
+
+    class Meta:
+        indexes = [
+            models.Index(
+                fields=["available_at", "id"],
+                condition=Q(state__in=["new", "sent"]),
+                name="outbox_unfinished",
+            ),
+        ]
+
+
+class Event(AppendOnlyModel):
+    """What happened to a record or a setting: who, when, from what to what."""
+
+    at = models.DateTimeField()
+    actor_code = models.CharField(max_length=24)
+    kind = models.CharField(max_length=60)
+    subject = models.CharField(max_length=80, db_index=True)
+    detail = models.TextField(default="{}")

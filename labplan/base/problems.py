@@ -1,0 +1,113 @@
+"""Every refusal on the wire is application/problem+json (RFC 9457)."""
+
+import logging
+import uuid
+from typing import Any
+
+from django.core.exceptions import PermissionDenied
+from django.db import OperationalError
+from django.http import Http404, HttpRequest, JsonResponse
+from rest_framework import exceptions
+from rest_framework.response import Response
+from rest_framework.views import set_rollback
+
+from labplan.base import errors as domain
+
+logger = logging.getLogger(__name__)
+CONTENT_TYPE = "application/problem+json"
+TYPE_PREFIX = "urn:labplan:problem:"
+
+
+def problem_body(error: domain.DomainError) -> dict[str, Any]:
+    return {
+        "type": TYPE_PREFIX + error.code,
+        "title": error.title,
+        "status": error.status,
+        "code": error.code,
+        "detail": error.detail,
+        "errors": [line.as_dict() for line in error.errors],
+        **error.extra,
+    }
+
+
+def problem_response(exception: Exception, context: dict[str, Any]) -> Response | None:
+    """DRF's exception handler. None (a 500) only for what nobody foresaw."""
+    error = as_domain_error(exception)
+    if error is None:
+        return None
+    set_rollback()
+    headers = {}
+    if error.status == 401:
+        headers["WWW-Authenticate"] = 'Bearer realm="labplan"'
+    if isinstance(error, domain.StillRunning | domain.Busy):
+        headers["Retry-After"] = "1"
+    if allowed := getattr(context.get("view"), "allowed_methods", None):
+        headers["Allow"] = ", ".join(allowed)
+    return Response(
+        problem_body(error), status=error.status, headers=headers, content_type=CONTENT_TYPE
+    )
+
+
+def as_domain_error(exception: Exception) -> domain.DomainError | None:
+    """Translate what the frameworks raise into the one tree of errors."""
+    match exception:
+        case domain.DomainError():
+            return exception
+        case Http404():
+            return domain.NotFound("Check the address; the code may be mistyped.")
+        case exceptions.NotAuthenticated() | exceptions.AuthenticationFailed():
+            return domain.NotAuthenticated(str(exception.detail))
+        case PermissionDenied() | exceptions.PermissionDenied():
+            return domain.NotAllowed("Your token does not allow this.")
+        case exceptions.APIException():
+            return _from_framework(exception)
+        case OperationalError() if is_lock_timeout(exception):
+            return domain.Busy("Somebody else is moving the same bottles; send it again.")
+    return None
+
+
+def is_lock_timeout(error: OperationalError) -> bool:
+    """Whether the database gave up waiting: 55P03, 40P01, 40001, or SQLite's busy."""
+    state = getattr(error.__cause__, "sqlstate", None)
+    return state in {"55P03", "40P01", "40001"} or "database is locked" in str(error)
+
+
+def _from_framework(error: exceptions.APIException) -> domain.DomainError:
+    """Give a framework's own refusal our shape, keeping its status and text."""
+    kind = type(
+        "FrameworkRefusal",
+        (domain.DomainError,),
+        {
+            "code": str(error.default_code),
+            "title": str(error.default_detail),
+            "status": error.status_code,
+        },
+    )
+    made: domain.DomainError = kind(str(error.detail))
+    return made
+
+
+def server_error(request: HttpRequest) -> JsonResponse:
+    """A 500: no detail leaves the house, but a trace id that stands in the log."""
+    trace_id = uuid.uuid4().hex
+    logger.error("unforeseen error %s at %s %s", trace_id, request.method, request.path)
+    return plain_problem(
+        500, "internal_error", f"Something broke here. Tell the operator: {trace_id}."
+    )
+
+
+def not_found(request: HttpRequest, exception: Exception) -> JsonResponse:
+    return plain_problem(404, "not_found", f"Nothing is served at {request.path}.")
+
+
+def plain_problem(status: int, code: str, detail: str) -> JsonResponse:
+    """A problem outside the API's views, where no serializer is at hand."""
+    body = {
+        "type": TYPE_PREFIX + code,
+        "title": code.replace("_", " "),
+        "status": status,
+        "code": code,
+        "detail": detail,
+        "errors": [],
+    }
+    return JsonResponse(body, status=status, content_type=CONTENT_TYPE)

@@ -1,0 +1,39 @@
+"""A list and a single look, the same way everywhere."""
+
+from abc import abstractmethod
+from typing import Any, ClassVar
+
+from django.db.models import QuerySet
+from rest_framework.response import Response
+from rest_framework.views import APIView
+
+from labplan.base.fields import require_known_parameters
+from labplan.base.pagination import NewestFirstPagination
+
+PAGE_PARAMETERS = {"cursor", "page_size"}
+
+
+class ListView(APIView):
+    """GET a page of rows. Subclasses name the filters and give the rows and their form."""
+
+    filters: ClassVar[set[str]] = set()
+    pagination: ClassVar[type[NewestFirstPagination]] = NewestFirstPagination
+
+    def get(self, request: Any, **kwargs: Any) -> Response:
+        require_known_parameters(request, self.filters | PAGE_PARAMETERS)
+        wanted = {
+            name: request.query_params[name]
+            for name in self.filters
+            if name in request.query_params
+        }
+        paginator = self.pagination()
+        page = paginator.paginate_queryset(self.rows(request, wanted, **kwargs), request, self)
+        return paginator.get_paginated_response([self.show(row) for row in page or []])
+
+    @abstractmethod
+    def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Any]:
+        """The rows the actor may see, filtered by what `wanted` names."""
+
+    @abstractmethod
+    def show(self, row: Any) -> dict[str, Any]:
+        """One row as JSON."""

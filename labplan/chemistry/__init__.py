@@ -1,0 +1,1 @@
+"""Structures, sugars, couplings and masses: pure functions, the only importer of RDKit."""

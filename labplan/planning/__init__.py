@@ -1,0 +1,1 @@
+"""From a coupling to a sized, written route: pure functions on values."""

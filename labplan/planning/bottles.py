@@ -1,0 +1,148 @@
+"""Choose the bottle for a charge: one bottle, fit for the job, first to expire."""
+
+from collections.abc import Callable, Iterable
+from dataclasses import dataclass
+from datetime import date, timedelta
+
+from labplan.planning.values import PassedOver, ShelfBottle
+
+# Common practice: a water reading this old says nothing once the bottle is open.
+READING_VALID_AFTER_OPENING_DAYS = 30
+DRY_GRADE_PPM = 30
+_ALCOHOLS = ("ethanol", "methanol", "alcohol", "propanol")
+
+Check = Callable[[ShelfBottle, date], str | None]
+
+
+@dataclass(frozen=True)
+class Choice:
+    """The bottle taken, what was passed over, and the most that any fit bottle could give."""
+
+    bottle: ShelfBottle | None
+    passed_over: tuple[PassedOver, ...]
+    largest_usable: float
+    fit_exists: bool
+
+
+def choose_bottle(
+    bottles: Iterable[ShelfBottle],
+    *,
+    role: str,
+    as_of: date,
+    needed_in: Callable[[ShelfBottle], float | None],
+    checks: tuple[Check, ...] = (),
+    prefer_dry: bool = False,
+) -> Choice:
+    """Take the best bottle that holds enough. `needed_in` gives the amount in its own unit.
+
+    The answer does not depend on the order of `bottles`.
+    """
+    passed: list[PassedOver] = []
+    fit: list[tuple[ShelfBottle, float]] = []
+    for bottle in sorted(bottles, key=lambda b: b.code):
+        against = _against(bottle, as_of, checks)
+        needed = needed_in(bottle) if against is None else None
+        if against is None and needed is None:
+            against = "its label does not say enough to size a charge (assay or density missing)"
+        if against is not None:
+            passed.append(PassedOver(bottle.code, bottle.name, role, against))
+        else:
+            fit.append((bottle, needed or 0.0))
+    enough = [(b, need) for b, need in fit if b.usable >= need]
+    passed += [
+        PassedOver(b.code, b.name, role, _too_little(b, need)) for b, need in fit if b.usable < need
+    ]
+    best = min(enough, key=lambda pair: _rank(pair[0], as_of, prefer_dry), default=None)
+    return Choice(
+        bottle=best[0] if best else None,
+        passed_over=tuple(sorted(passed, key=lambda p: p.bottle)),
+        largest_usable=max((b.usable for b, _ in fit), default=0.0),
+        fit_exists=bool(fit),
+    )
+
+
+def _too_little(bottle: ShelfBottle, needed: float) -> str:
+    unit = unit_of(bottle)
+    return f"holds {bottle.usable:.6g} {unit} that can be used and {needed:.6g} {unit} is needed"
+
+
+def unit_of(bottle: ShelfBottle) -> str:
+    return {"mass": "mg", "volume": "mL", "count": "pieces"}[bottle.measured_by]
+
+
+def _against(bottle: ShelfBottle, as_of: date, checks: tuple[Check, ...]) -> str | None:
+    for check in (check_usable, *checks):
+        reason = check(bottle, as_of)
+        if reason is not None:
+            return reason
+    return None
+
+
+def _rank(bottle: ShelfBottle, as_of: date, prefer_dry: bool) -> tuple[object, ...]:
+    """Pure before mixed anomers, dry grade where it counts (and spared where it does not).
+
+    Then the first to expire, the one already open, the wettest where dryness does not count,
+    and the smallest.
+    """
+    water = water_now_ppm(bottle, as_of)
+    is_dry = water is not None and water <= DRY_GRADE_PPM
+    wettest_first = 0.0 if prefer_dry or water is None else -water
+    active_share_pct = bottle.content.active_share_pct if bottle.content else None
+    return (
+        active_share_pct is not None,
+        is_dry != prefer_dry,
+        bottle.expires_on or date.max,
+        bottle.opened_on is None,
+        wettest_first,
+        bottle.usable,
+        bottle.code,
+    )
+
+
+def check_usable(bottle: ShelfBottle, as_of: date) -> str | None:
+    """Status and expiry; the expiry date itself is still valid."""
+    if bottle.status != "usable":
+        return f"is {bottle.status}"
+    if bottle.expires_on is not None and bottle.expires_on < as_of:
+        return f"expired on {bottle.expires_on.isoformat()}"
+    return None
+
+
+def check_no_alcohol_stabiliser(bottle: ShelfBottle, as_of: date) -> str | None:
+    """An alcohol in the solvent is a competing acceptor; an unknown stabiliser may be one."""
+    if bottle.stabiliser_state == "unknown":
+        return "its stabiliser is not known; an alcohol would compete for the donor"
+    name = bottle.stabiliser_name.lower()
+    if bottle.stabiliser_state == "known" and any(word in name for word in _ALCOHOLS):
+        return f"is stabilised with {bottle.stabiliser_name}, an alcohol that takes the donor"
+    return None
+
+
+def check_water_at_most(limit_ppm: float) -> Check:
+    def check(bottle: ShelfBottle, as_of: date) -> str | None:
+        water = water_now_ppm(bottle, as_of)
+        if water is not None and water > limit_ppm:
+            return f"holds {water:g} ppm of water; at most {limit_ppm:g} ppm here"
+        return None
+
+    return check
+
+
+def check_activated_within(days: int) -> Check:
+    def check(bottle: ShelfBottle, as_of: date) -> str | None:
+        if bottle.activated_on is None:
+            return "is not activated: it would bring water instead of taking it"
+        if as_of - bottle.activated_on > timedelta(days=days):
+            return f"was activated on {bottle.activated_on.isoformat()}, over {days} days ago"
+        return None
+
+    return check
+
+
+def water_now_ppm(bottle: ShelfBottle, as_of: date) -> float | None:
+    """The reading [ppm by mass] if it still counts, else None: unknown, to be measured."""
+    if bottle.water_ppm is None or bottle.water_read_on is None:
+        return None
+    opened_since = bottle.opened_on is not None
+    too_old = as_of - bottle.water_read_on > timedelta(days=READING_VALID_AFTER_OPENING_DAYS)
+    return None if opened_since and too_old else bottle.water_ppm

@@ -1,0 +1,89 @@
+"""Count the water in the flask against the promoter and the donor."""
+
+from datetime import date
+
+from labplan.chemistry.amounts import mass_mg_of_volume
+from labplan.chemistry.masses import WATER_MOLAR_MASS_G_PER_MOL
+from labplan.planning.bottles import water_now_ppm
+from labplan.planning.values import Charge, RouteWarning, Water
+
+# Warn over 25 % of a stoichiometric promoter, 10 % of a catalytic one, 5 % of the donor
+# (common practice).
+STOICHIOMETRIC_LIMIT_PCT = 25
+CATALYTIC_LIMIT_PCT = 10
+DONOR_LIMIT_PCT = 5
+CATALYTIC_BELOW_EQUIV = 0.5
+
+
+def water_of(
+    charges: list[Charge], *, promoter_mmol: float, donor_mmol: float, as_of: date,
+    used_up_per_water: float,
+) -> Water:  # fmt: skip
+    """Sum the water [mmol] that the liquid and measured charges bring."""
+    lines = tuple(
+        (charge.key, _water_mmol(charge, as_of)) for charge in charges if _can_be_wet(charge)
+    )
+    total = sum(mmol for _, mmol in lines if mmol is not None)
+    return Water(
+        lines=lines,
+        total_mmol=total,
+        promoter_share_pct=100 * total * used_up_per_water / promoter_mmol,
+        donor_share_pct=100 * total / donor_mmol,
+    )
+
+
+def _can_be_wet(charge: Charge) -> bool:
+    has_reading = charge.bottle is not None and charge.bottle.water_ppm is not None
+    return has_reading or charge.role in ("solvent", "acceptor")
+
+
+def _water_mmol(charge: Charge, as_of: date) -> float | None:
+    bottle = charge.bottle
+    if bottle is None:
+        return None
+    ppm = water_now_ppm(bottle, as_of)
+    mass = charge.mass_mg
+    if mass is None and bottle.density_g_per_ml is not None and charge.volume_ml is not None:
+        mass = mass_mg_of_volume(charge.volume_ml, bottle.density_g_per_ml)
+    if ppm is None or mass is None:
+        return None
+    return mass * ppm / 1e6 / WATER_MOLAR_MASS_G_PER_MOL
+
+
+def dryness_warnings(
+    water: Water, charges: dict[str, Charge], promoter_equiv: float
+) -> list[RouteWarning]:
+    """Say what the water costs where it matters, and where no reading counts."""
+    catalytic = promoter_equiv < CATALYTIC_BELOW_EQUIV
+    limit = CATALYTIC_LIMIT_PCT if catalytic else STOICHIOMETRIC_LIMIT_PCT
+    found = []
+    if water.promoter_share_pct > limit:
+        found.append(
+            RouteWarning(
+                "water_takes_promoter",
+                "caution",
+                f"The water counted takes {water.promoter_share_pct:.1f} % of the promoter "
+                f"(limit {limit} %): dry the solvent over activated sieves first.",
+            )
+        )
+    if water.donor_share_pct > DONOR_LIMIT_PCT:
+        found.append(
+            RouteWarning(
+                "water_takes_donor",
+                "caution",
+                f"The water counted could take {water.donor_share_pct:.1f} % of the donor as "
+                f"hemiacetal (limit {DONOR_LIMIT_PCT} %).",
+            )
+        )
+    unknown = [charges[key] for key, mmol in water.lines if mmol is None]
+    if unknown:
+        bottles = ", ".join(f"{c.name} ({c.bottle.code})" for c in unknown if c.bottle)
+        found.append(
+            RouteWarning(
+                "water_unknown",
+                "caution",
+                f"No water reading counts for {bottles}: measure it before you start; the sum "
+                "does not include it.",
+            )
+        )
+    return found

@@ -1,0 +1,38 @@
+"""Print amounts the way they are read on a balance or a syringe."""
+
+
+def mass_text(mass_mg: float) -> str:
+    """What a laboratory balance shows: milligrams to the gram, then grams to the milligram.
+
+    >>> mass_text(935.0), mass_text(6249.0), mass_text(2000.0)
+    ('935 mg', '6.249 g', '2.000 g')
+    """
+    return f"{mass_mg:.0f} mg" if mass_mg < 1000 else f"{mass_mg / 1000:.3f} g"
+
+
+def bulk_text(mass_mg: float) -> str:
+    """What a kitchen balance shows, for salts, sieves and silica.
+
+    >>> bulk_text(8340.0), bulk_text(13_100.0), bulk_text(152_000.0)
+    ('8.34 g', '13.1 g', '152 g')
+    """
+    return f"{mass_mg / 1000:.6g} g"
+
+
+def volume_text(volume_ml: float) -> str:
+    """Millilitres with the digits of the syringe or cylinder, litres from 1 L.
+
+    >>> volume_text(3.51), volume_text(1.4), volume_text(91.0), volume_text(1510.0)
+    ('3.51 mL', '1.40 mL', '91 mL', '1.51 L')
+    """
+    if volume_ml >= 1000:
+        return f"{volume_ml / 1000:.6g} L"
+    if volume_ml < 5:
+        return f"{volume_ml:.2f} mL"
+    if volume_ml < 50:
+        return f"{volume_ml:.1f} mL"
+    return f"{volume_ml:.0f} mL"
+
+
+def three_figures(value: float) -> str:
+    return f"{value:.3g}"

@@ -1,0 +1,186 @@
+"""The values planning works on. Units stand last in the names; everything here is frozen."""
+
+from dataclasses import dataclass, field
+from datetime import date
+
+from labplan.chemistry.amounts import Content
+
+
+@dataclass(frozen=True)
+class Scale:
+    """What was asked for: a mass of product [mg] or an amount of acceptor [mmol], one of them."""
+
+    product_mass_mg: float | None = None
+    acceptor_amount_mmol: float | None = None
+
+
+@dataclass(frozen=True)
+class ShelfBottle:
+    """One bottle as the shelf shows it. Amounts in mg ("mass") or mL ("volume"), or pieces.
+
+    `usable` is what is on hand less what is held less what cannot be got out.
+    """
+
+    code: str
+    substance: str
+    name: str
+    cas: str
+    inchikey: str | None
+    content: Content | None  # None for a material or mixture without a molar mass
+    form_label: str
+    measured_by: str
+    on_hand: float
+    held: float
+    usable: float
+    place: str
+    place_name: str
+    lot: str
+    status: str
+    expires_on: date | None
+    opened_on: date | None
+    stabiliser_state: str
+    stabiliser_name: str
+    water_ppm: float | None
+    water_read_on: date | None
+    activated_on: date | None
+    density_g_per_ml: float | None = None
+
+
+@dataclass(frozen=True)
+class Reason:
+    """Why not, or what was assumed: `code` for programs, `detail` for people."""
+
+    code: str
+    detail: str
+
+
+@dataclass(frozen=True)
+class RouteWarning:
+    code: str
+    severity: str  # "note", "caution", "stop"
+    detail: str
+
+
+@dataclass(frozen=True)
+class Shortage:
+    """One line that no bottle can meet."""
+
+    role: str
+    substance: str
+    name: str
+    needed: str
+    largest_usable: str
+    detail: str
+
+
+@dataclass(frozen=True)
+class PassedOver:
+    """A bottle that was looked at and not taken, and why."""
+
+    bottle: str
+    name: str
+    role: str
+    reason: str
+
+
+@dataclass(frozen=True)
+class Charge:
+    """One line of what goes into the flask or is used on it.
+
+    `hold_amount` is in the bottle's own base unit (micrograms or nanolitres) and is what is
+    set aside; the printed amount is the same number.
+    """
+
+    key: str
+    role: str
+    group: str  # "reaction", "work-up", "purification"
+    substance: str
+    name: str
+    bottle: ShelfBottle | None
+    equivalents_planned: float | None
+    equivalents: float | None
+    equivalents_of: str | None
+    amount_mmol: float | None
+    mass_mg: float | None
+    volume_ml: float | None
+    dispense: str  # "mass" or "volume"
+    assay_note: str
+    hold_amount: int
+
+
+@dataclass(frozen=True)
+class Water:
+    """Where the water comes from and what it costs."""
+
+    lines: tuple[tuple[str, float | None], ...]  # (charge key, mmol or None when unknown)
+    total_mmol: float
+    promoter_share_pct: float
+    donor_share_pct: float
+
+
+@dataclass(frozen=True)
+class Step:
+    """One numbered instruction. `charges` are the keys of the charges it uses."""
+
+    number: int
+    title: str
+    text: str
+    charges: tuple[str, ...]
+    watch: str
+    pause: str  # "may stand overnight" or "do not stop"
+
+
+@dataclass(frozen=True)
+class Stage:
+    kind: str
+    method: str
+    limiting: str
+    scale_mmol: float
+    charges: tuple[Charge, ...]
+    water: Water
+    vessel_ml: int
+    quench_vessel_ml: int
+    quench_anions_mmol: float
+    carbon_dioxide_l: float
+    expected_mass_mg: float
+    expected_low_mg: float
+    expected_high_mg: float
+    gross_crude_mg: float
+    yield_pct: tuple[float, float, float]
+    steps: tuple[Step, ...] = ()
+
+
+@dataclass(frozen=True)
+class Ion:
+    species: str
+    ion: str
+    mz: float
+
+
+@dataclass(frozen=True)
+class SideProduct:
+    name: str
+    formula: str
+    monoisotopic_mass_da: float
+    told_apart_by: str
+
+
+@dataclass(frozen=True)
+class Expectations:
+    ions: tuple[Ion, ...]
+    side_products: tuple[SideProduct, ...]
+    anomeric_coupling_hz: tuple[float, float] | None
+    anomeric_signal: str
+
+
+@dataclass(frozen=True)
+class Route:
+    stages: tuple[Stage, ...]
+    why: tuple[str, ...]
+    warnings: tuple[RouteWarning, ...]
+    shortages: tuple[Shortage, ...]
+    passed_over: tuple[PassedOver, ...] = field(default=())
+
+    @property
+    def is_available(self) -> bool:
+        return not self.shortages

@@ -1,0 +1,50 @@
+"""A procedure as JSON."""
+
+import json
+from typing import Any
+
+from django.urls import reverse
+
+from labplan.base.preconditions import etag_of
+from labplan.procedures import life
+from labplan.procedures.models import Procedure
+
+
+def etag(procedure: Procedure) -> str:
+    return etag_of("procedure", procedure.code, procedure.version)
+
+
+def show_summary(procedure: Procedure) -> dict[str, Any]:
+    """State and links, without the document."""
+    links = {
+        name: reverse(f"procedure-{name.replace('_', '-')}", args=[procedure.code])
+        for name in ("detail", "document", "sheet_html")
+    }
+    has_document = procedure.document_id is not None
+    mass, mmol = procedure.product_mass_mg, procedure.acceptor_amount_mmol
+    return {
+        "code": procedure.code,
+        "project": procedure.project.code,
+        "requested_by": procedure.requested_by,
+        "target_smiles": procedure.target_smiles,
+        "product_mass_g": f"{(mass / 1000).normalize():f}" if mass is not None else None,
+        "acceptor_amount_mmol": f"{mmol.normalize():f}" if mmol is not None else None,
+        "state": procedure.state,
+        "actions": list(life.actions_in(procedure.state)),
+        "reasons": json.loads(procedure.reasons),
+        "reservation": str(procedure.reservation_code) if procedure.reservation_code else None,
+        "created_at": procedure.created_at.isoformat(),
+        "settled_at": procedure.settled_at.isoformat() if procedure.settled_at else None,
+        "document_sha256": procedure.document.sha256 if procedure.document else None,
+        "links": {
+            "self": links["detail"],
+            "document": links["document"] if has_document else None,
+            "sheet_html": links["sheet_html"] if has_document else None,
+        },
+    }
+
+
+def show_detail(procedure: Procedure) -> dict[str, Any]:
+    document = procedure.document
+    body = json.loads(bytes(document.body)) if document else None
+    return {**show_summary(procedure), "document": body}

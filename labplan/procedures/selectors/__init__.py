@@ -1,0 +1,25 @@
+"""What may be asked about procedures."""
+
+from django.db.models import QuerySet
+
+from labplan.base.errors import NotFound
+from labplan.base.rights import Actor, visible_project_ids
+from labplan.procedures.models import Procedure
+
+
+def list_procedures(*, actor: Actor, project: str = "", state: str = "") -> QuerySet[Procedure]:
+    mine = visible_project_ids(actor, "procedure.view")
+    found = Procedure.objects.select_related("project", "document")
+    if mine is not None:
+        found = found.filter(project__in=mine)
+    if project:
+        found = found.filter(project__code=project)
+    return found.filter(state=state) if state else found
+
+
+def get_procedure(*, actor: Actor, code: str) -> Procedure:
+    """One procedure; one of another project is answered like one that is not there."""
+    procedure = list_procedures(actor=actor).filter(code=code).first()
+    if procedure is None:
+        raise NotFound(f"There is no procedure {code}.")
+    return procedure

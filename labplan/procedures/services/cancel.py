@@ -1,0 +1,52 @@
+"""Cancel a procedure and give back what it holds."""
+
+from collections.abc import Callable
+
+from django.db import transaction
+
+from inventory.services import release_reservation
+from labplan.base.errors import NotFound
+from labplan.base.events import record_event
+from labplan.base.idempotency import Once, Unclaimed
+from labplan.base.rights import Actor, may, require
+from labplan.procedures import life
+from labplan.procedures.models import Procedure
+
+
+def cancel_procedure(
+    *, actor: Actor, code: str, check_version: Callable[[Procedure], None],
+    once: Once | None = None,
+) -> Procedure:  # fmt: skip
+    """End a queued, planned or approved procedure; its holds go back in the same transaction.
+
+    `check_version` looks at the locked row and raises when the caller's copy is stale. Raises
+    NotFound, NotAllowed, StateForbids. Safe to repeat with the same claim.
+    """
+    claim = once or Unclaimed()
+    with transaction.atomic(durable=True):
+        claim.insert()
+        procedure = (
+            Procedure.objects.select_for_update(no_key=True, of=("self",))
+            .select_related("project", "document")
+            .filter(code=code)
+            .first()
+        )
+        if procedure is None or not may(actor, "procedure.view", project_id=procedure.project_id):
+            raise NotFound(f"There is no procedure {code}.")
+        require(actor, "procedure.cancel", project_id=procedure.project_id)
+        check_version(procedure)
+        before = procedure.state
+        life.require_action(before, "cancel")
+        if procedure.reservation_code is not None:
+            release_reservation(
+                actor=actor, code=procedure.reservation_code, reason=f"{code} cancelled"
+            )
+        procedure.state = life.require_end(before, "cancel", life.CANCELLED)
+        procedure.version += 1
+        procedure.save(update_fields=["state", "version"])
+        record_event(
+            actor_code=actor.code, kind="procedure.cancelled", subject=f"procedure {code}",
+            before=before, after=procedure.state,
+        )  # fmt: skip
+        claim.remember(procedure)
+    return procedure

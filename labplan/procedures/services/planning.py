@@ -1,0 +1,219 @@
+"""Plan a queued procedure and settle the result in one transaction.
+
+The attempt is counted and committed before the work, so that work which kills its process is
+not repeated for ever. What settles is the attempt that was begun last; any other does nothing.
+"""
+
+import json
+from dataclasses import dataclass
+from datetime import timedelta
+from decimal import Decimal
+from typing import Any
+
+from django.db import OperationalError, transaction
+
+from inventory.errors import StockShort
+from inventory.services import HoldLine, hold_lines, keep_still
+from labplan.base import clock, outbox
+from labplan.base.canonical import canonical_bytes, sha256_hex
+from labplan.base.errors import DomainError
+from labplan.base.events import record_event
+from labplan.base.models import Person
+from labplan.base.problems import is_lock_timeout
+from labplan.base.rights import Actor, actor_for
+from labplan.planning.values import Charge
+from labplan.procedures import life
+from labplan.procedures.engine import PlannedOn, Scale, plan_on_shelf, read_target
+from labplan.procedures.models import Document, Procedure
+
+MAX_ATTEMPTS = 2
+FREE_TRIES = 2
+HOLD_DAYS = 14
+
+
+@dataclass(frozen=True)
+class Attempt:
+    """One try at planning: who asked, what for, which message brought it."""
+
+    procedure_id: int
+    code: str
+    number: int
+    message_id: int
+    actor: Actor
+    project_id: int
+    smiles: str
+    scale: Scale
+
+
+def plan_procedure(*, procedure_id: int, message_id: int) -> None:
+    """Plan and settle. Safe to repeat: a procedure that is settled already is left alone."""
+    attempt = begin_attempt(procedure_id, message_id)
+    if attempt is None:
+        return
+    for _ in range(FREE_TRIES):
+        planned = compute_plan(attempt)
+        try:
+            settle_plan(attempt, planned)
+            return
+        except StockShort:
+            continue  # somebody was faster: look at the shelf again
+        except DomainError as error:
+            _settle_bare(attempt, life.FAILED, error.code, error.detail)
+            return
+    _settle_on_still_rows(attempt)
+
+
+def begin_attempt(procedure_id: int, message_id: int) -> Attempt | None:
+    """Count and commit the attempt; None when there is nothing left to do."""
+    with transaction.atomic(durable=True):
+        procedure = _locked(procedure_id)
+        if procedure.state != life.QUEUED:
+            outbox.mark_done(message_id)
+            return None
+        procedure.attempt += 1
+        procedure.save(update_fields=["attempt"])
+        if procedure.attempt > MAX_ATTEMPTS:
+            _close(
+                procedure, life.FAILED, message_id,
+                [("engine_crashed", "Planning broke off twice; tell the operator this code.")],
+            )  # fmt: skip
+            return None
+        person = Person.objects.get(code=procedure.requested_by)
+        return Attempt(
+            procedure.pk, procedure.code, procedure.attempt, message_id, actor_for(person),
+            procedure.project_id, procedure.target_smiles,
+            Scale(_float(procedure.product_mass_mg), _float(procedure.acceptor_amount_mmol)),
+        )  # fmt: skip
+
+
+def compute_plan(attempt: Attempt) -> PlannedOn:
+    """Snapshot and plan, outside any transaction of its own."""
+    return plan_on_shelf(
+        actor=attempt.actor, target=read_target(attempt.smiles), scale=attempt.scale,
+        as_of=clock.today(),
+    )  # fmt: skip
+
+
+def settle_plan(attempt: Attempt, planned: PlannedOn) -> None:
+    """ONE transaction: compare the attempt, hold the lines, store the document, set the state.
+
+    Raises StockShort when the shelf has moved since the snapshot; nothing is changed then.
+    """
+    with transaction.atomic(durable=True):
+        _settle(attempt, planned)
+
+
+def _settle_on_still_rows(attempt: Attempt) -> None:
+    """The last try: plan while nobody else can move the bottles in question."""
+    seen = compute_plan(attempt).bottles_seen
+    try:
+        with transaction.atomic(durable=True):
+            keep_still(seen)
+            _settle(attempt, compute_plan(attempt))
+    except (StockShort, OperationalError) as error:
+        if isinstance(error, OperationalError) and not is_lock_timeout(error):
+            raise
+        _settle_bare(
+            attempt, life.CONTENDED, "stock_contended",
+            "Others kept moving the same bottles; send the request again.",
+        )  # fmt: skip
+
+
+def _settle(attempt: Attempt, planned: PlannedOn) -> None:
+    procedure = _locked(attempt.procedure_id)
+    if procedure.state != life.QUEUED or procedure.attempt != attempt.number:
+        return
+    state = _state_of(planned)
+    if state == life.PLANNED:
+        reservation = hold_lines(
+            actor=attempt.actor, project_id=attempt.project_id,
+            purpose=f"procedure {attempt.code}",
+            expires_on=clock.today() + timedelta(days=HOLD_DAYS),
+            lines=_hold_lines(planned),
+        )  # fmt: skip
+        procedure.reservation_code = reservation.code
+    procedure.document = _store_document(attempt, planned.document)
+    _close(procedure, state, attempt.message_id, _reasons_of(planned))
+
+
+def _state_of(planned: PlannedOn) -> str:
+    plan = planned.plan
+    if plan.verdict != "plannable" or plan.route is None:
+        return life.REFUSED
+    return life.PLANNED if plan.route.is_available else life.SHORT
+
+
+def _reasons_of(planned: PlannedOn) -> list[tuple[str, str]]:
+    plan = planned.plan
+    found = [(reason.code, reason.detail) for reason in plan.reasons]
+    if plan.route is not None:
+        found += [
+            ("short", f"{s.role}: {s.needed} of {s.name} needed; {s.detail}")
+            for s in plan.route.shortages
+        ]
+    return found
+
+
+def _hold_lines(planned: PlannedOn) -> list[HoldLine]:
+    assert planned.plan.route is not None
+    return [
+        _hold_line(charge)
+        for stage in planned.plan.route.stages
+        for charge in stage.charges
+        if charge.bottle is not None
+    ]
+
+
+def _hold_line(charge: Charge) -> HoldLine:
+    assert charge.bottle is not None
+    by_volume = charge.dispense == "volume"
+    entered = charge.volume_ml if by_volume else charge.mass_mg
+    density = charge.bottle.density_g_per_ml
+    return HoldLine(
+        bottle_code=charge.bottle.code,
+        amount=charge.hold_amount,
+        entered_amount=f"{entered:.10g}",
+        entered_unit="mL" if by_volume else "mg",
+        density_g_per_ml=Decimal(repr(density)) if density is not None else None,
+        amount_nmol=round(charge.amount_mmol * 1_000_000) if charge.amount_mmol else None,
+    )
+
+
+def _store_document(attempt: Attempt, content: dict[str, Any]) -> Document:
+    body = canonical_bytes(content)
+    return Document.objects.create(
+        procedure_id=attempt.procedure_id, attempt=attempt.number, body=body,
+        sha256=sha256_hex(body), created_at=clock.now(),
+    )  # fmt: skip
+
+
+def _settle_bare(attempt: Attempt, state: str, code: str, detail: str) -> None:
+    """End an attempt without a document."""
+    with transaction.atomic(durable=True):
+        procedure = _locked(attempt.procedure_id)
+        if procedure.state == life.QUEUED and procedure.attempt == attempt.number:
+            _close(procedure, state, attempt.message_id, [(code, detail)])
+
+
+def _close(
+    procedure: Procedure, state: str, message_id: int, reasons: list[tuple[str, str]]
+) -> None:
+    before = procedure.state
+    procedure.state = life.require_end(before, "plan", state)
+    procedure.reasons = json.dumps([{"code": c, "detail": d} for c, d in reasons])
+    procedure.version += 1
+    procedure.settled_at = clock.now()
+    procedure.save()
+    record_event(
+        actor_code=procedure.requested_by, kind="procedure.settled",
+        subject=f"procedure {procedure.code}", before=before, after=state,
+    )  # fmt: skip
+    outbox.mark_done(message_id)
+
+
+def _locked(procedure_id: int) -> Procedure:
+    return Procedure.objects.select_for_update(no_key=True, of=("self",)).get(pk=procedure_id)
+
+
+def _float(value: Decimal | None) -> float | None:
+    return float(value) if value is not None else None

@@ -1,0 +1,89 @@
+"""Ask for a procedure: one transaction with the row, the outbox message and the claim."""
+
+import secrets
+from dataclasses import dataclass
+from decimal import Decimal
+
+from django.db import transaction
+
+from labplan.base import clock, outbox
+from labplan.base.errors import FieldProblem, InvalidValue, NotAllowed
+from labplan.base.events import record_event
+from labplan.base.idempotency import Once, Unclaimed
+from labplan.base.models import Project
+from labplan.base.rights import Actor, may, require
+from labplan.chemistry.errors import TargetProblem
+from labplan.procedures import life
+from labplan.procedures.engine import read_target
+from labplan.procedures.models import Procedure
+
+PLAN_TOPIC = "procedure.plan"
+# No vowels and nothing that looks like a digit: codes are read aloud at the hood.
+_ALPHABET = "23456789BCDFGHJKMNPQRTVWXY"
+
+
+@dataclass(frozen=True)
+class ProcedureOrder:
+    """What is wanted: a target and exactly one scale, for a project."""
+
+    project_code: str
+    target_smiles: str
+    product_mass_mg: Decimal | None = None
+    acceptor_amount_mmol: Decimal | None = None
+
+
+def request_procedure(
+    *, actor: Actor, order: ProcedureOrder, once: Once | None = None
+) -> Procedure:
+    """Queue a procedure to be planned.
+
+    Raises InvalidValue (a structure that is no defined glycoside, an unknown project),
+    NotAllowed; then nothing is stored. Safe to repeat with the same claim.
+    """
+    project = _project_of(actor, order)
+    require(actor, "procedure.request", project_id=project.pk)
+    _require_readable(order.target_smiles)
+    claim = once or Unclaimed()
+    with transaction.atomic(durable=True):
+        claim.insert()
+        procedure = Procedure.objects.create(
+            code="P-" + "".join(secrets.choice(_ALPHABET) for _ in range(8)),
+            project=project, requested_by=actor.code, target_smiles=order.target_smiles.strip(),
+            product_mass_mg=order.product_mass_mg,
+            acceptor_amount_mmol=order.acceptor_amount_mmol,
+            state=life.QUEUED, created_at=clock.now(),
+        )  # fmt: skip
+        outbox.enqueue(PLAN_TOPIC, {"procedure_id": procedure.pk})
+        record_event(
+            actor_code=actor.code, kind="procedure.requested",
+            subject=f"procedure {procedure.code}", after={"state": life.QUEUED},
+        )  # fmt: skip
+        claim.remember(procedure)
+    return procedure
+
+
+def _project_of(actor: Actor, order: ProcedureOrder) -> Project:
+    """A project the actor may not see is answered like one that is not there."""
+    project = Project.objects.filter(code=order.project_code).first()
+    if project is None or not may(actor, "project.view", project_id=project.pk):
+        raise InvalidValue(
+            "Correct the fields listed in errors.",
+            errors=(
+                FieldProblem(
+                    "project", "unknown_project",
+                    f"There is no project {order.project_code!r} that you belong to.",
+                ),
+            ),
+        )  # fmt: skip
+    if not project.is_open:
+        raise NotAllowed(f"The project {project.code} is closed; nothing is charged to it.")
+    return project
+
+
+def _require_readable(smiles: str) -> None:
+    try:
+        read_target(smiles)
+    except TargetProblem as problem:
+        raise InvalidValue(
+            problem.detail, errors=(FieldProblem("target_smiles", problem.code, problem.detail),)
+        ) from problem

@@ -1,0 +1,1 @@
+"""Hazards: pure functions on values, from the packaged tables."""

@@ -1,0 +1,80 @@
+"""What is known of the hazards of a substance, with its evidence; unknown is said as unknown."""
+
+from dataclasses import dataclass
+from typing import Any
+
+from labplan import datafiles
+
+UNKNOWN_TEXT = "hazards not established: handle as hazardous"
+NOT_CLASSIFIED_TEXT = "not classified as hazardous by the source named"
+
+
+@dataclass(frozen=True)
+class Statement:
+    code: str
+    text: str
+
+
+@dataclass(frozen=True)
+class Hazards:
+    """The classification of one substance as printed. `established` False means unknown."""
+
+    substance: str
+    name: str
+    established: bool
+    signal_word: str | None
+    pictograms: tuple[str, ...]
+    hazard_statements: tuple[Statement, ...]
+    precautionary_statements: tuple[Statement, ...]
+    summary: str
+    evidence: str
+    source: str
+    row: dict[str, Any] | None
+
+
+def hazards_of(substance: str, name: str) -> Hazards:
+    """Return the packaged classification of a substance key, or an unknown one."""
+    row = next(
+        (r for r in datafiles.table("classifications")["classifications"]
+         if r["substance"] == substance),
+        None,
+    )  # fmt: skip
+    if row is None or not row["established"]:
+        return _unknown(substance, name, row)
+    codes = [hazard["code"] for hazard in row["hazards"]] + list(row["supplemental"])
+    return Hazards(
+        substance=substance,
+        name=name,
+        established=True,
+        signal_word=row["signal_word"],
+        pictograms=tuple(row["pictograms"]),
+        hazard_statements=tuple(Statement(code, statement_text(code)) for code in codes),
+        precautionary_statements=tuple(
+            Statement(code, statement_text(code)) for code in row["precautionary"]
+        ),
+        summary=row["signal_word"] or ("" if codes else NOT_CLASSIFIED_TEXT),
+        evidence=row["evidence"],
+        source=row["source"],
+        row=row,
+    )
+
+
+def _unknown(substance: str, name: str, row: dict[str, Any] | None) -> Hazards:
+    return Hazards(
+        substance, name, False, None, (), (), (), UNKNOWN_TEXT, "not known",
+        row["source"] if row else "none", row,
+    )  # fmt: skip
+
+
+def statement_text(code: str) -> str:
+    """The printed text of an H, EUH or P statement; KeyError for a code not in the table."""
+    return _texts()[code]
+
+
+def _texts() -> dict[str, str]:
+    tables = datafiles.table("statements")
+    return {
+        row["code"]: row.get("print_text") or row["text"]
+        for part in ("hazard", "precautionary", "eu_supplemental")
+        for row in tables[part]
+    }

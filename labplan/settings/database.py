@@ -1,0 +1,59 @@
+"""Turn DATABASE_URL into Django's DATABASES entry."""
+
+from pathlib import Path
+from typing import Any
+from urllib.parse import unquote
+
+from django.core.exceptions import ImproperlyConfigured
+
+SQLITE_PRAGMAS = (
+    "PRAGMA journal_mode=WAL;"
+    "PRAGMA synchronous={synchronous};"
+    # Without it INSERT OR REPLACE would walk past the triggers that keep the book append-only.
+    "PRAGMA recursive_triggers=ON;"
+)
+
+
+def database_from_url(url: str, *, sqlite_synchronous: str = "FULL") -> dict[str, Any]:
+    """Return the settings for `sqlite:///path` or a libpq `postgresql://` address."""
+    if url.startswith("sqlite:///"):
+        return _sqlite(Path(unquote(url.removeprefix("sqlite:///"))), sqlite_synchronous)
+    if url.startswith(("postgresql://", "postgres://")):
+        return _postgresql(url)
+    raise ImproperlyConfigured(
+        "DATABASE_URL must start with sqlite:/// or postgresql://; leave it out to use SQLite "
+        "in the folder var/."
+    )
+
+
+def _sqlite(path: Path, synchronous: str) -> dict[str, Any]:
+    return {
+        "ENGINE": "django.db.backends.sqlite3",
+        "NAME": str(path),
+        "OPTIONS": {
+            # A read that turns into a write fails at once under the default mode,
+            # whatever the time-out says; IMMEDIATE waits for its turn.
+            "transaction_mode": "IMMEDIATE",
+            "timeout": 20,
+            "init_command": SQLITE_PRAGMAS.format(synchronous=synchronous),
+        },
+    }
+
+
+def _postgresql(url: str) -> dict[str, Any]:
+    # psycopg reads the address the way libpq does, sockets and percent signs included.
+    from psycopg.conninfo import conninfo_to_dict
+
+    parts = dict(conninfo_to_dict(url))
+    server_options = f"{parts.pop('options', '')} -c lock_timeout=3000".strip()
+    return {
+        "ENGINE": "django.db.backends.postgresql",
+        "NAME": parts.pop("dbname", "labplan"),
+        "USER": parts.pop("user", ""),
+        "PASSWORD": parts.pop("password", ""),
+        "HOST": parts.pop("host", ""),
+        "PORT": str(parts.pop("port", "")),
+        "CONN_MAX_AGE": 60,
+        "CONN_HEALTH_CHECKS": True,
+        "OPTIONS": {**parts, "options": server_options},
+    }

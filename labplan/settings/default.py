@@ -1,0 +1,77 @@
+"""Settings for every installation; what differs between machines comes from the environment.
+
+LABPLAN_DATA_DIR     where the SQLite file and the generated key live (default: var/)
+DATABASE_URL         sqlite:///path or postgresql://...  (default: SQLite in LABPLAN_DATA_DIR)
+LABPLAN_SECRET_KEY   Django's key (default: made once and kept in LABPLAN_DATA_DIR)
+LABPLAN_HOSTS        host names served, separated by commas (default: this machine only)
+LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
+"""
+
+import os
+from pathlib import Path
+
+from labplan.settings.database import database_from_url
+from labplan.settings.secret import read_or_make_secret_key
+
+BASE_DIR = Path(__file__).resolve().parents[2]
+DATA_DIR = Path(os.environ.get("LABPLAN_DATA_DIR", BASE_DIR / "var"))
+
+DEBUG = False
+SECRET_KEY = os.environ.get("LABPLAN_SECRET_KEY") or read_or_make_secret_key(DATA_DIR)
+ALLOWED_HOSTS = os.environ.get("LABPLAN_HOSTS", "127.0.0.1,localhost,[::1]").split(",")
+
+INSTALLED_APPS = [
+    "rest_framework",
+    "labplan.base",
+    "inventory",
+    "labplan.procedures",
+]
+MIDDLEWARE = [
+    "django.middleware.security.SecurityMiddleware",
+    "labplan.base.middleware.ProblemFallbackMiddleware",
+]
+ROOT_URLCONF = "labplan.urls"
+WSGI_APPLICATION = "labplan.wsgi.application"
+APPEND_SLASH = False
+TEMPLATES = [
+    {
+        "BACKEND": "django.template.backends.django.DjangoTemplates",
+        "APP_DIRS": True,
+        "OPTIONS": {},
+    }
+]
+
+DATABASES = {
+    "default": database_from_url(
+        os.environ.get("DATABASE_URL") or f"sqlite:///{DATA_DIR / 'labplan.sqlite3'}"
+    )
+}
+DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
+AUTH_USER_MODEL = "base.Person"
+
+USE_TZ = True
+TIME_ZONE = "UTC"
+LAB_TIME_ZONE = os.environ.get("LABPLAN_TIME_ZONE", "UTC")
+USE_I18N = False
+# A body is a few fields; stock lists go through the import command.
+DATA_UPLOAD_MAX_MEMORY_SIZE = 1_000_000
+
+REST_FRAMEWORK = {
+    "DEFAULT_AUTHENTICATION_CLASSES": ["labplan.base.authentication.BearerTokenAuthentication"],
+    "DEFAULT_PERMISSION_CLASSES": ["labplan.base.authentication.HasActor"],
+    "DEFAULT_PARSER_CLASSES": ["labplan.base.parsers.StrictJSONParser"],
+    "DEFAULT_RENDERER_CLASSES": ["rest_framework.renderers.JSONRenderer"],
+    "DEFAULT_PAGINATION_CLASS": "labplan.base.pagination.NewestFirstPagination",
+    "PAGE_SIZE": 50,
+    "EXCEPTION_HANDLER": "labplan.base.problems.problem_response",
+    "UNAUTHENTICATED_USER": None,
+    "COERCE_DECIMAL_TO_STRING": True,
+}
+
+LOGGING = {
+    "version": 1,
+    "disable_existing_loggers": False,
+    "formatters": {"line": {"format": "%(asctime)s %(levelname)s %(name)s %(message)s"}},
+    "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
+    "root": {"handlers": ["stderr"], "level": "INFO"},
+}

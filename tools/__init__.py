@@ -1,0 +1,1 @@
+"""Programs for working on the project; make calls them."""
