@@ -45,7 +45,7 @@ def _standing_clock() -> Iterator[None]:
 
 @pytest.fixture(autouse=True)
 def _book_adds_up(request: pytest.FixtureRequest) -> Iterator[None]:
-    """After every test on the database: every book re-added, unless the test spoils it on purpose."""
+    """After every test on the database the books are re-added, unless it spoils them on purpose."""
     uses_database = request.node.get_closest_marker("db") is not None
     if not uses_database:
         yield
@@ -62,7 +62,7 @@ def _book_adds_up(request: pytest.FixtureRequest) -> Iterator[None]:
 
 @pytest.fixture
 def lab(db: None) -> Laboratory:
-    """The demo laboratory inside the test's own transaction (services that are durable excepted)."""
+    """The demo laboratory in the test's own transaction; durable services need `live_lab`."""
     return open_laboratory()
 
 

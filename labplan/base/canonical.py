@@ -21,6 +21,8 @@ def sha256_hex(data: bytes) -> str:
 
 def _plain(value: Any) -> Any:
     if isinstance(value, Decimal):
+        if not value.is_finite():
+            raise ValueError(f"{value} has no place in a canonical document")
         return f"{value:f}"
     if isinstance(value, float):
         raise TypeError("floats have no place in a canonical document; round to a Decimal")

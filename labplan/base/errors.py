@@ -48,6 +48,12 @@ class MalformedRequest(DomainError):
     status = 400
 
 
+class BodyTooLarge(DomainError):
+    code = "too_large"
+    title = "The body is too large"
+    status = 413
+
+
 class UnknownField(DomainError):
     code = "unknown_field"
     title = "The request names a field that does not exist"

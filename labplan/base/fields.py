@@ -1,11 +1,15 @@
 """Serializer building blocks that refuse instead of guessing."""
 
+import re
 from decimal import Decimal, InvalidOperation
 from typing import Any
 
 from rest_framework import serializers
 
 from labplan.base.errors import FieldProblem, InvalidValue, MalformedRequest, UnknownField
+
+# Python would also read "1_0" as ten and digits of any script.
+_DECIMAL_TEXT = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
 
 
 class QuantityField(serializers.Field):
@@ -29,12 +33,13 @@ class QuantityField(serializers.Field):
             self.fail("not_a_number")
         if len(str(data)) > 40:
             self.fail("out_of_range", lowest=self.lowest, highest=self.highest)
+        text = str(data).strip()
+        if not _DECIMAL_TEXT.fullmatch(text):
+            self.fail("not_a_number")
         try:
-            value = Decimal(str(data).strip())
+            value = Decimal(text)
         except InvalidOperation:
-            self.fail("not_a_number")
-        if not value.is_finite():
-            self.fail("not_a_number")
+            self.fail("out_of_range", lowest=self.lowest, highest=self.highest)
         if not self.lowest <= value <= self.highest:
             self.fail("out_of_range", lowest=self.lowest, highest=self.highest)
         if value.as_tuple().exponent < -self.places:

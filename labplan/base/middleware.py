@@ -17,6 +17,9 @@ class ProblemFallbackMiddleware:
         self.get_response = get_response
 
     def __call__(self, request: HttpRequest) -> HttpResponse:
+        # PostgreSQL takes no NUL in a text, and no address or filter here has one.
+        if "\0" in request.path or "%00" in request.META.get("QUERY_STRING", ""):
+            return plain_problem(400, "malformed_request", "Take the NUL character out (%00).")
         response = self.get_response(request)
         is_html = response.get("Content-Type", "").startswith("text/html")
         if response.status_code in _HTML_REFUSALS and is_html:

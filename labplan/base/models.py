@@ -9,6 +9,11 @@ from django.db.models import Q
 from labplan.base.append_only import AppendOnlyModel
 
 
+def one_of(field: str, choices: type[models.TextChoices], *, name: str) -> models.CheckConstraint:
+    """A misspelt role, scope or state must not pass for one of the others."""
+    return models.CheckConstraint(condition=Q(**{f"{field}__in": choices.values}), name=name)
+
+
 class PersonManager(BaseUserManager):
     def create_user(self, code: str, password: str | None = None, **fields: Any) -> "Person":
         person = self.model(code=code, **fields)
@@ -20,20 +25,25 @@ class PersonManager(BaseUserManager):
         return self.get(code=code)
 
 
+class PersonSiteRole(models.TextChoices):
+    NONE = "none"
+    ADMINISTRATOR = "administrator"
+    AUDITOR = "auditor"
+
+
 class Person(AbstractBaseUser):
     """Whoever acts. Ledger and records know the code only; the name can be erased."""
 
-    class SiteRole(models.TextChoices):
-        NONE = "none"
-        ADMINISTRATOR = "administrator"
-        AUDITOR = "auditor"
-
+    SiteRole = PersonSiteRole
     code = models.SlugField(max_length=24, unique=True)
-    site_role = models.CharField(max_length=16, choices=SiteRole, default=SiteRole.NONE)
+    site_role = models.CharField(max_length=16, choices=PersonSiteRole, default=PersonSiteRole.NONE)
     is_active = models.BooleanField(default=True)
 
     USERNAME_FIELD = "code"
     objects = PersonManager()
+
+    class Meta:
+        constraints = [one_of("site_role", PersonSiteRole, name="person_site_role_known")]
 
     def __str__(self) -> str:
         return self.code
@@ -57,38 +67,46 @@ class Project(models.Model):
         return self.code
 
 
-class Membership(models.Model):
-    class Role(models.TextChoices):
-        VIEWER = "viewer"
-        CHEMIST = "chemist"
-        STOCK_KEEPER = "stock_keeper"
-        APPROVER = "approver"
-        LEAD = "lead"
+class MembershipRole(models.TextChoices):
+    VIEWER = "viewer"
+    CHEMIST = "chemist"
+    STOCK_KEEPER = "stock_keeper"
+    APPROVER = "approver"
+    LEAD = "lead"
 
+
+class Membership(models.Model):
+    Role = MembershipRole
     person = models.ForeignKey(Person, models.CASCADE, related_name="memberships")
     project = models.ForeignKey(Project, models.CASCADE, related_name="memberships")
-    role = models.CharField(max_length=16, choices=Role)
+    role = models.CharField(max_length=16, choices=MembershipRole)
 
     class Meta:
         constraints = [
             models.UniqueConstraint(fields=["person", "project"], name="membership_once"),
+            one_of("role", MembershipRole, name="membership_role_known"),
         ]
+
+
+class ApiTokenScope(models.TextChoices):
+    READ = "read"
+    WRITE = "write"
 
 
 class ApiToken(models.Model):
     """A token is shown once and kept as its SHA-256."""
 
-    class Scope(models.TextChoices):
-        READ = "read"
-        WRITE = "write"
-
+    Scope = ApiTokenScope
     person = models.ForeignKey(Person, models.CASCADE, related_name="tokens")
     name = models.CharField(max_length=60)
     digest = models.CharField(max_length=64, unique=True)
-    scope = models.CharField(max_length=8, choices=Scope)
+    scope = models.CharField(max_length=8, choices=ApiTokenScope)
     created_at = models.DateTimeField()
     expires_at = models.DateTimeField()
     revoked_at = models.DateTimeField(null=True)
+
+    class Meta:
+        constraints = [one_of("scope", ApiTokenScope, name="api_token_scope_known")]
 
 
 class RememberedAnswer(models.Model):
@@ -111,18 +129,22 @@ class RememberedAnswer(models.Model):
         ]
 
 
+class OutboxMessageState(models.TextChoices):
+    NEW = "new"
+    SENT = "sent"
+    DONE = "done"
+    DEAD = "dead"
+
+
 class OutboxMessage(models.Model):
     """Work to be done, written in the transaction that asked for it."""
 
-    class State(models.TextChoices):
-        NEW = "new"
-        SENT = "sent"
-        DONE = "done"
-        DEAD = "dead"
-
+    State = OutboxMessageState
     topic = models.CharField(max_length=40)
     payload = models.TextField()
-    state = models.CharField(max_length=8, choices=State, default=State.NEW)
+    state = models.CharField(
+        max_length=8, choices=OutboxMessageState, default=OutboxMessageState.NEW
+    )
     attempts = models.PositiveSmallIntegerField(default=0)
     created_at = models.DateTimeField()
     available_at = models.DateTimeField()
@@ -131,6 +153,7 @@ class OutboxMessage(models.Model):
     last_error = models.TextField(default="")
 
     class Meta:
+        constraints = [one_of("state", OutboxMessageState, name="outbox_state_known")]
         indexes = [
             models.Index(
                 fields=["available_at", "id"],

@@ -11,6 +11,12 @@ def etag_of(kind: str, code: str, version: int) -> str:
     return f'"{kind}-{code}-v{version}"'
 
 
+def is_known(request: Any, current: str) -> bool:
+    """Whether If-None-Match says that the caller has this already: answer 304."""
+    given = parse_etags(request.headers.get("If-None-Match", ""))
+    return "*" in given or current in {tag.removeprefix("W/") for tag in given}
+
+
 def require_match(request: Any, current: str) -> None:
     """Raise 428 without If-Match, 412 when it names another version; weak tags never match."""
     given = request.headers.get("If-Match", "")

@@ -72,18 +72,28 @@ def is_lock_timeout(error: OperationalError) -> bool:
     return state in {"55P03", "40P01", "40001"} or "database is locked" in str(error)
 
 
+# code of the framework -> title, what to do
+_FRAMEWORK_TEXTS = {
+    "method_not_allowed": ("This method is not served here", "The header Allow lists what is."),
+    "unsupported_media_type": (
+        "This kind of body is not read here", "Send JSON with Content-Type: application/json."
+    ),
+    "not_acceptable": (
+        "This kind of answer is not given here", "Send Accept: application/json or leave it out."
+    ),
+}  # fmt: skip
+
+
 def _from_framework(error: exceptions.APIException) -> domain.DomainError:
     """Give a framework's own refusal our shape, keeping its status and text."""
+    code = str(error.default_code)
+    title, advice = _FRAMEWORK_TEXTS.get(code, (code.replace("_", " "), ""))
     kind = type(
         "FrameworkRefusal",
         (domain.DomainError,),
-        {
-            "code": str(error.default_code),
-            "title": str(error.default_detail),
-            "status": error.status_code,
-        },
+        {"code": code, "title": title, "status": error.status_code},
     )
-    made: domain.DomainError = kind(str(error.detail))
+    made: domain.DomainError = kind(f"{error.detail} {advice}".strip())
     return made
 
 

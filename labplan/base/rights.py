@@ -47,7 +47,7 @@ def actor_for(person: Person, *, scope: str = ApiToken.Scope.WRITE) -> Actor:
 
 def may(actor: Actor, operation: str, *, project_id: int | None = None) -> bool:
     """Say whether the actor may do this; a name not in the tables is an error in the code."""
-    if operation not in READING and (actor.scope == "read" or actor.site_role == "auditor"):
+    if not _may_at_all(actor, operation):
         return False
     if operation in PROJECT_OPERATIONS:
         sees_all = operation in READING and actor.site_role != "none"
@@ -61,12 +61,19 @@ def may(actor: Actor, operation: str, *, project_id: int | None = None) -> bool:
     return any(role in allowed for role in actor.roles.values())
 
 
+def _may_at_all(actor: Actor, operation: str) -> bool:
+    """A token of scope read, and an auditor with any token, only look."""
+    return operation in READING or (actor.scope != "read" and actor.site_role != "auditor")
+
+
 def require(actor: Actor, operation: str, *, project_id: int | None = None) -> None:
     """Raise NotAllowed, saying which roles may do it."""
     if may(actor, operation, project_id=project_id):
         return
     if actor.scope == "read" and operation not in READING:
         raise NotAllowed("This token may only read; make one with scope write.")
+    if not _may_at_all(actor, operation):
+        raise NotAllowed("An auditor only looks; somebody with a role in the project must do it.")
     roles = PROJECT_OPERATIONS.get(operation) or SITE_OPERATIONS[operation]
     needed = ", ".join(sorted(roles))
     raise NotAllowed(
@@ -79,6 +86,8 @@ def visible_project_ids(actor: Actor, operation: str) -> frozenset[int] | None:
     """The projects in which the actor may do this; None means all of them."""
     if operation in READING and actor.site_role != "none":
         return None
+    if not _may_at_all(actor, operation):
+        return frozenset()
     return frozenset(
         project_id
         for project_id, role in actor.roles.items()

@@ -1,14 +1,13 @@
 """Why a structure cannot be taken as a target."""
 
-from dataclasses import dataclass
 
-
-@dataclass(frozen=True)
 class TargetProblem(Exception):
     """A refusal of the structure itself: `code` for programs, `detail` says what to change."""
 
-    code: str
-    detail: str
+    def __init__(self, code: str, detail: str) -> None:
+        super().__init__(code, detail)
+        self.code = code
+        self.detail = detail
 
     def __str__(self) -> str:
         return self.detail

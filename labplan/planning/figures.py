@@ -1,4 +1,10 @@
-"""Print amounts the way they are read on a balance or a syringe."""
+"""Print amounts and names the way they are read on a balance, a syringe or in a sentence."""
+
+import re
+
+# The first word of three letters or more; shorter ones are locants, D, L, O, N.
+_FIRST_WORD = re.compile(r"[A-Za-z]{3,}")
+_PROPER_NAMES = ("Celite", "Fmoc", "Boc", "Cbz")
 
 
 def mass_text(mass_mg: float) -> str:
@@ -36,3 +42,15 @@ def volume_text(volume_ml: float) -> str:
 
 def three_figures(value: float) -> str:
     return f"{value:.3g}"
+
+
+def in_sentence(name: str) -> str:
+    """A substance's name inside a sentence.
+
+    >>> in_sentence("1-Octanol"), in_sentence("D-Glucose"), in_sentence("Celite")
+    ('1-octanol', 'D-glucose', 'Celite')
+    """
+    word = _FIRST_WORD.search(name)
+    if word is None or word.group() in _PROPER_NAMES:
+        return name
+    return name[: word.start()] + word.group().lower() + name[word.end() :]

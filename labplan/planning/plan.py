@@ -5,7 +5,7 @@ from datetime import date
 
 from labplan.chemistry.coupling import Target
 from labplan.planning import vessels
-from labplan.planning.coupling_stage import donor_amount_mmol, size_coupling, too_little_to_weigh
+from labplan.planning.coupling_stage import donor_amount_mmol, size_coupling
 from labplan.planning.expectations import expect
 from labplan.planning.methods import Method, find_method
 from labplan.planning.steps import coupling_steps
@@ -68,12 +68,12 @@ def make_plan(target: Target, scale: Scale, shelf: tuple[ShelfBottle, ...], *, a
         return Plan(target, "not_plannable", reasons, None, None, None)
     donor_mmol = donor_amount_mmol(target, method, scale)
     sized = size_coupling(target, method, donor_mmol, shelf, as_of)
+    unfit = _too_small(sized.too_small) + _too_large(sized.stage)
+    if unfit:
+        return Plan(target, "not_plannable", unfit, method, None, None)
     if sized.stage is None:
         route = Route((), _why(target, method), (), sized.shortages, sized.passed_over)
         return Plan(target, "plannable", (), method, route, expect(target))
-    unfit = _unfit_scale(sized.stage)
-    if unfit:
-        return Plan(target, "not_plannable", unfit, method, None, None)
     name = target.name or "the product"
     stage = replace(sized.stage, steps=coupling_steps(sized.stage, method, name))
     warnings = (*sized.warnings, *_group_cautions(target, method), *_shelf_notes(target, shelf))
@@ -81,28 +81,30 @@ def make_plan(target: Target, scale: Scale, shelf: tuple[ShelfBottle, ...], *, a
     return Plan(target, "plannable", (), method, route, expect(target))
 
 
-def _unfit_scale(stage: Stage) -> tuple[Reason, ...]:
-    """Too little to weigh, or too much for one flask: refused, saying which way to go."""
-    found = []
-    small = too_little_to_weigh(stage)
-    if small:
-        found.append(
-            Reason(
-                "below_least_weighable",
-                f"Too little to weigh well (under 20 mg): {', '.join(small)}. Ask for more.",
-            )
-        )
-    if stage.quench_vessel_ml >= vessels.BEAKERS_ML[-1] or (
-        stage.vessel_ml >= vessels.FLASKS_ML[-1]
+def _too_small(names: tuple[str, ...]) -> tuple[Reason, ...]:
+    if not names:
+        return ()
+    return (
+        Reason(
+            "below_least_weighable",
+            f"Too little to weigh well (under 20 mg): {', '.join(names)}. Ask for more.",
+        ),
+    )
+
+
+def _too_large(stage: Stage | None) -> tuple[Reason, ...]:
+    """What does not fit one flask or one open beaker is several runs."""
+    if stage is None or (
+        stage.quench_vessel_ml < vessels.BEAKERS_ML[-1] and stage.vessel_ml < vessels.FLASKS_ML[-1]
     ):
-        found.append(
-            Reason(
-                "above_one_flask",
-                "The reaction does not fit one flask and one open quench vessel of 10 L; ask for "
-                "less, in several runs.",
-            )
-        )
-    return tuple(found)
+        return ()
+    return (
+        Reason(
+            "above_one_flask",
+            "The reaction does not fit one flask and one open quench vessel of 10 L; ask for "
+            "less, in several runs.",
+        ),
+    )
 
 
 def _why(target: Target, method: Method) -> tuple[str, ...]:

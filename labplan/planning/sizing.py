@@ -104,20 +104,25 @@ def _reacting_charge(need: Need, bottle: ShelfBottle) -> Charge:
     assert bottle.content is not None
     assert need.amount_mmol is not None
     exact_mg = amounts.mass_mg(need.amount_mmol, bottle.content)
-    if bottle.measured_by == "mass":
+    volume = None
+    if bottle.measured_by == "volume":
+        volume = amounts.volume_ml(exact_mg, _density(bottle))
+    by_mass = volume is None or volume < rounding.LEAST_VOLUME_ML
+    if by_mass:
         mass = rounding.round_mass_mg(exact_mg, outward=need.outward)
-        mmol = amounts.amount_mmol(mass, bottle.content)
-        return _charge(need, bottle, mass_mg=mass, amount_mmol=mmol, dispense="mass",
-                       hold=round(mass * 1000))  # fmt: skip
-    density = _density(bottle)
-    exact_ml = amounts.volume_ml(exact_mg, density)
-    volume = rounding.round_volume_ml(exact_ml, outward=need.outward)
-    mass = amounts.mass_mg_of_volume(volume, density)
-    mmol = amounts.amount_mmol(mass, bottle.content)
-    by_mass = volume < rounding.LEAST_VOLUME_ML
-    return _charge(need, bottle, mass_mg=mass, volume_ml=volume, amount_mmol=mmol,
-                   dispense="mass" if by_mass else "volume",
-                   hold=round(volume * 1_000_000))  # fmt: skip
+        volume = amounts.volume_ml(mass, _density(bottle)) if volume is not None else None
+    else:
+        volume = rounding.round_volume_ml(volume or 0.0, outward=need.outward)
+        mass = amounts.mass_mg_of_volume(volume, _density(bottle))
+    return _charge(
+        need,
+        bottle,
+        mass_mg=mass,
+        volume_ml=volume,
+        amount_mmol=amounts.amount_mmol(mass, bottle.content),
+        dispense="mass" if by_mass else "volume",
+        hold=round(mass * 1000) if volume is None else round(volume * 1_000_000),
+    )
 
 
 def _bulk_volume_charge(need: Need, bottle: ShelfBottle) -> Charge:

@@ -4,7 +4,7 @@ Order and cautions are common practice: promoter last and dropwise in the cold, 
 poured into open, stirred bicarbonate, never the reverse; peracetates show by charring only.
 """
 
-from labplan.planning.figures import bulk_text, mass_text, three_figures, volume_text
+from labplan.planning.figures import bulk_text, in_sentence, mass_text, three_figures, volume_text
 from labplan.planning.methods import Method
 from labplan.planning.values import Charge, Stage, Step
 from labplan.planning.vessels import funnel_ml
@@ -26,8 +26,8 @@ def source_text(charge: Charge) -> str:
 
 
 def charge_text(charge: Charge) -> str:
-    """`3.51 mL of Boron trifluoride diethyl etherate (bottle BFE-1)`."""
-    return f"{amount_text(charge)} of {charge.name} ({source_text(charge)})"
+    """`3.51 mL of boron trifluoride diethyl etherate (bottle BFE-1)`."""
+    return f"{amount_text(charge)} of {in_sentence(charge.name)} ({source_text(charge)})"
 
 
 class _Writer:

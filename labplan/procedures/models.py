@@ -32,8 +32,20 @@ class Procedure(models.Model):
                 condition=Q(state__in=life.STATES), name="procedure_state_known"
             ),
             models.CheckConstraint(
-                condition=Q(product_mass_mg__gt=0, acceptor_amount_mmol__isnull=True)
-                | Q(product_mass_mg__isnull=True, acceptor_amount_mmol__gt=0),
+                # NULL > 0 passes a CHECK, hence "is not null". The upper bounds also keep text
+                # out: SQLite sorts it above every number.
+                condition=Q(
+                    product_mass_mg__isnull=False,
+                    product_mass_mg__gt=0,
+                    product_mass_mg__lt=10**9,
+                    acceptor_amount_mmol__isnull=True,
+                )
+                | Q(
+                    product_mass_mg__isnull=True,
+                    acceptor_amount_mmol__isnull=False,
+                    acceptor_amount_mmol__gt=0,
+                    acceptor_amount_mmol__lt=10**6,
+                ),
                 name="procedure_has_one_scale",
             ),
             models.CheckConstraint(

@@ -48,7 +48,9 @@ def hazards_of(substance: str, name: str) -> Hazards:
         established=True,
         signal_word=row["signal_word"],
         pictograms=tuple(row["pictograms"]),
-        hazard_statements=tuple(Statement(code, statement_text(code)) for code in codes),
+        hazard_statements=tuple(
+            Statement(code, statement_text(code).rstrip(".")) for code in codes
+        ),
         precautionary_statements=tuple(
             Statement(code, statement_text(code)) for code in row["precautionary"]
         ),

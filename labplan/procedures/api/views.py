@@ -11,7 +11,7 @@ from rest_framework.views import APIView
 from labplan.base.errors import NotFound
 from labplan.base.fields import StrictSerializer
 from labplan.base.idempotency import answer_once, claim_from
-from labplan.base.preconditions import require_match
+from labplan.base.preconditions import is_known, require_match
 from labplan.base.views import ListView
 from labplan.procedures import selectors, services
 from labplan.procedures.api import shapes
@@ -48,7 +48,10 @@ def _accepted(procedure: Procedure) -> Response:
 class ProcedureDetail(APIView):
     def get(self, request: Any, code: str) -> Response:
         procedure = selectors.get_procedure(actor=request.user, code=code)
-        return Response(shapes.show_detail(procedure), headers={"ETag": shapes.etag(procedure)})
+        headers = {"ETag": shapes.etag(procedure)}
+        if is_known(request, headers["ETag"]):
+            return Response(status=304, headers=headers)
+        return Response(shapes.show_detail(procedure), headers=headers)
 
 
 class ProcedureDocument(APIView):
@@ -56,12 +59,19 @@ class ProcedureDocument(APIView):
 
     def get(self, request: Any, code: str) -> HttpResponse:
         document = _document(request, code)
-        response = HttpResponse(bytes(document.body), content_type="application/json")
-        response["ETag"] = f'"{document.sha256}"'
-        return response
+        etag = f'"{document.sha256}"'
+        if is_known(request, etag):
+            return HttpResponse(status=304, headers={"ETag": etag})
+        return HttpResponse(
+            bytes(document.body), content_type="application/json", headers={"ETag": etag}
+        )
 
 
 class ProcedureSheetHtml(APIView):
+    def perform_content_negotiation(self, request: Any, force: bool = False) -> Any:
+        """The sheet is HTML and its refusals are problems, whatever Accept asks for."""
+        return super().perform_content_negotiation(request, force=True)
+
     def get(self, request: Any, code: str) -> HttpResponse:
         procedure = selectors.get_procedure(actor=request.user, code=code)
         _document(request, code)
@@ -77,7 +87,7 @@ def _document(request: Any, code: str) -> Document:
 
 class ProcedureCancel(APIView):
     def post(self, request: Any, code: str) -> Response:
-        StrictSerializer(data=request.data or {}).read()
+        StrictSerializer(data=request.data).read()
         claim = claim_from(request, route="procedure.cancel", render=_shown)
         return answer_once(
             claim,

@@ -23,9 +23,9 @@ class _QuietHandler(WSGIRequestHandler):
 
 
 @contextmanager
-def running_server() -> Iterator[str]:
-    """Serve on a free port of this machine; yield the address."""
-    server = ThreadedWSGIServer(("127.0.0.1", 0), _QuietHandler)
+def running_server(port: int = 0) -> Iterator[str]:
+    """Serve on a port of this machine (0: any free one); yield the address."""
+    server = ThreadedWSGIServer(("127.0.0.1", port), _QuietHandler)
     server.set_app(get_wsgi_application())
     thread = threading.Thread(target=server.serve_forever, kwargs={"poll_interval": 0.05})
     thread.start()
@@ -62,18 +62,18 @@ class ApiClient:
     """A few lines of HTTP with a token."""
 
     def __init__(self, address: str, token: str) -> None:
-        self._address = address
+        self.address = address
         self._token = token
 
     def get(self, path: str) -> Any:
         return json.loads(self.get_text(path))
 
     def get_text(self, path: str) -> str:
-        return self._send(urllib.request.Request(self._address + path))
+        return self._send(urllib.request.Request(self.address + path))
 
     def post(self, path: str, body: dict[str, Any]) -> Any:
         request = urllib.request.Request(
-            self._address + path,
+            self.address + path,
             data=json.dumps(body).encode(),
             headers={
                 "Content-Type": "application/json",

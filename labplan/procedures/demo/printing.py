@@ -4,6 +4,7 @@ from typing import Any
 
 from rich import box
 from rich.console import Console
+from rich.padding import Padding
 from rich.panel import Panel
 from rich.table import Table
 from rich.text import Text
@@ -127,28 +128,28 @@ def _equivalents(charge: dict[str, Any]) -> str:
 def _print_steps(console: Console, stage: dict[str, Any]) -> None:
     console.print("\n[bold]Steps[/]")
     for step in stage["steps"]:
-        console.print(Text.assemble((f"{step['number']}. {step['title']}. ", "bold"), step["text"]))
+        text = Text.assemble((f"{step['title']}. ", "bold"), step["text"])
         if step["watch"]:
-            console.print(Text(f"   Watch: {step['watch']}.", style="italic"))
-        console.print(Text(f"   {step['pause'].capitalize()}.", style="dim"))
+            text.append(f"\nWatch: {step['watch']}.", style="italic")
+        text.append(f"\n{step['pause'].capitalize()}.", style="dim")
+        row = Table.grid(padding=(0, 1))
+        row.add_row(Text(f"{step['number']}.", style="bold"), text)
+        console.print(row)
 
 
 def _print_hazards(console: Console, hazards: list[dict[str, Any]]) -> None:
-    table = _table("Hazards", ("Substance", False), ("Signal", False), ("Statements", False),
-                   ("Evidence", False))  # fmt: skip
+    console.print("\n[bold]Hazards[/]")
     for line in hazards:
-        if not line["established"]:
-            statements, signal = line["summary"], "unknown"
-        else:
-            signal = line["signal_word"] or "none"
-            statements = "; ".join(f"{s['code']} {s['text']}" for s in line["hazard_statements"])
-        table.add_row(line["name"], signal, statements or line["summary"], line["evidence"])
-    console.print(table)
+        signal = line["signal_word"] or ("none" if line["established"] else "unknown")
+        evidence = f" (evidence: {line['evidence']})" if line["established"] else ""
+        console.print(Text.assemble((f"{signal.upper()}: ", "bold"), line["name"], evidence))
+        said = [f"{s['code']} {s['text']}" for s in line["hazard_statements"]] or [line["summary"]]
+        console.print(Padding(Text("; ".join(said).rstrip(".") + "."), (0, 0, 0, 3)))
 
 
 def _print_expectations(console: Console, document: dict[str, Any]) -> None:
     expected = document["route"]["stages"][-1]["expected"]
-    console.print("[bold]What to expect[/]")
+    console.print("\n[bold]What to expect[/]")
     console.print(
         Text(
             f"{expected['mass_mg']} mg at {expected['yield_pct']} % "

@@ -1,11 +1,13 @@
 """Show the whole house at work on an invented scenario."""
 
+import json
+import threading
 from pathlib import Path
 from typing import Any
 
 from django.conf import settings
 from django.core.management import call_command
-from django.core.management.base import BaseCommand, CommandError
+from django.core.management.base import BaseCommand, CommandError, CommandParser
 from django.db import connection
 from rich.console import Console
 
@@ -18,7 +20,12 @@ from labplan.procedures.demo.printing import print_procedure
 
 class Command(BaseCommand):
     help = "Load an invented stock, ask for one glycoside over HTTP and print the answer."
-    requires_migrations_checks = False
+
+    def add_arguments(self, parser: CommandParser) -> None:
+        parser.add_argument(
+            "--stay", action="store_true", help="keep the server running until Ctrl-C"
+        )
+        parser.add_argument("--port", type=int, default=0, help="port to serve on (default: any)")
 
     def handle(self, *args: Any, **options: Any) -> None:
         if not getattr(settings, "IS_DEMO", False):
@@ -28,13 +35,9 @@ class Command(BaseCommand):
         with clock.replaced_by(clock.running_from(demo_scenario.starting_instant(scenario))):
             _empty_database(console)
             _load(console, scenario)
-            procedure, shelf, sheet = _ask(console, scenario)
-        print_procedure(console, procedure, shelf)
-        path = settings.OUT_DIR / "sheet.html"
-        path.write_text(sheet)
-        console.print(f"\nThe sheet for the hood: [bold]{path.relative_to(settings.BASE_DIR)}[/]")
-        if procedure["state"] != "planned":
-            raise CommandError(f"The demo procedure ended {procedure['state']}.")
+            state = _run(console, scenario, port=options["port"], stay=options["stay"])
+        if state != "planned":
+            raise CommandError(f"The demo procedure ended {state}.")
 
 
 def _empty_database(console: Console) -> None:
@@ -57,21 +60,27 @@ def _load(console: Console, scenario: dict[str, Any]) -> None:
     )
 
 
-def _ask(
-    console: Console, scenario: dict[str, Any]
-) -> tuple[dict[str, Any], list[dict[str, Any]], str]:
-    """Request, relay, poll; return the procedure, the bottles it uses and the sheet."""
+def _run(console: Console, scenario: dict[str, Any], *, port: int, stay: bool) -> str:
+    """Serve, ask, print, leave the files; return the state the procedure ended in."""
     wanted = dict(scenario["request"])
     token = create_token(person_code=wanted.pop("person"), name="demo")
-    with running_server() as address, running_relay():
+    with running_server(port) as address, running_relay():
         client = ApiClient(address, token)
-        console.print(f"POST {address}/api/v1/procedures/")
+        procedure = _ask(console, client, wanted)
+        shelf = [client.get(f"/api/v1/bottles/{code}/") for code in _bottles_used(procedure)]
+        print_procedure(console, procedure, shelf)
+        _leave_files(console, client, procedure)
+        if stay:
+            _stay(console, address, token)
+    return str(procedure["state"])
+
+
+def _ask(console: Console, client: ApiClient, wanted: dict[str, Any]) -> dict[str, Any]:
+    console.print(f"POST {client.address}/api/v1/procedures/")
+    with console.status("Planning"):
         accepted = client.post("/api/v1/procedures/", wanted)
-        procedure = client.wait_until_settled(accepted["links"]["self"])
-        codes = _bottles_used(procedure)
-        shelf = [client.get(f"/api/v1/bottles/{code}/") for code in codes]
-        sheet = client.get_text(procedure["links"]["sheet_html"])
-    return procedure, shelf, sheet
+        procedure: dict[str, Any] = client.wait_until_settled(accepted["links"]["self"])
+    return procedure
 
 
 def _bottles_used(procedure: dict[str, Any]) -> list[str]:
@@ -83,3 +92,21 @@ def _bottles_used(procedure: dict[str, Any]) -> list[str]:
         for charge in stage["charges"]
         if charge["group"] == "reaction" and charge["bottle"]
     ]
+
+
+def _leave_files(console: Console, client: ApiClient, procedure: dict[str, Any]) -> None:
+    sheet, answer = settings.OUT_DIR / "sheet.html", settings.OUT_DIR / "procedure.json"
+    sheet.write_text(client.get_text(procedure["links"]["sheet_html"]), encoding="utf-8")
+    answer.write_text(json.dumps(procedure, indent=1, ensure_ascii=False), encoding="utf-8")
+    console.print(
+        "\nThe sheet for the hood: [bold]out/sheet.html[/]; all of it: out/procedure.json"
+    )
+
+
+def _stay(console: Console, address: str, token: str) -> None:
+    console.print(f"\nServing until Ctrl-C. For another terminal:\n  ADDRESS={address}")
+    console.print(f"  TOKEN={token}", soft_wrap=True)
+    try:
+        threading.Event().wait()
+    except KeyboardInterrupt:
+        console.print("Stopped.")
