@@ -12,8 +12,8 @@ from labplan.base.rights import Actor
 from labplan.base.tokens import create_token
 from labplan.procedures.demo import scenario as demo_scenario
 from labplan.procedures.models import Document, Procedure
+from tests.targets import OCTYL_GLUCOSIDE
 
-OCTYL_GLUCOSIDE = "CCCCCCCCO[C@@H]1O[C@H](COC(C)=O)[C@@H](OC(C)=O)[C@H](OC(C)=O)[C@H]1OC(C)=O"
 PROCEDURES = "/api/v1/procedures/"
 
 

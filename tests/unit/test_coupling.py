@@ -8,7 +8,7 @@ from rdkit import Chem
 from labplan.chemistry.coupling import read_target
 from labplan.chemistry.errors import TargetProblem
 from labplan.chemistry.structures import describe_smiles
-from tests.laboratory import OCTYL_GLUCOSIDE
+from tests.targets import OCTYL_GLUCOSIDE
 
 BETA_GLUCOSE_PENTAACETATE = "LPTITAGPBXDDGR-IBEHDNSVSA-N"  # InChIKey, CAS 604-69-3
 GLUCOSIDE = "CC(=O)OC[C@H]1O[C@@H](O{})[C@H](OC(C)=O)[C@@H](OC(C)=O)[C@@H]1OC(C)=O"

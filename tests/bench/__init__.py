@@ -1,0 +1,1 @@
+"""Speed and memory, each beside a bare baseline measured in the same run. `make bench`."""
