@@ -42,7 +42,7 @@ def move_balances(changes: Sequence[BalanceChange]) -> dict[int, BalanceAfter]:
 
     A bottle missing from the answer did not have enough: the caller must roll back.
     """
-    _require_transaction()
+    require_transaction()
     done: dict[int, BalanceAfter] = {}
     ordered = sorted(changes, key=lambda change: change.bottle_id)
     with connection.cursor() as cursor:
@@ -56,12 +56,13 @@ def move_balances(changes: Sequence[BalanceChange]) -> dict[int, BalanceAfter]:
 
 def lock_balances(bottle_ids: Iterable[int]) -> None:
     """Keep others from moving these bottles until the transaction ends."""
-    _require_transaction()
+    require_transaction()
     rows = Balance.objects.filter(pk__in=set(bottle_ids)).order_by("pk")
     list(rows.select_for_update(no_key=True).values_list("pk"))
 
 
-def _require_transaction() -> None:
+def require_transaction() -> None:
+    """Every writer of the stock starts here: half of its work must never stay behind."""
     if not connection.in_atomic_block:
         raise RuntimeError("balances are moved inside the caller's transaction")
 

@@ -50,7 +50,7 @@ class BottleDetail(APIView):
 
 
 class MovementList(ListView):
-    """The book of a bottle; lines of other projects are for those who keep the stock."""
+    """The book of a bottle, newest line first; other projects' lines are for stock keepers."""
 
     def rows(
         self, request: Any, wanted: dict[str, str], code: str = "", **kwargs: Any

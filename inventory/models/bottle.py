@@ -90,7 +90,9 @@ class Bottle(models.Model):
                 name="bottle_assay_in_range",
             ),
             models.CheckConstraint(
-                condition=Q(density_g_per_ml__isnull=True) | Q(density_g_per_ml__gt=0),
+                # The upper bound also keeps text out: SQLite sorts it above every number.
+                condition=Q(density_g_per_ml__isnull=True)
+                | (Q(density_g_per_ml__gt=0) & Q(density_g_per_ml__lte=25)),
                 name="bottle_density_positive",
             ),
         ]
@@ -121,6 +123,8 @@ class Reading(models.Model):
     class Meta:
         constraints = [
             one_of("kind", ReadingKind, name="reading_kind_known"),
-            models.CheckConstraint(condition=Q(value__gte=0), name="reading_not_negative"),
+            models.CheckConstraint(
+                condition=Q(value__gte=0) & Q(value__lte=10**8), name="reading_not_negative"
+            ),
         ]
         indexes = [models.Index(fields=["bottle", "kind", "-read_on"], name="reading_latest")]

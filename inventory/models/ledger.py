@@ -78,6 +78,7 @@ class Movement(AppendOnlyModel):
             whole_number("held_after", lowest=0, name="movement_held_whole"),
             whole_number("on_hand_change", lowest=-LARGEST_AMOUNT, name="movement_change_whole"),
             whole_number("held_change", lowest=-LARGEST_AMOUNT, name="movement_hold_whole"),
+            whole_number("amount_nmol", lowest=0, name="movement_moles_whole"),
             models.CheckConstraint(
                 condition=Q(held_after__lte=F("on_hand_after")), name="movement_held_not_over"
             ),

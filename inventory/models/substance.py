@@ -83,16 +83,25 @@ class Form(models.Model):
         constraints = [
             one_of("kind", FormKind, name="form_kind_known"),
             models.UniqueConstraint(fields=["substance", "label"], name="form_once"),
+            # NULL > 0 is neither true nor false, and a CHECK takes that for a yes: hence "is not".
             models.CheckConstraint(
-                condition=~Q(kind="hydrate") | Q(hydrate_water__gt=0), name="form_hydrate_has_water"
+                condition=~Q(kind="hydrate")
+                | Q(hydrate_water__isnull=False, hydrate_water__gt=0, hydrate_water__lte=30),
+                name="form_hydrate_has_water",
             ),
             models.CheckConstraint(
-                condition=~Q(kind="solution") | (Q(solution_value__gt=0) & ~Q(solution_basis="")),
+                condition=~Q(kind="solution")
+                | Q(solution_value__isnull=False, solution_value__gt=0, solution_value__lte=10_000)
+                & ~Q(solution_basis=""),
                 name="form_solution_has_strength",
             ),
             models.CheckConstraint(
                 condition=~Q(kind="anomer_mixture")
-                | (Q(active_share_pct__gt=0) & Q(active_share_pct__lte=100)),
+                | Q(
+                    active_share_pct__isnull=False,
+                    active_share_pct__gt=0,
+                    active_share_pct__lte=100,
+                ),
                 name="form_mixture_has_share",
             ),
         ]

@@ -2,12 +2,17 @@
 
 import csv
 import io
+import re
 from dataclasses import dataclass, field
 from datetime import date
-from decimal import Decimal, InvalidOperation
+from decimal import Decimal
 from pathlib import Path
 
 from labplan.base.errors import FieldProblem
+
+# Python would also take 1_000, digits of other scripts, 20260615 and 2026-W25-1.
+_NUMBER = re.compile(r"[+-]?[0-9]+(\.[0-9]+)?")
+_DAY = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}")
 
 
 @dataclass
@@ -34,6 +39,12 @@ class Row:
     def text(self, column: str) -> str:
         return self.values.get(column, "")
 
+    def within(self, column: str, longest: int) -> str:
+        """The text, with an error when the column of the database does not hold it."""
+        if len(self.text(column)) > longest:
+            self.error(column, "too_long", f"At most {longest} characters.")
+        return self.text(column)
+
     def choice(self, column: str, allowed: tuple[str, ...]) -> str:
         value = self.text(column)
         if value not in allowed:
@@ -51,13 +62,10 @@ class Row:
         if "," in text:
             self.error(column, "decimal_comma", "Write numbers with a decimal point.")
             return None
-        try:
-            value = Decimal(text)
-        except InvalidOperation:
-            value = Decimal("NaN")
-        if not value.is_finite():
-            self.error(column, "not_a_number", f"{text!r} is not a number.")
+        if not _NUMBER.fullmatch(text):
+            self.error(column, "not_a_number", f"{text!r} is not a number such as 12.5.")
             return None
+        value = Decimal(text)
         if not Decimal(lowest) <= value <= Decimal(highest):
             self.error(column, "out_of_range", f"Give a value from {lowest} to {highest}.")
             return None
@@ -71,7 +79,7 @@ class Row:
         if not text:
             return None
         try:
-            return date.fromisoformat(text)
+            return date.fromisoformat(text if _DAY.fullmatch(text) else "")
         except ValueError:
             self.error(column, "not_a_date", f"Write dates as YYYY-MM-DD, not {text!r}.")
             return None
@@ -88,6 +96,9 @@ def read_rows(
         return []
     except OSError as error:
         errors.add(path.name, "unreadable", f"The file cannot be read: {error.strerror}.")
+        return []
+    if "\0" in text:
+        errors.add(path.name, "not_csv", "The file holds a NUL character; save it as CSV again.")
         return []
     try:
         table = list(csv.reader(io.StringIO(text), strict=True))
@@ -106,6 +117,7 @@ def read_rows(
 def _header_is_sound(
     name: str, header: list[str], columns: tuple[str, ...], required: set[str], errors: RowErrors
 ) -> bool:
+    before = len(errors.found)  # another file's errors are no fault of this header
     if len(header) == 1 and ";" in header[0]:
         errors.add(name, "semicolons", "Separate the columns by commas, not semicolons.")
         return False
@@ -115,7 +127,7 @@ def _header_is_sound(
         errors.add(name, "missing_column", f"The column {column!r} is needed.")
     if len(set(header)) != len(header):
         errors.add(name, "repeated_column", "A column is named twice.")
-    return not errors.found
+    return len(errors.found) == before
 
 
 def _rows(

@@ -9,7 +9,7 @@ from decimal import Decimal
 from django.db.models import F
 
 from inventory import locks
-from inventory.errors import StockShort
+from inventory.errors import Shortfall, StockShort
 from inventory.models import Bottle, Hold, Reservation
 from inventory.services.book import BookLine, write_lines
 from labplan.base import clock
@@ -38,6 +38,7 @@ def hold_lines(
     Guarantees that on hand - held never falls under the heel of a bottle. Raises NotAllowed,
     StockShort (all short bottles listed; the caller rolls back) or NotFound for a bottle code.
     """
+    locks.require_transaction()
     require(actor, operation, project_id=project_id)
     bottles = _bottles_by_code(lines)
     reservation = Reservation.objects.create(
@@ -65,6 +66,7 @@ def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
 
     Raises NotFound, NotAllowed, and StateForbids when it is closed already.
     """
+    locks.require_transaction()
     reservation = Reservation.objects.select_for_update(no_key=True).filter(code=code).first()
     if reservation is None:
         raise NotFound("There is no reservation with this code.")
@@ -97,8 +99,18 @@ def _bottles_by_code(lines: Sequence[HoldLine]) -> dict[str, Bottle]:
         raise NotFound(f"There is no bottle {', '.join(missing)}.")
     unusable = sorted(c for c, b in bottles.items() if b.status != Bottle.Status.USABLE)
     if unusable:
-        raise StockShort(f"Set aside from use: {', '.join(unusable)}.")
+        raise StockShort(
+            f"Set aside from use: {', '.join(unusable)}.",
+            shortfalls=tuple(_none_usable(lines, code) for code in unusable),
+        )
     return bottles
+
+
+def _none_usable(lines: Sequence[HoldLine], code: str) -> Shortfall:
+    asked = [(number, line) for number, line in enumerate(lines, 1) if line.bottle_code == code]
+    return Shortfall(
+        line=asked[0][0], bottle=code, needed=sum(line.amount for _, line in asked), usable=0
+    )
 
 
 def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLine:

@@ -10,7 +10,13 @@ from inventory.errors import ImportRefused
 from inventory.models import Bottle, Place
 from inventory.services.csv_rows import RowErrors, read_rows
 from inventory.services.receipt import BottleReceipt, receive_bottles
-from inventory.services.stock_row import PLACE_COLUMNS, STOCK_COLUMNS, read_receipt
+from inventory.services.stock_row import (
+    PLACE_COLUMNS,
+    STOCK_COLUMNS,
+    read_code,
+    read_receipt,
+    temperature_c,
+)
 from inventory.services.substances import SubstanceFinder
 from labplan.base.events import record_event
 from labplan.base.rights import Actor, require
@@ -44,26 +50,30 @@ def import_stock(
                 "Nothing was changed.",
                 errors=tuple(errors.found[:MOST_ERRORS_SHOWN]),
             )
-        count = receive_bottles(receipts, actor=actor, reason=f"import of {bottles_file.name}")
+        name = bottles_file.name[:80]
+        count = receive_bottles(receipts, actor=actor, reason=f"import of {name}")
         record_event(
-            actor_code=actor.code, kind="stock.imported", subject=bottles_file.name,
+            actor_code=actor.code, kind="stock.imported", subject=name,
             after={"places": places, "bottles": count},
         )  # fmt: skip
     return ImportResult(places=places, bottles=count)
 
 
 def _import_places(path: Path, errors: RowErrors) -> int:
-    count = 0
+    count, seen = 0, set()
     for row in read_rows(path, PLACE_COLUMNS, required={"code", "name"}, errors=errors):
-        _, made = Place.objects.update_or_create(
-            code=row.text("code"),
-            defaults={
-                "name": row.text("name"),
-                "is_locked": row.choice("is_locked", ("yes", "no", "")) == "yes",
-                "temperature_c": row.decimal("temperature_c"),
-            },
-        )
-        count += made
+        before, code = len(errors.found), read_code(row)
+        values = {
+            "name": row.within("name", 120),
+            "is_locked": row.choice("is_locked", ("yes", "no", "")) == "yes",
+            "temperature_c": temperature_c(row, "temperature_c"),
+        }
+        if code and code in seen:
+            row.error("code", "place_repeated", f"The place {code} is in the file twice.")
+        seen.add(code)
+        if len(errors.found) == before:
+            _, made = Place.objects.update_or_create(code=code, defaults=values)
+            count += made
     return count
 
 
@@ -81,7 +91,7 @@ def _read_receipts(
     receipts, seen = [], set()
     for number, row in enumerate(rows, start=1):
         code = row.text("code")
-        if code in there or code in seen:
+        if code and (code in there or code in seen):
             row.error("code", "bottle_exists", f"There is a bottle {code} already.")
         seen.add(code)
         receipt = read_receipt(row, places, finder)

@@ -6,6 +6,7 @@ from datetime import date
 from decimal import Decimal
 from typing import Any
 
+from inventory import locks
 from inventory.content import content_of
 from inventory.models import Balance, Bottle, Form, Place, Reading, Substance
 from inventory.models.checks import LARGEST_AMOUNT
@@ -43,6 +44,7 @@ def receive_bottles(receipts: Sequence[BottleReceipt], *, actor: Actor, reason: 
 
     Raises NotAllowed. The caller has checked that codes are new and values are sound.
     """
+    locks.require_transaction()
     require(actor, "stock.receive")
     forms = _forms(receipts)
     bottles = Bottle.objects.bulk_create(

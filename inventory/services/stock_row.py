@@ -1,10 +1,11 @@
 """One line of a stock list -> one bottle to be received."""
 
 import re
+from datetime import date
 from decimal import Decimal
 from typing import Any
 
-from inventory.models import Bottle, Form, Place
+from inventory.models import Bottle, Form, Place, Substance
 from inventory.models.checks import LARGEST_AMOUNT
 from inventory.services.csv_rows import Row
 from inventory.services.receipt import BottleReceipt
@@ -41,8 +42,7 @@ def read_receipt(
 ) -> BottleReceipt | None:
     """Check one line; note every error on the row and return None if there was one."""
     before = len(row.errors.found)
-    if row.text("code") and not _CODE.fullmatch(row.text("code")):
-        row.error("code", "bad_code", "1 to 24 letters, digits, dots, dashes or underscores.")
+    code = read_code(row)
     measured_by, amount = _amount(row)
     place = places.get(row.text("place"))
     if place is None and row.text("place"):
@@ -51,18 +51,49 @@ def read_receipt(
     fields = _bottle_fields(row)
     readings = _readings(row)
     substance = finder.find(row)
+    if substance is not None:
+        _check_strength(row, substance)
     if len(row.errors.found) > before or substance is None or place is None:
         return None
     return BottleReceipt(
-        code=row.text("code"), substance=substance, form=form, place=place,
+        code=code, substance=substance, form=form, place=place,
         measured_by=measured_by, amount=amount,
         entered_amount=row.text("amount"), entered_unit=row.text("unit"),
         fields=fields, readings=readings,
     )  # fmt: skip
 
 
+def read_code(row: Row) -> str:
+    code = row.text("code")
+    if code and not _CODE.fullmatch(code):
+        row.error("code", "bad_code", "1 to 24 letters, digits, dots, dashes or underscores.")
+    return code
+
+
+def temperature_c(row: Row, column: str) -> Decimal | None:
+    return row.decimal(column, lowest="-273.1", highest="999.9", places=1)
+
+
+def _check_strength(row: Row, substance: Substance) -> None:
+    """A solution of a defined substance must say how many moles are in it, or nothing is sized."""
+    basis = row.text("solution_basis")
+    if row.text("form") != "solution" or substance.molar_mass_g_per_mol is None:
+        return
+    if basis in ("equiv_per_g", "equiv_per_l"):
+        row.error(
+            "solution_basis", "equivalents_say_no_moles",
+            f"{substance.name} has a molar mass: give its strength by mass or as mol_per_l.",
+        )  # fmt: skip
+    if basis in ("pct_w_v", "mol_per_l") and not row.text("density_g_per_ml"):
+        row.error(
+            "density_g_per_ml", "missing",
+            "A strength by volume needs the density of the solution.",
+        )  # fmt: skip
+
+
 def _amount(row: Row) -> tuple[str, int]:
     unit = row.text("unit")
+    row.within("amount", 40)
     value = row.decimal("amount", lowest="0", highest="1e15", places=9)
     if unit and unit not in UNITS:
         row.error("unit", "unknown_unit", f"{unit!r} is not one of: {', '.join(UNITS)}.")
@@ -96,16 +127,17 @@ def _form(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
 
 def _solution(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
     basis = row.choice("solution_basis", tuple(Form.SolutionBasis.values))
-    value = _needed(row, "solution_value", lowest="0.0001", highest="10000")
+    highest = "100" if basis == "pct_w_w" else "10000"
+    value = _needed(row, "solution_value", lowest="0.0001", highest=highest)
     solvent = finder.find_solvent(row)
-    temperature = row.decimal("solution_temperature_c", places=1)
+    temperature = temperature_c(row, "solution_temperature_c")
     words = {"pct_w_w": "% w/w", "pct_w_v": "% w/v", "mol_per_l": "mol/L",
              "equiv_per_g": "equiv/g", "equiv_per_l": "equiv/L"}.get(basis, basis)  # fmt: skip
     inside = f" in {solvent.name.lower()}" if solvent else ""
     return {
         "solution_basis": basis, "solution_value": value, "solution_solvent": solvent,
         "solution_temperature_c": temperature,
-        "label": f"solution, {_plain(value)} {words}{inside}",
+        "label": f"solution, {_plain(value)} {words}{inside}"[:120],
     }  # fmt: skip
 
 
@@ -121,29 +153,25 @@ def _plain(value: Decimal | None) -> str:
 
 
 def _bottle_fields(row: Row) -> dict[str, Any]:
-    opened, expires = row.day("opened_on"), row.day("expires_on")
     fields = {
-        "lot": row.text("lot"),
-        "supplier": row.text("supplier"),
+        "lot": row.within("lot", 60),
+        "supplier": row.within("supplier", 80),
         "assay_pct": row.decimal("assay_pct", lowest="0.0001", highest="100"),
         "assay_of": _assay_of(row),
         "assay_kind": row.choice("assay_kind", ("", *Bottle.AssayKind.values)) or "unspecified",
         "density_g_per_ml": row.decimal("density_g_per_ml", lowest="0.1", highest="25"),
-        "density_temperature_c": row.decimal("density_temperature_c", places=1),
-        "received_on": row.day("received_on"),
-        "opened_on": opened,
-        "expires_on": expires,
+        "density_temperature_c": temperature_c(row, "density_temperature_c"),
+        "received_on": _past_day(row, "received_on"),
+        "opened_on": _past_day(row, "opened_on"),
+        "expires_on": row.day("expires_on"),
         "status": row.choice("status", ("", *Bottle.Status.values)) or "usable",
-        "note": row.text("note"),
+        "note": row.within("note", 200),
     }
-    for column, longest in (("lot", 60), ("supplier", 80), ("note", 200)):
-        if len(row.text(column)) > longest:
-            row.error(column, "too_long", f"At most {longest} characters.")
     return fields | _stabiliser(row)
 
 
 def _assay_of(row: Row) -> str:
-    of = row.text("assay_of") or "as_is"
+    of = row.within("assay_of", 40) or "as_is"
     if of not in ("as_is", "anhydrous", "hydrate"):
         try:
             molar_mass_of_formula(of)
@@ -157,7 +185,7 @@ def _assay_of(row: Row) -> str:
 
 def _stabiliser(row: Row) -> dict[str, Any]:
     """`none`, a name, `unknown`, or nothing where no stabiliser is in question."""
-    name = row.text("stabiliser")
+    name = row.within("stabiliser", 60)
     state = {"": "not_applicable", "none": "none", "unknown": "unknown"}.get(name.lower(), "known")
     return {
         "stabiliser_state": state,
@@ -169,19 +197,21 @@ def _stabiliser(row: Row) -> dict[str, Any]:
     }
 
 
+def _past_day(row: Row, column: str) -> date | None:
+    day = row.day(column)
+    if day is not None and day > clock.today():
+        row.error(column, "in_the_future", f"{day} has not come yet.")
+    return day
+
+
 def _readings(row: Row) -> tuple[tuple[str, Decimal, Any], ...]:
     found = []
     water = row.decimal("water_ppm", lowest="0", highest="1000000")
+    read_on, activated = _past_day(row, "water_read_on"), _past_day(row, "activated_on")
     if water is not None:
-        read_on = row.day("water_read_on")
-        if read_on is None:
+        if read_on is None and not row.text("water_read_on"):
             row.error("water_read_on", "missing", "A water reading needs its date.")
         found.append(("water_ppm", water, read_on))
-    activated = row.day("activated_on")
     if activated is not None:
         found.append(("activation_c", ACTIVATION_C, activated))
-    for column in ("water_read_on", "activated_on", "received_on", "opened_on"):
-        day = row.day(column) if row.text(column) else None
-        if day is not None and day > clock.today():
-            row.error(column, "in_the_future", f"{day} has not come yet.")
     return tuple(found)

@@ -28,9 +28,21 @@ class SubstanceFinder:
         if cas and not reference.is_valid_cas(cas):
             row.error("cas", "bad_check_digit", f"{cas} is not a CAS number: check its digits.")
             return None
+        row.choice("kind", ("", *Substance.Kind.values))
+        name = row.text("substance")
+        if len(name) > 200 or len(reference.search_key(name)) > 240:
+            row.error("substance", "too_long", "At most 200 characters.")
+            return None
         if smiles:
             return self._by_structure(row, smiles)
-        found = self._by_number(cas) or self.by_name(row.text("substance"))
+        numbered, named = self._by_number(cas), self.by_name(row.text("substance"))
+        if numbered and named and numbered.code != named.code:
+            row.error(
+                "cas", "cas_and_name_differ",
+                f"{cas} is {numbered.name}, but the name says {named.name}.",
+            )  # fmt: skip
+            return None
+        found = numbered or named
         if found is None and row.text("kind") in ("material", "mixture"):
             return self._make_bare(row)
         if found is None:

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 from django.db.models import F, Sum
 
-from inventory.models import Balance, Hold, Movement
+from inventory.models import Balance, Bottle, Hold, Movement
 
 
 @dataclass(frozen=True)
@@ -39,7 +39,11 @@ def verify_ledger() -> LedgerReport:
     bottles = 0
     for balance in balances.iterator(chunk_size=2000):
         bottles += 1
-        faults += _check_balance(balance, books.get(balance.pk, (0, 0, 0)), held)
+        faults += _check_balance(balance, books.pop(balance.pk, (0, 0, 0)), held)
+    faults += [
+        LedgerFault(code, "balance", "is missing, but the bottle has a book")
+        for code in Bottle.objects.filter(pk__in=books).values_list("code", flat=True)
+    ]
     return LedgerReport(bottles, count, tuple(faults))
 
 

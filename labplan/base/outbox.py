@@ -77,13 +77,25 @@ def _claim(limit: int) -> list[OutboxMessage]:
     """Take a lease on due messages; two relays never take the same one."""
     with transaction.atomic(durable=True):
         skip = connection.features.has_select_for_update_skip_locked
-        rows = list(_due().select_for_update(skip_locked=skip)[:limit])
+        due = list(_due().select_for_update(skip_locked=skip)[:limit])
+        rows = [row for row in due if not _is_given_up(row)]
         for row in rows:
             row.state = OutboxMessage.State.SENT
             row.attempts += 1
             row.lease_until = clock.now() + LEASE
             row.save(update_fields=["state", "attempts", "lease_until"])
     return rows
+
+
+def _is_given_up(row: OutboxMessage) -> bool:
+    """Close a message whose every run ended without a word: it takes its process with it."""
+    if row.state != OutboxMessage.State.SENT or row.attempts < MAX_ATTEMPTS:
+        return False
+    row.state, row.lease_until = OutboxMessage.State.DEAD, None
+    row.last_error = f"broke off {row.attempts} times without an error"
+    row.save(update_fields=["state", "lease_until", "last_error"])
+    logger.error("message %s (%s) is given up: %s", row.pk, row.topic, row.last_error)
+    return True
 
 
 def _run(message: OutboxMessage) -> None:
@@ -101,7 +113,10 @@ def _run(message: OutboxMessage) -> None:
 def _put_back(message: OutboxMessage, error: Exception) -> None:
     dead = message.attempts >= MAX_ATTEMPTS
     wait_s = min(2**message.attempts, LONGEST_BACK_OFF_S)
-    OutboxMessage.objects.filter(pk=message.pk, state=OutboxMessage.State.SENT).update(
+    # By its attempt: a run that outlived its lease must not touch the one that followed it.
+    OutboxMessage.objects.filter(
+        pk=message.pk, state=OutboxMessage.State.SENT, attempts=message.attempts
+    ).update(
         state=OutboxMessage.State.DEAD if dead else OutboxMessage.State.NEW,
         available_at=clock.now() + timedelta(seconds=wait_s),
         lease_until=None,

@@ -10,7 +10,7 @@ from labplan.base.errors import FieldProblem, InvalidValue, MalformedRequest
 
 
 class NewestFirstPagination(CursorPagination):
-    """`page_size` from 1; more than max_page_size is cut to it. A cursor is taken as it was given."""
+    """`page_size` from 1, cut to max_page_size; a cursor is taken only as it was given out."""
 
     ordering = "-id"
     position_form = re.compile(r"[0-9]{1,18}")
@@ -25,6 +25,9 @@ class NewestFirstPagination(CursorPagination):
         return min(int(given), self.max_page_size)
 
     def decode_cursor(self, request: Any) -> Cursor | None:
+        given = request.query_params.get(self.cursor_query_param)
+        if given is not None and not re.fullmatch(r"[A-Za-z0-9+/]+={0,2}", given):
+            raise _broken_cursor()
         try:
             cursor = super().decode_cursor(request)
         except NotFound as error:
@@ -38,7 +41,7 @@ class NewestFirstPagination(CursorPagination):
 
 class ByCodePagination(NewestFirstPagination):
     ordering = "code"
-    position_form = re.compile(r"[\x20-\x7e]{1,120}")
+    position_form = re.compile(r"[^\x00]{1,120}")
 
 
 class OldestFirstPagination(NewestFirstPagination):

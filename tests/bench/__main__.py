@@ -17,8 +17,8 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.targets import OCTYL_GLUCOSIDE
 from tests.shelf import AS_OF, demo_shelf
+from tests.targets import OCTYL_GLUCOSIDE
 
 ROUNDS = 200
 PLANS_BEFORE_MEMORY = 50

@@ -14,8 +14,8 @@ from labplan.planning.document import plan_document
 from labplan.planning.plan import Plan, make_plan
 from labplan.planning.steps import amount_text, charge_text
 from labplan.planning.values import Charge, Scale, ShelfBottle
-from tests.targets import OCTYL_GLUCOSIDE
 from tests.shelf import AS_OF, demo_shelf
+from tests.targets import OCTYL_GLUCOSIDE
 
 TWO_GRAMS = Scale(product_mass_mg=2000.0)
 

@@ -57,6 +57,10 @@ def plan_procedure(*, procedure_id: int, message_id: int) -> None:
             return
         except StockShort:
             continue  # somebody was faster: look at the shelf again
+        except OperationalError as error:
+            if not is_lock_timeout(error):
+                raise
+            continue  # somebody sits on the bottles: nothing was changed, look again
         except DomainError as error:
             _settle_bare(attempt, life.FAILED, error.code, error.detail)
             return

@@ -1,0 +1,99 @@
+"""The whole URL map, and what is expected of each named route."""
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import Any
+
+from django.urls import URLPattern, URLResolver, get_resolver, reverse
+
+from tests.laboratory import Laboratory, octyl_order
+
+METHODS = ("GET", "HEAD", "POST", "PUT", "PATCH", "DELETE", "OPTIONS", "TRACE", "BREW")
+READS = ("GET", "HEAD", "OPTIONS")
+
+
+@dataclass(frozen=True)
+class Expected:
+    """What a route serves, and what a person without a project there sees of it.
+
+    `sees`: "stock" (the same as everybody), "nothing" (an empty list), "hidden" (404).
+    """
+
+    sees: str
+    arguments: tuple[str, ...] = ()
+    methods: tuple[str, ...] = READS
+    # of a POST by somebody without a project
+    post_status: int | None = None
+
+
+# A route that is not in here fails test_rights_walk: say who may see it before it is served.
+EXPECTED: dict[str, Expected] = {
+    "project-list": Expected("nothing"),
+    "project-detail": Expected("hidden", ("project",)),
+    "substance-list": Expected("stock"),
+    "substance-detail": Expected("stock", ("substance",)),
+    "bottle-list": Expected("stock"),
+    "bottle-detail": Expected("stock", ("bottle",)),
+    "movement-list": Expected("nothing", ("bottle",)),
+    "place-list": Expected("stock"),
+    "reservation-list": Expected("nothing"),
+    "reservation-detail": Expected("hidden", ("reservation",)),
+    "procedure-list": Expected("nothing", (), (*READS, "POST"), 422),
+    "procedure-detail": Expected("hidden", ("procedure",)),
+    "procedure-document": Expected("hidden", ("procedure",)),
+    "procedure-sheet-html": Expected("hidden", ("procedure",)),
+    "procedure-cancel": Expected("hidden", ("procedure",), ("POST", "OPTIONS"), 404),
+}
+
+
+def served_patterns() -> Iterator[tuple[str, URLPattern]]:
+    """Every pattern of the URL map with its whole route."""
+    yield from _walk(get_resolver().url_patterns, "")
+
+
+def _walk(entries: list[Any], prefix: str) -> Iterator[tuple[str, URLPattern]]:
+    for entry in entries:
+        route = prefix + str(entry.pattern)
+        if isinstance(entry, URLResolver):
+            yield from _walk(entry.url_patterns, route)
+        else:
+            yield route, entry
+
+
+@dataclass(frozen=True)
+class Planted:
+    """One planned procedure of LECTIN-07, asked for by MIRA, with all that belongs to it."""
+
+    values: dict[str, str]
+    secrets: tuple[str, ...]
+
+    def path(self, name: str) -> str:
+        return reverse(name, args=[self.values[part] for part in EXPECTED[name].arguments])
+
+    def leaks(self, text: str, *, told: tuple[str, ...] = ()) -> list[str]:
+        """The secrets in a text, after what the asker has said himself is taken out."""
+        for known in told:
+            text = text.replace(known, "")
+        return [secret for secret in self.secrets if secret in text]
+
+
+def plant_procedure(lab: Laboratory) -> Planted:
+    client = lab.client("MIRA")
+    location = client.post("/api/v1/procedures/", octyl_order())["Location"]
+    lab.run_outbox()
+    shown = client.get(location).json()
+    assert shown["state"] == "planned"
+    values = {
+        "project": "LECTIN-07",
+        "substance": "1-octanol",
+        "bottle": "GPA-1",
+        "reservation": shown["reservation"],
+        "procedure": shown["code"],
+    }
+    document = shown["document"]
+    secrets = (
+        "LECTIN-07", "lectin binding", "MIRA", "Mira", "INES", "JONAS", shown["code"],
+        shown["reservation"], shown["target_smiles"], document["target"]["smiles"],
+        document["target"]["inchikey"], shown["document_sha256"],
+    )  # fmt: skip
+    return Planted(values, secrets)

@@ -1,0 +1,247 @@
+"""Movements, events and documents: what is written stays, whoever asks and however."""
+
+import io
+import uuid
+from collections.abc import Callable
+from datetime import date
+from typing import Any
+
+import pytest
+from django.core.management import call_command
+from django.db import DatabaseError, connection, models, transaction
+
+from inventory.models import Movement
+from labplan.base import append_only, clock
+from labplan.base.events import record_event
+from labplan.base.models import Event
+from labplan.procedures.models import Document, Procedure
+from tests.db.bench import (
+    ON_POSTGRESQL,
+    Shelf,
+    drop_trigger,
+    insert,
+    make_shelf,
+    rows_of,
+    run_sql,
+    trigger_names,
+)
+
+pytestmark = pytest.mark.django_db
+KINDS: tuple[type[models.Model], ...] = (Movement, Event, Document)
+TABLES = ("base_event", "inventory_movement", "procedures_document")
+VERBS = ("no_change", "no_truncate") if ON_POSTGRESQL else ("no_update", "no_delete")
+ALL_TRIGGERS = {
+    *(f"{table}_{verb}" for table in TABLES for verb in VERBS),
+    "inventory_movement_carries_on",
+}
+A_COLUMN = {"base_event": "kind", "inventory_movement": "reason", "procedures_document": "sha256"}
+
+
+@pytest.fixture
+def shelf() -> Shelf:
+    """One row of each kind that never changes, and more than one movement."""
+    shelf = make_shelf(A=100_000, B=100_000)
+    shelf.hold(("A", 1_000))
+    record_event(actor_code="LEAD", kind="a.kind", subject="a thing")
+    procedure = Procedure.objects.create(
+        code="P-1", project=shelf.project, requested_by="LEAD", target_smiles="C",
+        product_mass_mg=1, state="queued", created_at=clock.now(),
+    )  # fmt: skip
+    Document.objects.create(
+        procedure=procedure, attempt=1, body=b"{}", sha256="0" * 64, created_at=clock.now()
+    )
+    if ON_POSTGRESQL:
+        # A table with foreign keys still to be checked may be neither emptied nor altered.
+        run_sql("SET CONSTRAINTS ALL IMMEDIATE")
+    return shelf
+
+
+def _everything() -> list[list[tuple[Any, ...]]]:
+    return [rows_of(f"SELECT * FROM {table} ORDER BY id") for table in TABLES]
+
+
+def _refused(call: Callable[[], Any], words: str) -> None:
+    before = _everything()
+    assert all(before)
+    with pytest.raises(DatabaseError, match=words), transaction.atomic():
+        call()
+    assert _everything() == before
+
+
+@pytest.mark.usefixtures("shelf")
+@pytest.mark.parametrize("table", TABLES)
+@pytest.mark.parametrize(
+    "sql",
+    [
+        "UPDATE {table} SET {column} = 'x'",
+        "UPDATE {table} SET {column} = {column}",
+        "UPDATE {table} SET id = id + 1000",
+        "DELETE FROM {table}",
+        "DELETE FROM {table} WHERE id = (SELECT max(id) FROM {table})",
+    ],
+)
+def test_raw_sql_changes_no_row(table: str, sql: str) -> None:
+    text = sql.format(table=table, column=A_COLUMN[table])
+    _refused(lambda: run_sql(text), f"rows of {table} are never changed")
+
+
+@pytest.mark.usefixtures("shelf")
+@pytest.mark.parametrize("table", TABLES)
+def test_the_table_is_not_emptied_nor_its_rows_replaced(table: str) -> None:
+    words = f"rows of {table} are never changed"
+    if ON_POSTGRESQL:
+        _refused(lambda: run_sql(f"TRUNCATE {table} CASCADE"), words)
+        return
+    columns = [name for _, name, *_ in rows_of(f"PRAGMA table_info({table})")]
+    row = dict(zip(columns, rows_of(f"SELECT * FROM {table} ORDER BY id DESC")[0], strict=True))
+    row[A_COLUMN[table]] = "x"
+    _refused(lambda: insert(table, row, verb="INSERT OR REPLACE"), words)
+
+
+@pytest.mark.usefixtures("shelf")
+@pytest.mark.parametrize("table", TABLES)
+def test_an_upsert_changes_no_row(table: str) -> None:
+    """On both databases the conflict turns into an update, which the trigger refuses."""
+    columns = ", ".join(f'"{f.column}"' for f in _model_of(table)._meta.concrete_fields)
+    upsert = (
+        f"INSERT INTO {table} ({columns}) SELECT {columns} FROM {table} WHERE id = "
+        f"(SELECT max(id) FROM {table}) "
+        f"ON CONFLICT (id) DO UPDATE SET {A_COLUMN[table]} = 'x'"
+    )
+    _refused(lambda: run_sql(upsert), f"rows of {table} are never changed")
+
+
+def _model_of(table: str) -> type[models.Model]:
+    return next(kind for kind in KINDS if kind._meta.db_table == table)
+
+
+@pytest.mark.usefixtures("shelf")
+@pytest.mark.parametrize("kind", KINDS)
+@pytest.mark.parametrize("way", ["update", "delete", "save", "delete one", "base manager"])
+def test_the_models_refuse_before_the_database_is_asked(kind: Any, way: str) -> None:
+    row = kind.objects.first()
+    calls: dict[str, Callable[[], Any]] = {
+        "update": lambda: kind.objects.update(id=5),
+        "delete": lambda: kind.objects.filter(pk=row.pk).delete(),
+        "save": row.save,
+        "delete one": row.delete,
+        "base manager": lambda: kind.objects.filter(pk=row.pk).select_related().update(id=5),
+    }
+    before = _everything()
+    with pytest.raises(TypeError, match=f"{kind.__name__} rows are never"):
+        calls[way]()
+    assert _everything() == before
+
+
+@pytest.mark.usefixtures("shelf")
+@pytest.mark.parametrize("way", ["bulk_update", "force_update", "plain queryset"])
+def test_ways_round_the_models_end_at_the_triggers(way: str) -> None:
+    row = Movement.objects.first()
+    assert row is not None
+    row.reason = "x"
+    calls: dict[str, Callable[[], Any]] = {
+        "bulk_update": lambda: models.QuerySet(Movement).bulk_update([row], ["reason"]),
+        "force_update": lambda: row.save_base(force_update=True),
+        "plain queryset": lambda: models.QuerySet(Movement).update(reason="x"),
+    }
+    _refused(calls[way], "rows of inventory_movement are never changed")
+
+
+def _next_line(shelf: Shelf, **changes: Any) -> dict[str, Any]:
+    """A sound second line of bottle B (100,000 on hand, line 1), with values replaced."""
+    return {
+        "bottle_id": shelf.bottle("B").pk, "seq": 2, "kind": "correction", "on_hand_change": 5,
+        "held_change": 0, "on_hand_after": 100_005, "held_after": 0, "entered_amount": "5",
+        "entered_unit": "ug", "operation": uuid.uuid4().hex, "actor_code": "A", "reason": "",
+        "booked_on": date(2026, 12, 1), "recorded_at": clock.now(), **changes,
+    }  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    "changes",
+    [
+        {"seq": 3},
+        {"seq": 4},
+        {"seq": 1},
+        {"seq": 2, "on_hand_after": 100_006},
+        {"on_hand_after": 100_004},
+        {"on_hand_change": -5},
+        {"held_after": 1},
+        {"held_change": -1},
+    ],
+    ids=str,
+)
+def test_a_line_that_does_not_carry_on_is_refused(shelf: Shelf, changes: dict[str, Any]) -> None:
+    row = _next_line(shelf, **changes)
+    _refused(lambda: insert("inventory_movement", row), "does not carry on")
+
+
+def test_a_first_line_starts_from_nothing_and_at_one(shelf: Shelf) -> None:
+    """In a book without lines: neither another number nor a sum brought along."""
+    bottle = shelf.bottle("B")
+    bottle.pk = None
+    bottle.code = "C"
+    bottle.save(force_insert=True)
+    for changes in ({"seq": 2}, {"seq": 1, "on_hand_after": 6}, {"seq": 1, "held_after": 1}):
+        row = _next_line(shelf, bottle_id=bottle.pk, on_hand_after=5)
+        _refused(
+            lambda row=row, changes=changes: insert("inventory_movement", {**row, **changes}),
+            "does not carry on",
+        )
+
+
+def test_a_line_that_carries_on_is_taken(shelf: Shelf) -> None:
+    with transaction.atomic():
+        insert("inventory_movement", _next_line(shelf))
+        assert Movement.objects.filter(bottle__code="B").count() == 2
+        transaction.set_rollback(True)
+
+
+def test_every_trigger_is_in_the_catalogue_after_migrate() -> None:
+    assert append_only.append_only_tables() == list(TABLES)
+    assert trigger_names() == ALL_TRIGGERS
+
+
+def test_triggers_lost_in_a_table_rebuild_come_back_with_migrate(shelf: Shelf) -> None:
+    """SQLite drops them when a migration rebuilds the table: here they are dropped by hand."""
+    for table in TABLES:
+        for verb in VERBS:
+            drop_trigger(table, f"{table}_{verb}")
+    drop_trigger("inventory_movement", "inventory_movement_carries_on")
+    assert trigger_names() == set()
+    call_command("migrate", verbosity=0, stdout=io.StringIO())
+    assert trigger_names() == ALL_TRIGGERS
+    _refused(lambda: run_sql("DELETE FROM base_event"), "rows of base_event are never changed")
+    row = _next_line(shelf, seq=3)
+    _refused(lambda: insert("inventory_movement", row), "does not carry on")
+
+
+def test_a_rebuilt_table_gets_its_triggers_back(shelf: Shelf) -> None:
+    """A real schema change by Django's own editor, which on SQLite makes the table anew."""
+    field = Event._meta.get_field("kind")
+    wider = models.CharField(max_length=61)
+    wider.set_attributes_from_name("kind")
+    wider.model = Event
+    if ON_POSTGRESQL:
+        with connection.schema_editor() as editor:
+            editor.alter_field(Event, field, wider)
+        assert trigger_names() == ALL_TRIGGERS
+    else:
+        statement = rows_of("SELECT sql FROM sqlite_master WHERE name = 'base_event'")[0][0]
+        run_sql("ALTER TABLE base_event RENAME TO old_event")
+        run_sql(statement)
+        run_sql("INSERT INTO base_event SELECT * FROM old_event")
+        run_sql("DROP TABLE old_event")
+        assert "base_event_no_update" not in trigger_names()
+    append_only.install_all(using="default")
+    assert trigger_names() == ALL_TRIGGERS
+    _refused(lambda: run_sql("DELETE FROM base_event"), "rows of base_event are never changed")
+
+
+def test_lifting_is_for_the_block_only(shelf: Shelf) -> None:
+    with append_only.lifted(connection):
+        assert trigger_names() == {"inventory_movement_carries_on"}
+        run_sql("UPDATE base_event SET kind = 'x'")
+    assert trigger_names() == ALL_TRIGGERS
+    assert set(Event.objects.values_list("kind", flat=True)) == {"x"}
+    _refused(lambda: run_sql("DELETE FROM base_event"), "rows of base_event are never changed")
