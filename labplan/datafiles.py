@@ -8,7 +8,15 @@ from typing import Any
 
 FOLDER = Path(__file__).resolve().parent.parent / "fixtures"
 # what a plan can depend on; their bytes make the data version
-PLANNING_TABLES = ("classifications", "methods", "sources", "statements", "substances", "sugars")
+PLANNING_TABLES = (
+    "classifications",
+    "methods",
+    "sources",
+    "statements",
+    "substances",
+    "sugars",
+    "survival",
+)
 
 
 @cache

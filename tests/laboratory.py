@@ -15,6 +15,7 @@ from labplan.procedures.models import Document, Procedure
 from tests.targets import OCTYL_GLUCOSIDE
 
 PROCEDURES = "/api/v1/procedures/"
+ROUTES = "/api/v1/routes/"
 
 
 @dataclass

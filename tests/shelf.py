@@ -2,10 +2,12 @@
 
 import csv
 from datetime import date
+from decimal import Decimal
 from functools import cache
 
 from labplan import datafiles
 from labplan.chemistry.amounts import Content
+from labplan.chemistry.forms import form_label
 from labplan.chemistry.reference import find_by_cas, find_by_name
 from labplan.planning.values import ShelfBottle
 
@@ -28,8 +30,9 @@ def _bottle(row: dict[str, str]) -> ShelfBottle:
     density = float(row["density_g_per_ml"]) if row["density_g_per_ml"] else None
     return ShelfBottle(
         code=row["code"], substance=substance.key, name=substance.name, cas=substance.cas or "",
-        inchikey=substance.inchikey, content=_content(row, substance.molar_mass_g_per_mol, density),
-        form_label=row["form"] or "neat", measured_by=measured_by, on_hand=amount, held=0.0,
+        smiles=substance.smiles or "", inchikey=substance.inchikey,
+        content=_content(row, substance.molar_mass_g_per_mol, density),
+        form_label=_label(row), measured_by=measured_by, on_hand=amount, held=0.0,
         usable=amount, place=row["place"], place_name=row["place"], lot=row["lot"],
         status=row["status"] or "usable", expires_on=_day(row["expires_on"]),
         opened_on=_day(row["opened_on"]),
@@ -38,7 +41,29 @@ def _bottle(row: dict[str, str]) -> ShelfBottle:
         water_ppm=float(row["water_ppm"]) if row["water_ppm"] else None,
         water_read_on=_day(row["water_read_on"]), activated_on=_day(row["activated_on"]),
         density_g_per_ml=density,
+        loading_equiv_per_l=_loading(row),
+        solvent=_solvent_key(row), solvent_name=row["solution_solvent"] or None,
     )  # fmt: skip
+
+
+def _label(row: dict[str, str]) -> str:
+    def number(column: str) -> Decimal | None:
+        return Decimal(row[column]) if row[column] else None
+
+    return form_label(
+        row["form"] or "neat", hydrate_water=number("hydrate_water"), basis=row["solution_basis"],
+        value=number("solution_value"), solvent_name=row["solution_solvent"] or None,
+        active_share_pct=number("active_share_pct"),
+    )  # fmt: skip
+
+
+def _loading(row: dict[str, str]) -> float | None:
+    return float(row["solution_value"]) if row["form"] == "loaded" else None
+
+
+def _solvent_key(row: dict[str, str]) -> str | None:
+    found = find_by_name(row["solution_solvent"]) if row["solution_solvent"] else None
+    return found.key if found else None
 
 
 def _content(

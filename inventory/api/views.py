@@ -7,13 +7,14 @@ from rest_framework.response import Response
 from rest_framework.views import APIView
 
 from inventory import selectors
-from inventory.api import shapes
+from inventory.api import schema, shapes
 from inventory.models import Bottle, Movement, Place, Reservation, Substance
 from labplan.base.errors import NotFound
 from labplan.base.pagination import ByCodePagination
 from labplan.base.views import ListView
 
 
+@schema.substance_list
 class SubstanceList(ListView):
     filters = {"name", "cas"}
     pagination = ByCodePagination
@@ -25,6 +26,7 @@ class SubstanceList(ListView):
         return shapes.show_substance(row)
 
 
+@schema.substance_detail
 class SubstanceDetail(APIView):
     def get(self, request: Any, code: str) -> Response:
         found = selectors.list_substances(actor=request.user).filter(code=code).first()
@@ -33,8 +35,10 @@ class SubstanceDetail(APIView):
         return Response(shapes.show_substance(found))
 
 
+@schema.bottle_list
 class BottleList(ListView):
     filters = {"substance", "place", "status"}
+    choices = {"status": Bottle.Status.values}
     pagination = ByCodePagination
 
     def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Bottle]:
@@ -44,11 +48,13 @@ class BottleList(ListView):
         return shapes.show_bottle(row)
 
 
+@schema.bottle_detail
 class BottleDetail(APIView):
     def get(self, request: Any, code: str) -> Response:
         return Response(shapes.show_bottle(selectors.get_bottle(actor=request.user, code=code)))
 
 
+@schema.movement_list
 class MovementList(ListView):
     """The book of a bottle, newest line first; other projects' lines are for stock keepers."""
 
@@ -61,6 +67,7 @@ class MovementList(ListView):
         return shapes.show_movement(row, row.bottle.measured_by)
 
 
+@schema.place_list
 class PlaceList(ListView):
     pagination = ByCodePagination
 
@@ -71,6 +78,7 @@ class PlaceList(ListView):
         return shapes.show_place(row)
 
 
+@schema.reservation_list
 class ReservationList(ListView):
     def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Reservation]:
         return selectors.visible_reservations(actor=request.user)
@@ -79,6 +87,7 @@ class ReservationList(ListView):
         return shapes.show_reservation(row)
 
 
+@schema.reservation_detail
 class ReservationDetail(APIView):
     def get(self, request: Any, code: Any) -> Response:
         found = selectors.visible_reservations(actor=request.user).filter(code=code).first()

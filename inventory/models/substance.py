@@ -50,6 +50,7 @@ class FormKind(models.TextChoices):
     NEAT = "neat"
     HYDRATE = "hydrate"
     SOLUTION = "solution"
+    LOADED = "loaded"  # a resin or a supported reagent
     SALT = "salt"
     ANOMER_MIXTURE = "anomer_mixture"
 
@@ -90,7 +91,7 @@ class Form(models.Model):
                 name="form_hydrate_has_water",
             ),
             models.CheckConstraint(
-                condition=~Q(kind="solution")
+                condition=~Q(kind__in=["solution", "loaded"])
                 | Q(solution_value__isnull=False, solution_value__gt=0, solution_value__lte=10_000)
                 & ~Q(solution_basis=""),
                 name="form_solution_has_strength",

@@ -8,7 +8,7 @@ from decimal import Decimal
 from django.db.models import Q
 
 from inventory.content import content_of, density_of
-from inventory.models import Bottle, Reading
+from inventory.models import Bottle, Form, Reading
 from labplan.base.rights import Actor, require
 from labplan.chemistry.amounts import Content
 
@@ -21,6 +21,7 @@ class BottleOnShelf:
     substance: str
     name: str
     cas: str
+    smiles: str
     inchikey: str | None
     content: Content | None
     form_label: str
@@ -40,19 +41,30 @@ class BottleOnShelf:
     water_read_on: date | None
     activated_on: date | None
     density_g_per_ml: float | None
+    loading_equiv_per_l: float | None  # of a resin
+    solvent: str | None  # of a solution
+    solvent_name: str | None
 
 
 def shelf_snapshot(
-    *, actor: Actor, inchikeys: Collection[str], substances: Collection[str]
+    *,
+    actor: Actor,
+    inchikeys: Collection[str],
+    inchikey_blocks: Collection[str],
+    substances: Collection[str],
 ) -> tuple[BottleOnShelf, ...]:
-    """All bottles of these substances (by InChIKey or code), whatever their state."""
+    """All bottles of these substances, whatever their state.
+
+    By InChIKey, by its first block (to see what must not be mistaken for it), or by code.
+    """
     require(actor, "stock.view")
+    wanted = Q(form__substance__inchikey__in=list(inchikeys))
+    wanted |= Q(form__substance__code__in=list(substances))
+    for block in inchikey_blocks:
+        wanted |= Q(form__substance__inchikey__startswith=block)
     bottles = list(
-        Bottle.objects.filter(
-            Q(form__substance__inchikey__in=list(inchikeys))
-            | Q(form__substance__code__in=list(substances))
-        )
-        .select_related("form__substance", "balance", "place")
+        Bottle.objects.filter(wanted)
+        .select_related("form__substance", "form__solution_solvent", "balance", "place")
         .order_by("code")
     )
     readings = _latest_readings([bottle.pk for bottle in bottles])
@@ -74,10 +86,12 @@ def _latest_readings(bottle_ids: list[int]) -> Readings:
 
 def _on_shelf(bottle: Bottle, readings: Readings) -> BottleOnShelf:
     balance, substance = bottle.balance, bottle.form.substance
+    dissolved_in = bottle.form.solution_solvent
     water = readings.get((bottle.pk, Reading.Kind.WATER_PPM))
     activation = readings.get((bottle.pk, Reading.Kind.ACTIVATION_C))
     return BottleOnShelf(
         code=bottle.code, substance=substance.code, name=substance.name, cas=substance.cas,
+        smiles=substance.smiles,
         inchikey=substance.inchikey, content=content_of(bottle), form_label=bottle.form.label,
         measured_by=bottle.measured_by, on_hand=balance.on_hand, held=balance.held,
         usable=max(0, balance.on_hand - balance.held - bottle.heel),
@@ -88,4 +102,14 @@ def _on_shelf(bottle: Bottle, readings: Readings) -> BottleOnShelf:
         water_read_on=water[1] if water else None,
         activated_on=activation[1] if activation else None,
         density_g_per_ml=density_of(bottle),
+        loading_equiv_per_l=_loading(bottle.form),
+        solvent=dissolved_in.code if dissolved_in else None,
+        solvent_name=dissolved_in.name if dissolved_in else None,
     )  # fmt: skip
+
+
+def _loading(form: Form) -> float | None:
+    """Equivalents a litre of a resin, where its label gives that."""
+    if form.kind != Form.Kind.LOADED or form.solution_basis != Form.SolutionBasis.EQUIV_PER_L:
+        return None
+    return float(form.solution_value) if form.solution_value else None

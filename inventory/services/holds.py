@@ -16,6 +16,9 @@ from labplan.base import clock
 from labplan.base.errors import NotFound, StateForbids
 from labplan.base.rights import Actor, require
 
+# how a bottle is measured -> (the unit people write, base units in one)
+_WRITTEN_UNITS = {"mass": ("mg", 1_000), "volume": ("mL", 1_000_000), "count": ("pieces", 1)}
+
 
 @dataclass(frozen=True)
 class HoldLine:
@@ -73,7 +76,8 @@ def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
     require(actor, "reservation.release", project_id=reservation.project_id)
     if reservation.state != Reservation.State.OPEN:
         raise StateForbids("This reservation is closed; it holds nothing any more.")
-    holds = list(reservation.holds.filter(state=Hold.State.OPEN).order_by("line"))
+    open_holds = reservation.holds.filter(state=Hold.State.OPEN)
+    holds = list(open_holds.select_related("bottle").order_by("line"))
     write_lines(
         [_give_back_line(hold) for hold in holds],
         actor=actor, project_id=reservation.project_id, reason=reason,
@@ -125,7 +129,8 @@ def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLi
 
 def _give_back_line(hold: Hold) -> BookLine:
     left = hold.amount - hold.used
+    unit, factor = _WRITTEN_UNITS[hold.bottle.measured_by]
     return BookLine(
         bottle_id=hold.bottle_id, kind="release", held_change=-left, hold_id=hold.pk,
-        entered_amount=str(left), entered_unit="base unit",
+        entered_amount=f"{(Decimal(left) / factor).normalize():f}", entered_unit=unit,
     )  # fmt: skip

@@ -11,6 +11,7 @@ from inventory.services.csv_rows import Row
 from inventory.services.receipt import BottleReceipt
 from inventory.services.substances import SubstanceFinder
 from labplan.base import clock
+from labplan.chemistry.forms import form_label
 from labplan.chemistry.masses import molar_mass_of_formula
 
 PLACE_COLUMNS = ("code", "name", "is_locked", "temperature_c")
@@ -110,35 +111,38 @@ def _amount(row: Row) -> tuple[str, int]:
 
 def _form(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
     kind = row.choice("form", ("", *Form.Kind.values)) or "neat"
-    fields: dict[str, Any] = {"kind": kind, "label": kind.replace("_", " ")}
+    fields: dict[str, Any] = {"kind": kind}
     if kind == "hydrate":
-        water = _needed(row, "hydrate_water", lowest="0.001", highest="30", places=3)
-        fields |= {"hydrate_water": water, "label": f"hydrate, {_plain(water)} water"}
-    if kind == "solution":
-        fields |= _solution(row, finder)
+        fields["hydrate_water"] = _needed(
+            row, "hydrate_water", lowest="0.001", highest="30", places=3
+        )
+    if kind in ("solution", "loaded"):
+        fields |= _strength(row, finder)
     if kind == "anomer_mixture":
-        share = _needed(row, "active_share_pct", lowest="0.001", highest="100", places=3)
-        fields |= {
-            "active_share_pct": share,
-            "label": f"anomer mixture, {_plain(share)} % reacts",
-        }
-    return fields
+        fields["active_share_pct"] = _needed(
+            row, "active_share_pct", lowest="0.001", highest="100", places=3
+        )
+    solvent = fields.get("solution_solvent")
+    label = form_label(
+        kind,
+        hydrate_water=fields.get("hydrate_water"),
+        basis=fields.get("solution_basis", ""),
+        value=fields.get("solution_value"),
+        solvent_name=solvent.name if solvent else None,
+        active_share_pct=fields.get("active_share_pct"),
+    )
+    return {**fields, "label": label[:120]}
 
 
-def _solution(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
+def _strength(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
     basis = row.choice("solution_basis", tuple(Form.SolutionBasis.values))
     highest = "100" if basis == "pct_w_w" else "10000"
-    value = _needed(row, "solution_value", lowest="0.0001", highest=highest)
-    solvent = finder.find_solvent(row)
-    temperature = temperature_c(row, "solution_temperature_c")
-    words = {"pct_w_w": "% w/w", "pct_w_v": "% w/v", "mol_per_l": "mol/L",
-             "equiv_per_g": "equiv/g", "equiv_per_l": "equiv/L"}.get(basis, basis)  # fmt: skip
-    inside = f" in {solvent.name.lower()}" if solvent else ""
     return {
-        "solution_basis": basis, "solution_value": value, "solution_solvent": solvent,
-        "solution_temperature_c": temperature,
-        "label": f"solution, {_plain(value)} {words}{inside}"[:120],
-    }  # fmt: skip
+        "solution_basis": basis,
+        "solution_value": _needed(row, "solution_value", lowest="0.0001", highest=highest),
+        "solution_solvent": finder.find_solvent(row),
+        "solution_temperature_c": temperature_c(row, "solution_temperature_c"),
+    }
 
 
 def _needed(row: Row, column: str, **bounds: Any) -> Decimal | None:
@@ -146,10 +150,6 @@ def _needed(row: Row, column: str, **bounds: Any) -> Decimal | None:
     if value is None and not row.text(column):
         row.error(column, "missing", f"A {row.text('form')} needs this value.")
     return value
-
-
-def _plain(value: Decimal | None) -> str:
-    return f"{value.normalize():f}" if value is not None else "?"
 
 
 def _bottle_fields(row: Row) -> dict[str, Any]:

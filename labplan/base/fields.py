@@ -1,6 +1,7 @@
 """Serializer building blocks that refuse instead of guessing."""
 
 import re
+from collections.abc import Mapping, Sequence
 from decimal import Decimal, InvalidOperation
 from typing import Any
 
@@ -9,7 +10,7 @@ from rest_framework import serializers
 from labplan.base.errors import FieldProblem, InvalidValue, MalformedRequest, UnknownField
 
 # Python would also read "1_0" as ten and digits of any script.
-_DECIMAL_TEXT = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
+DECIMAL_TEXT = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
 
 
 class QuantityField(serializers.Field):
@@ -34,7 +35,7 @@ class QuantityField(serializers.Field):
         if len(str(data)) > 40:
             self.fail("out_of_range", lowest=self.lowest, highest=self.highest)
         text = str(data).strip()
-        if not _DECIMAL_TEXT.fullmatch(text):
+        if not DECIMAL_TEXT.fullmatch(text):
             self.fail("not_a_number")
         try:
             value = Decimal(text)
@@ -92,3 +93,14 @@ def require_known_parameters(request: Any, known: set[str]) -> None:
                 for name in unknown
             ),
         )
+
+
+def require_known_values(wanted: Mapping[str, str], choices: Mapping[str, Sequence[str]]) -> None:
+    """Refuse a filter value that no row can have; a typo must not pass for an empty list."""
+    lines = tuple(
+        FieldProblem(name, "unknown_value", f"{name} is one of: {', '.join(choices[name])}.")
+        for name in sorted(choices)
+        if name in wanted and wanted[name] not in choices[name]
+    )
+    if lines:
+        raise InvalidValue(" ".join(line.detail for line in lines), errors=lines)

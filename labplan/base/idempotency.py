@@ -105,8 +105,15 @@ def claim_from(request: Any, *, route: str, render: Callable[[Result], Response]
     return Claim(actor.person_id, route, key, sha256_hex(asked.encode()), render)
 
 
-def answer_once(claim: Claim[Result], work: Callable[[], Result]) -> Response:
-    """Run `work`, a service that inserts and remembers the claim, or repeat the first answer."""
+def answer_once(
+    claim: Claim[Result], *, check_rights: Callable[[], Any], work: Callable[[], Result]
+) -> Response:
+    """Run `work`, a service that inserts and remembers the claim, or repeat the first answer.
+
+    `check_rights` raises what `work` would raise to somebody without the right. It comes first:
+    a remembered answer is only for who could still ask for it.
+    """
+    check_rights()
     earlier = claim.remembered()
     if earlier is not None:
         return earlier

@@ -39,6 +39,10 @@ class Actor:
     roles: dict[int, str] = field(default_factory=dict)
 
 
+# For commands that the operator runs on the machine itself: sees everything, moves nothing.
+OPERATOR = Actor(person_id=0, code="OPERATOR", site_role="auditor", scope="read")
+
+
 def actor_for(person: Person, *, scope: str = ApiToken.Scope.WRITE) -> Actor:
     """Read the roles of a person once."""
     roles = dict(person.memberships.values_list("project_id", "role"))

@@ -1,13 +1,14 @@
 """A list and a single look, the same way everywhere."""
 
 from abc import abstractmethod
+from collections.abc import Sequence
 from typing import Any, ClassVar
 
 from django.db.models import QuerySet
 from rest_framework.response import Response
 from rest_framework.views import APIView
 
-from labplan.base.fields import require_known_parameters
+from labplan.base.fields import require_known_parameters, require_known_values
 from labplan.base.pagination import NewestFirstPagination
 
 PAGE_PARAMETERS = {"cursor", "page_size"}
@@ -17,6 +18,8 @@ class ListView(APIView):
     """GET a page of rows. Subclasses name the filters and give the rows and their form."""
 
     filters: ClassVar[set[str]] = set()
+    # filter -> the only values it takes
+    choices: ClassVar[dict[str, Sequence[str]]] = {}
     pagination: ClassVar[type[NewestFirstPagination]] = NewestFirstPagination
 
     def get(self, request: Any, **kwargs: Any) -> Response:
@@ -26,6 +29,7 @@ class ListView(APIView):
             for name in self.filters
             if name in request.query_params
         }
+        require_known_values(wanted, self.choices)
         paginator = self.pagination()
         page = paginator.paginate_queryset(self.rows(request, wanted, **kwargs), request, self)
         return paginator.get_paginated_response([self.show(row) for row in page or []])

@@ -7,40 +7,57 @@ from dataclasses import dataclass
 
 from rdkit import Chem
 
-from labplan import datafiles
 from labplan.chemistry.errors import TargetProblem
+from labplan.chemistry.groups import find_groups
+from labplan.chemistry.residues import (
+    Residue,
+    acceptor_name,
+    glycoside_name,
+    peracetate_name,
+)
 from labplan.chemistry.structures import Structure, describe, read_molecule
-from labplan.chemistry.sugars import SugarRing, find_sugar_rings
+from labplan.chemistry.sugars import SugarRing, find_residue_of, find_sugar_rings
 
 _ACETATE = Chem.MolFromSmarts("[OX2;!R]-[CX3](=[OX1])-[CH3]")
 _HYDROXYL = Chem.MolFromSmarts("[OX2H]")
+_ACID = Chem.MolFromSmarts("[CX3](=O)[OX2H]")
+_ALCOHOL = Chem.MolFromSmarts("[OX2H;!$([OX2H]C=O)]")
 
 
 @dataclass(frozen=True)
 class Target:
     """A glycoside as read: what it is, where it would be cut, what it would be made from.
 
-    `residue_key` is None for a sugar that is not in the table: described, not named.
+    `glycoside` is what the coupling gives, with every hydroxyl of the sugar acetylated; it is the
+    target itself unless `needs_deacetylation`. `residue` is None for a sugar that is not in the
+    table: described, not named.
     """
 
     structure: Structure
     name: str | None
-    residue_key: str | None
-    residue_name: str | None
+    glycoside: Structure
+    glycoside_name: str | None
+    needs_deacetylation: bool
+    residue: Residue | None
     anomer: str | None
     relation: str
     c2_substituent: str
-    sugar_acyls: int
+    sugar_acetates: int  # of the target as given
     sugar_hydroxyls: int
     other_sugar_groups: int
-    sugar_rings: int
+    glycoside_acetates: int  # of the coupling's product, sugar and aglycone
     donor: Structure
     donor_name: str | None
     acceptor: Structure
     acceptor_name: str | None
     acceptor_oh: str  # "primary", "secondary", "tertiary", "phenol", "acid"
     acceptor_hydroxyls: int
+    acceptor_acids: int
     acceptor_groups: tuple[str, ...]
+
+    @property
+    def residue_name(self) -> str | None:
+        return self.residue.name if self.residue else None
 
 
 def read_target(smiles: str) -> Target:
@@ -59,7 +76,7 @@ def read_target(smiles: str) -> Target:
         )
     ring = _ring_to_cut(mol, rings)
     _require_defined(mol, ring)
-    return _cut(mol, ring, len(rings))
+    return _cut(mol, ring, rings)
 
 
 def _ring_to_cut(mol: Chem.Mol, rings: tuple[SugarRing, ...]) -> SugarRing:
@@ -125,36 +142,89 @@ def _marked_centres(mol: Chem.Mol) -> list[tuple[int, str]]:
     return found
 
 
-def _cut(mol: Chem.Mol, ring: SugarRing, sugar_rings: int) -> Target:
-    donor, acceptor, oxygen = _fragments(mol, ring)
+def _cut(mol: Chem.Mol, ring: SugarRing, rings: tuple[SugarRing, ...]) -> Target:
+    groups = _sugar_groups(mol, ring)
+    residue = find_residue_of(mol, ring, rings)
+    glycoside = _acetylated(mol, groups.hydroxyls)
+    donor, acceptor, oxygen = _fragments(glycoside, ring)
     donor_structure, acceptor_structure = describe(donor), describe(acceptor)
-    residue = _residue_row(ring.residue_key)
-    sugar_side = _sugar_side_atoms(mol, ring)
-    acyls = sum(match[0] in sugar_side for match in mol.GetSubstructMatches(_ACETATE))
-    hydroxyls = sum(match[0] in sugar_side for match in mol.GetSubstructMatches(_HYDROXYL))
-    positions = _protectable_positions(mol, ring)
-    fully_acetylated = hydroxyls == 0 and acyls == positions and sugar_rings == 1
-    aglycone_name = _aglycone_name(acceptor_structure)
+    is_full = not groups.hydroxyls and not groups.others
+    is_free = not groups.acetates and not groups.others
     return Target(
         structure=describe(mol),
-        name=_glycoside_name(residue, ring.anomer, aglycone_name) if fully_acetylated else None,
-        residue_key=ring.residue_key,
-        residue_name=residue["name"] if residue else None,
+        name=glycoside_name(residue, ring.anomer, acceptor_structure, acetylated=is_full)
+        if is_full or is_free
+        else None,
+        glycoside=describe(glycoside),
+        glycoside_name=glycoside_name(residue, ring.anomer, acceptor_structure, acetylated=True),
+        needs_deacetylation=bool(groups.hydroxyls),
+        residue=residue,
         anomer=ring.anomer,
         relation=ring.relation,
         c2_substituent=ring.c2_substituent,
-        sugar_acyls=acyls,
-        sugar_hydroxyls=hydroxyls,
-        other_sugar_groups=positions - acyls - hydroxyls,
-        sugar_rings=sugar_rings,
+        sugar_acetates=len(groups.acetates),
+        sugar_hydroxyls=len(groups.hydroxyls),
+        other_sugar_groups=len(groups.others),
+        glycoside_acetates=len(glycoside.GetSubstructMatches(_ACETATE)),
         donor=donor_structure,
-        donor_name=_donor_name(residue, ring.anomer) if fully_acetylated else None,
+        donor_name=peracetate_name(residue, ring.anomer),
         acceptor=acceptor_structure,
-        acceptor_name=_acceptor_name(acceptor_structure),
+        acceptor_name=acceptor_name(acceptor_structure),
         acceptor_oh=_hydroxyl_class(acceptor, oxygen),
-        acceptor_hydroxyls=len(acceptor.GetSubstructMatches(_HYDROXYL)),
+        acceptor_hydroxyls=len(acceptor.GetSubstructMatches(_ALCOHOL)),
+        acceptor_acids=len(acceptor.GetSubstructMatches(_ACID)),
         acceptor_groups=find_groups(acceptor),
     )
+
+
+@dataclass(frozen=True)
+class _SugarGroups:
+    """Oxygens of the sugar side that could carry an acetyl, by what they carry."""
+
+    hydroxyls: tuple[int, ...]
+    acetates: tuple[int, ...]
+    others: tuple[int, ...]
+
+
+def _sugar_groups(mol: Chem.Mol, ring: SugarRing) -> _SugarGroups:
+    """Sort the exocyclic oxygens (and nitrogens) of the sugar side; linkages are left out."""
+    side = _sugar_side_atoms(mol, ring)
+    acetates = {match[0] for match in mol.GetSubstructMatches(_ACETATE)} & side
+    hydroxyls = {match[0] for match in mol.GetSubstructMatches(_HYDROXYL)} & side
+    rings = find_sugar_rings(mol)
+    skeleton = {index for found in rings for index in found.atoms}
+    linking = {found.anomeric_oxygen for found in rings}
+    others = {
+        atom.GetIdx()
+        for atom in mol.GetAtoms()
+        if atom.GetIdx() in side - skeleton - linking - acetates - hydroxyls
+        and atom.GetAtomicNum() in (7, 8, 16)
+        and _is_on_sugar_carbon(atom, skeleton)
+    }
+    return _SugarGroups(tuple(sorted(hydroxyls)), tuple(sorted(acetates)), tuple(sorted(others)))
+
+
+def _is_on_sugar_carbon(atom: Chem.Atom, skeleton: set[int]) -> bool:
+    """Whether the atom sits on a ring carbon or on the C-6 next to one."""
+    return any(
+        n.GetAtomicNum() == 6
+        and (n.GetIdx() in skeleton or any(c.GetIdx() in skeleton for c in n.GetNeighbors()))
+        and n.GetHybridization() == Chem.HybridizationType.SP3
+        for n in atom.GetNeighbors()
+    )
+
+
+def _acetylated(mol: Chem.Mol, hydroxyls: tuple[int, ...]) -> Chem.Mol:
+    """Put an acetyl on each of these oxygens; no stereo mark is touched."""
+    if not hydroxyls:
+        return mol
+    editable = Chem.RWMol(mol)
+    for oxygen in hydroxyls:
+        carbonyl = editable.AddAtom(Chem.Atom(6))
+        editable.AddBond(oxygen, carbonyl, Chem.BondType.SINGLE)
+        for number, bond in ((8, Chem.BondType.DOUBLE), (6, Chem.BondType.SINGLE)):
+            editable.AddBond(carbonyl, editable.AddAtom(Chem.Atom(number)), bond)
+    return _finished(editable)
 
 
 def _fragments(mol: Chem.Mol, ring: SugarRing) -> tuple[Chem.Mol, Chem.Mol, int]:
@@ -215,21 +285,6 @@ def _sugar_side_atoms(mol: Chem.Mol, ring: SugarRing) -> set[int]:
     return seen
 
 
-def _protectable_positions(mol: Chem.Mol, ring: SugarRing) -> int:
-    """Oxygens at C-2, C-3, C-4 (and C-6) that carry a hydrogen or a group."""
-    carbons = list(ring.atoms[2:5])
-    carbons += [
-        n.GetIdx()
-        for n in mol.GetAtomWithIdx(ring.atoms[5]).GetNeighbors()
-        if n.GetIdx() not in ring.atoms and n.GetAtomicNum() == 6
-    ]
-    return sum(
-        n.GetAtomicNum() == 8 and n.GetIdx() not in ring.atoms
-        for index in carbons
-        for n in mol.GetAtomWithIdx(index).GetNeighbors()
-    )
-
-
 def _hydroxyl_class(acceptor: Chem.Mol, oxygen: int) -> str:
     carbon = acceptor.GetAtomWithIdx(oxygen).GetNeighbors()[0]
     if carbon.GetIsAromatic():
@@ -238,71 +293,3 @@ def _hydroxyl_class(acceptor: Chem.Mol, oxygen: int) -> str:
         return "acid"
     carbons = sum(n.GetAtomicNum() == 6 for n in carbon.GetNeighbors())
     return {0: "primary", 1: "primary", 2: "secondary"}.get(carbons, "tertiary")
-
-
-# Groups whose fate under an acid or a base decides whether a coupling is planned.
-_GROUPS = {
-    "alkene": "[CX3;!$(C=O)]=[CX3]",
-    "alkyne": "C#C",
-    "azide": "[NX1]~[NX2]~[NX2,NX1;!$([N]=[N]=[N]=[N])]-[#6]",
-    "bromo or iodo alkyl": "[CX4][Br,I]",
-    "thiol": "[SX2H]",
-    "thioether": "[#6][SX2][#6]",
-    "amine": "[NX3;H2,H1;!$(N-C=[O,S,N]);!$(N-S=O);!$(N-[#7])]",
-    "tertiary amine": "[NX3;H0;!$(N-C=[O,S,N]);!$(N-S=O);!$(N~[#7,#8]);!$(N-c)]([#6])([#6])[#6]",
-    "carboxylic acid": "[CX3](=O)[OX2H]",
-    "tert-butyl": "[OX2,NX3;!$([N]-C(=O)O)]-[CX4]([CH3])([CH3])[CH3]",
-    "trityl": "[CX4](c1ccccc1)(c1ccccc1)c1ccccc1",
-    "silyl ether": "[OX2][SiX4]",
-    "acetal": "[CX4;!$(C1OCCCC1)]([OX2][#6])[OX2][#6]",
-    "epoxide": "C1OC1",
-    "aldehyde": "[CX3H1](=O)[#6]",
-    "4-methoxybenzyl ether": "[OX2;!$(O-C=O)][CH2]c1ccc(O[CH3])cc1",
-    "benzyl ether": "[CX4][OX2;!$(O-C=O)][CH2]c1ccccc1",
-    "Fmoc": "[NX3][CX3](=O)[OX2][CH2]C1c2ccccc2-c2ccccc12",
-    "Cbz": "[NX3][CX3](=O)[OX2][CH2]c1ccccc1",
-    "tertiary alcohol": "[OX2H][CX4]([#6])([#6])[#6]",
-}
-_GROUP_PATTERNS = {name: Chem.MolFromSmarts(smarts) for name, smarts in _GROUPS.items()}
-
-
-def find_groups(mol: Chem.Mol) -> tuple[str, ...]:
-    """Names of the groups present, in alphabetical order."""
-    return tuple(
-        sorted(name for name, query in _GROUP_PATTERNS.items() if mol.HasSubstructMatch(query))
-    )
-
-
-def _residue_row(key: str | None) -> dict[str, str] | None:
-    rows = datafiles.table("sugars")["residues"]
-    return next((row for row in rows if row["key"] == key), None)
-
-
-def _aglycone_name(acceptor: Structure) -> str | None:
-    return _name_by_inchikey("aglycones", acceptor)
-
-
-def _acceptor_name(acceptor: Structure) -> str | None:
-    return _name_by_inchikey("acceptors", acceptor)
-
-
-def _name_by_inchikey(column: str, structure: Structure) -> str | None:
-    names: dict[str, str] = datafiles.table("sugars")[column]
-    return names.get(structure.inchikey)
-
-
-def _glycoside_name(
-    residue: dict[str, str] | None, anomer: str | None, aglycone: str | None
-) -> str | None:
-    """2-Carb-33: aglycone, locants of the acyl groups, anomer, series, stem."""
-    if not (residue and anomer and aglycone):
-        return None
-    return (
-        f"{aglycone} {residue['acetyl_prefix']}-{anomer}-{residue['series']}-{residue['stem']}ide"
-    )
-
-
-def _donor_name(residue: dict[str, str] | None, anomer: str | None) -> str | None:
-    if not (residue and anomer):
-        return None
-    return f"{residue['peracetate_prefix']}-{anomer}-{residue['series']}-{residue['stem']}e"

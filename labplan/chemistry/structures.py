@@ -33,6 +33,7 @@ def rdkit_version() -> str:
 def read_molecule(smiles: str) -> Chem.Mol:
     """Parse one isomeric SMILES of one neutral, not too large molecule.
 
+    Atom-map numbers ([CH3:5]) are cleared: they number atoms and are no part of the structure.
     Raises TargetProblem: empty, too_long, unreadable, several_components, too_large, charged,
     isotopes.
     """
@@ -56,6 +57,8 @@ def read_molecule(smiles: str) -> Chem.Mol:
             f"The target has {mol.GetNumHeavyAtoms()} heavy atoms; at most {MAX_HEAVY_ATOMS}.",
         )
     _require_plain_atoms(mol)
+    for atom in mol.GetAtoms():
+        atom.SetAtomMapNum(0)
     return mol
 
 

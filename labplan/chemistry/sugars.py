@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 from rdkit import Chem
 
-from labplan import datafiles
+from labplan.chemistry.residues import Residue, find_monosaccharide, find_oligosaccharide
 
 _CHIRAL = {
     Chem.ChiralType.CHI_TETRAHEDRAL_CW: -1,
@@ -56,18 +56,11 @@ class SugarRing:
         return self.atoms[1]
 
     @property
-    def residue_key(self) -> str | None:
-        """The key of the residue in fixtures/sugars.json, or None."""
+    def residue(self) -> Residue | None:
+        """The monosaccharide of this ring by itself, or None when the table has no name for it."""
         if self.configuration is None or self.series is None or self.c2_substituent != "O":
             return None
-        for row in datafiles.table("sugars")["residues"]:
-            if (row["series"], row["configuration"], row["c6"]) == (
-                self.series,
-                self.configuration,
-                self.c6,
-            ):
-                return str(row["key"])
-        return None
+        return find_monosaccharide(self.series, self.configuration, self.c6)
 
 
 def find_sugar_rings(mol: Chem.Mol) -> tuple[SugarRing, ...]:
@@ -207,3 +200,45 @@ def _c6_kind(mol: Chem.Mol, ring: tuple[int, ...]) -> str:
     return {("H", "H", "O"): "CH2O", ("H", "H", "H"): "CH3", ("O", "O"): "COO"}.get(
         tuple(around), "other"
     )
+
+
+def find_residue_of(mol: Chem.Mol, root: SugarRing, rings: tuple[SugarRing, ...]) -> Residue | None:
+    """The residue whose reducing end is `root`, its inner sugars included."""
+    text = read_glycan(mol, root, rings)
+    if text is None or "(" not in text:
+        return root.residue if text is not None else None
+    return find_oligosaccharide(text)
+
+
+def read_glycan(mol: Chem.Mol, root: SugarRing, rings: tuple[SugarRing, ...]) -> str | None:
+    """`beta-D-Gal-(1-4)-D-Glc` for lactose; None when a ring has no name.
+
+    The reducing end stands last and carries no anomer; branches stand in square brackets.
+    """
+    if root.residue is None:
+        return None
+    branches = []
+    for position, oxygen in _oxygens_by_position(mol, root).items():
+        inner = next((r for r in rings if r != root and r.anomeric_oxygen == oxygen), None)
+        if inner is None:
+            continue
+        text = read_glycan(mol, inner, rings)
+        if text is None or inner.anomer is None:
+            return None
+        branches.append(f"{inner.anomer}-{text}-(1-{position})-")
+    *side, main = branches or [""]
+    return "".join(f"[{branch}]" for branch in side) + f"{main}{root.series}-{root.residue.short}"
+
+
+def _oxygens_by_position(mol: Chem.Mol, ring: SugarRing) -> dict[int, int]:
+    """The oxygen atom at C-2, C-3, C-4 and C-6, by the number of its carbon."""
+    carbons = dict(zip((2, 3, 4), ring.atoms[2:5], strict=True))
+    outside_c5 = _outside(mol, ring.atoms[5], ring.atoms, 6)
+    if outside_c5:
+        carbons[6] = outside_c5[0]
+    found = {}
+    for position, carbon in carbons.items():
+        oxygens = _outside(mol, carbon, ring.atoms, 8)
+        if oxygens:
+            found[position] = oxygens[0]
+    return found

@@ -4,11 +4,14 @@ from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from datetime import date, timedelta
 
+from labplan.planning.figures import bulk_volume_text, mass_text
 from labplan.planning.values import PassedOver, ShelfBottle
 
 # Common practice: a water reading this old says nothing once the bottle is open.
 READING_VALID_AFTER_OPENING_DAYS = 30
 DRY_GRADE_PPM = 30
+# One nanolitre in mL: what a sum of floats may be off by; the hold itself is in whole units.
+BASE_UNIT = 1e-6
 _ALCOHOLS = ("ethanol", "methanol", "alcohol", "propanol")
 
 Check = Callable[[ShelfBottle, date], str | None]
@@ -48,9 +51,11 @@ def choose_bottle(
             passed.append(PassedOver(bottle.code, bottle.name, role, against))
         else:
             fit.append((bottle, needed or 0.0))
-    enough = [(b, need) for b, need in fit if b.usable >= need]
+    enough = [(b, need) for b, need in fit if b.usable >= need - BASE_UNIT]
     passed += [
-        PassedOver(b.code, b.name, role, _too_little(b, need)) for b, need in fit if b.usable < need
+        PassedOver(b.code, b.name, role, _too_little(b, need))
+        for b, need in fit
+        if b.usable < need - BASE_UNIT
     ]
     best = min(enough, key=lambda pair: _rank(pair[0], as_of, prefer_dry), default=None)
     return Choice(
@@ -62,12 +67,14 @@ def choose_bottle(
 
 
 def _too_little(bottle: ShelfBottle, needed: float) -> str:
-    unit = unit_of(bottle)
-    return f"holds {bottle.usable:.6g} {unit} that can be used and {needed:.6g} {unit} is needed"
+    usable = _in_words(bottle, bottle.usable)
+    return f"holds {usable} that can be used, {_in_words(bottle, needed)} is needed"
 
 
-def unit_of(bottle: ShelfBottle) -> str:
-    return {"mass": "mg", "volume": "mL", "count": "pieces"}[bottle.measured_by]
+def _in_words(bottle: ShelfBottle, amount: float) -> str:
+    if bottle.measured_by == "volume":
+        return bulk_volume_text(amount)
+    return mass_text(amount) if bottle.measured_by == "mass" else f"{amount:g} pieces"
 
 
 def _against(bottle: ShelfBottle, as_of: date, checks: tuple[Check, ...]) -> str | None:

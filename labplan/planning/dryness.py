@@ -12,7 +12,6 @@ from labplan.planning.values import Charge, RouteWarning, Water
 STOICHIOMETRIC_LIMIT_PCT = 25
 CATALYTIC_LIMIT_PCT = 10
 DONOR_LIMIT_PCT = 5
-CATALYTIC_BELOW_EQUIV = 0.5
 
 
 def water_of(
@@ -51,10 +50,9 @@ def _water_mmol(charge: Charge, as_of: date) -> float | None:
 
 
 def dryness_warnings(
-    water: Water, charges: dict[str, Charge], promoter_equiv: float
+    water: Water, charges: dict[str, Charge], *, catalytic: bool
 ) -> list[RouteWarning]:
     """Say what the water costs where it matters, and where no reading counts."""
-    catalytic = promoter_equiv < CATALYTIC_BELOW_EQUIV
     limit = CATALYTIC_LIMIT_PCT if catalytic else STOICHIOMETRIC_LIMIT_PCT
     found = []
     if water.promoter_share_pct > limit:

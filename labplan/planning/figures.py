@@ -26,18 +26,14 @@ def bulk_text(mass_mg: float) -> str:
 
 
 def volume_text(volume_ml: float) -> str:
-    """Millilitres with the digits of the syringe or cylinder, litres from 1 L.
+    """Reacting liquids, with the digits of the syringe or cylinder.
 
-    >>> volume_text(3.51), volume_text(1.4), volume_text(91.0), volume_text(1510.0)
-    ('3.51 mL', '1.40 mL', '91 mL', '1.51 L')
+    >>> volume_text(3.51), volume_text(1.4), volume_text(14.0)
+    ('3.51 mL', '1.40 mL', '14.0 mL')
     """
-    if volume_ml >= 1000:
-        return f"{volume_ml / 1000:.6g} L"
     if volume_ml < 5:
         return f"{volume_ml:.2f} mL"
-    if volume_ml < 50:
-        return f"{volume_ml:.1f} mL"
-    return f"{volume_ml:.0f} mL"
+    return f"{volume_ml:.1f} mL" if volume_ml <= 50 else f"{volume_ml:.0f} mL"
 
 
 def three_figures(value: float) -> str:
@@ -54,3 +50,14 @@ def in_sentence(name: str) -> str:
     if word is None or word.group() in _PROPER_NAMES:
         return name
     return name[: word.start()] + word.group().lower() + name[word.end() :]
+
+
+def bulk_volume_text(volume_ml: float) -> str:
+    """Solvents and washes, as a measuring cylinder shows them.
+
+    >>> bulk_volume_text(73.0), bulk_volume_text(1510.0), bulk_volume_text(11_948.0)
+    ('73 mL', '1.51 L', '11.948 L')
+    """
+    if volume_ml >= 1000:
+        return f"{volume_ml / 1000:.6g} L"
+    return f"{volume_ml:.6g} mL"

@@ -1,63 +1,140 @@
-"""Methods are data: one row a way to run a stage (fixtures/methods.json)."""
+"""Methods are data (fixtures/methods.json). What does not fit is a veto, never a low score."""
 
 from typing import Any
 
 from labplan import datafiles
 from labplan.chemistry.coupling import Target
-from labplan.planning.values import Reason
+from labplan.planning.survival import endangered, killed
+from labplan.planning.values import Reason, RouteWarning, Wishes
 
 Method = dict[str, Any]
 
 
-def coupling_methods() -> list[Method]:
-    return [row for row in datafiles.table("methods")["methods"] if row["kind"] == "coupling"]
+def methods_of(kind: str) -> list[Method]:
+    rows = [row for row in datafiles.table("methods")["methods"] if row["kind"] == kind]
+    return sorted(rows, key=lambda row: (row.get("rank", 0), row["key"]))
 
 
-def find_method(target: Target) -> tuple[Method | None, tuple[Reason, ...]]:
-    """Return the first method that fits the target, or None with every reason against it."""
-    reasons: tuple[Reason, ...] = ()
-    for method in coupling_methods():
+def method_row(key: str) -> Method:
+    """The row of a method that a stage names."""
+    rows: list[Method] = datafiles.table("methods")["methods"]
+    return next(row for row in rows if row["key"] == key)
+
+
+def acetylation_for(target: Target) -> Method | None:
+    """The way that gives the wanted anomer of this sugar, or None."""
+    if target.residue is None:
+        return None
+    return next((m for m in methods_of("acetylation") if target.residue.key in m["residues"]), None)
+
+
+def deacetylation_method() -> Method:
+    return methods_of("deacetylation")[0]
+
+
+def fitting_couplings(target: Target, wishes: Wishes) -> tuple[list[Method], tuple[Reason, ...]]:
+    """Methods that fit target and wishes, best first; or none, with the reasons against each."""
+    asked = [m for m in methods_of("coupling") if _is_wished(m, wishes)]
+    if not asked:
+        return [], (_unknown_wish(wishes),)
+    fitting: list[Method] = []
+    reasons: list[Reason] = []
+    for method in asked:
         against = reasons_against(target, method)
-        if not against:
-            return method, ()
-        reasons += against
-    return None, tuple(dict.fromkeys(reasons))
+        if against:
+            reasons += against
+        else:
+            fitting.append(method)
+    return fitting, () if fitting else tuple(dict.fromkeys(reasons))
+
+
+def _is_wished(method: Method, wishes: Wishes) -> bool:
+    if wishes.promoter is not None and method["promoter"]["substance"] != wishes.promoter:
+        return False
+    solvents = {solvent["substance"] for solvent in method["solvents"]}
+    return wishes.solvent is None or wishes.solvent in solvents
+
+
+def _unknown_wish(wishes: Wishes) -> Reason:
+    known = "; ".join(
+        f"{m['promoter']['substance']} in {', '.join(s['substance'] for s in m['solvents'])}"
+        for m in methods_of("coupling")
+    )
+    asked = " in ".join(wish for wish in (wishes.promoter, wishes.solvent) if wish)
+    return Reason(
+        "no_such_method", f"No coupling of a peracetate is known here with {asked}. Known: {known}."
+    )
+
+
+def solvent_of(method: Method, wishes: Wishes) -> dict[str, object]:
+    """The wished solvent of a method, else its default."""
+    rows: list[dict[str, object]] = method["solvents"]
+    if wishes.solvent is not None:
+        return next(row for row in rows if row["substance"] == wishes.solvent)
+    return next(row for row in rows if row["default"])
 
 
 def reasons_against(target: Target, method: Method) -> tuple[Reason, ...]:
-    """Vetoes, never low scores: the sugar, the anomer, the hydroxyls, the groups."""
+    """Why this coupling, or what must follow it, cannot give the target."""
     return (
         *_sugar_reasons(target, method),
         *_relation_reasons(target),
         *_protection_reasons(target),
         *_acceptor_reasons(target, method),
+        *_deacetylation_reasons(target),
+    )
+
+
+def group_cautions(target: Target, method: Method) -> tuple[RouteWarning, ...]:
+    """Groups that want care in the coupling or in the deacetylation that follows."""
+    conditions = [method["promoter"]["survival"]]
+    if target.needs_deacetylation:
+        conditions.append(deacetylation_method()["survival"])
+    found = [
+        RouteWarning(f"{fate.group.replace(' ', '_')}_present", "caution", _sentence(fate.reason))
+        for condition in conditions
+        for fate in endangered(condition, target.acceptor_groups)
+    ]
+    return tuple(dict.fromkeys(found))
+
+
+def _sentence(reason: str) -> str:
+    return f"{reason[0].upper()}{reason[1:]}."
+
+
+def later_cautions(target: Target) -> tuple[RouteWarning, ...]:
+    """What must not be done to this product later, by what it carries."""
+    fates = [
+        (condition, fate)
+        for condition in ("iodine or N-iodosuccinimide", "hydrogenolysis")
+        for fate in killed(condition, target.acceptor_groups)
+    ]
+    return tuple(
+        RouteWarning(
+            "refused_for_this_product",
+            "note",
+            f"No {condition} on this product or in its coupling: {fate.reason}.",
+        )
+        for condition, fate in fates
     )
 
 
 def _sugar_reasons(target: Target, method: Method) -> tuple[Reason, ...]:
-    if target.sugar_rings > 1:
-        return (
-            Reason(
-                "oligosaccharide_not_planned",
-                f"The target has {target.sugar_rings} sugar rings; only monosaccharides are "
-                "planned so far.",
-            ),
-        )
     if target.c2_substituent != "O":
         return ()  # said by the 1,2-relation
-    if target.residue_key is None:
+    if target.residue is None:
         return (
             Reason(
                 "residue_unknown",
                 "The sugar is not in the table of residues, so its peracetate cannot be named.",
             ),
         )
-    if target.residue_key not in method["residues"]:
+    if target.residue.key not in method["residues"]:
         planned = ", ".join(sorted(method["residues"]))
         return (
             Reason(
                 "residue_not_planned",
-                f"{target.residue_name} is not among the sugars this method covers: {planned}.",
+                f"{target.residue.name} is not among the sugars this method covers: {planned}.",
             ),
         )
     return ()
@@ -65,9 +142,12 @@ def _sugar_reasons(target: Target, method: Method) -> tuple[Reason, ...]:
 
 # What does it elsewhere, named without planning it.
 _OTHER_WAYS = {
-    "galacto": "an ether-protected or 4,6-silylene galactosyl donor",
-    "gluco": "an ether-protected donor under in-situ anomerisation",
-    "manno": "a 4,6-benzylidene mannosyl sulfoxide or trichloroacetimidate",
+    "d-mannose": "a 4,6-benzylidene mannosyl sulfoxide or trichloroacetimidate",
+    "l-rhamnose": "a rhamnosyl donor without an acyl group at C-2, or by inversion",
+    "l-fucose": "a benzyl-protected fucosyl donor (bromide, thioglycoside or imidate)",
+    "d-galactose": "an ether-protected or 4,6-silylene galactosyl donor",
+    "d-glucose": "an ether-protected glucosyl donor",
+    "lactose": "an ether-protected lactosyl donor",
 }
 
 
@@ -81,63 +161,58 @@ def _relation_reasons(target: Target) -> tuple[Reason, ...]:
                 "donor of another type.",
             ),
         )
-    if target.relation == "1,2-cis":
-        sugar = target.residue_name or "this sugar"
-        return (
-            Reason(
-                "wrong_relation_1_2_cis",
-                f"The target is the {target.anomer or ''} glycoside of {sugar}, which is "
-                "1,2-cis; the acetate at C-2 directs the alcohol to the 1,2-trans side. "
-                f"Elsewhere this is made with {_other_way(target)}.",
-            ),
-        )
-    return ()
-
-
-def _other_way(target: Target) -> str:
-    from_table = {
-        "mannose": "manno",
-        "rhamnose": "manno",
-        "glucose": "gluco",
-        "galactose": "galacto",
-        "fucose": "galacto",
-    }
-    name = (target.residue_name or "").split("-")[-1]
-    return _OTHER_WAYS.get(from_table.get(name, ""), "a donor without an acyl group at C-2")
+    if target.relation != "1,2-cis":
+        return ()
+    key = target.residue.key if target.residue else ""
+    other = _OTHER_WAYS.get(key, "a donor without an acyl group at C-2")
+    sugar = target.residue_name or "this sugar"
+    return (
+        Reason(
+            "wrong_relation_1_2_cis",
+            f"The target is the {target.anomer or ''} glycoside of {sugar}, which is 1,2-cis; the "
+            "acetate at C-2 directs the alcohol to the 1,2-trans side. "
+            f"Elsewhere this is made with {other}.",
+        ),
+    )
 
 
 def _protection_reasons(target: Target) -> tuple[Reason, ...]:
-    if target.sugar_rings > 1:
-        return ()
     found = []
-    if target.sugar_hydroxyls:
+    if target.sugar_hydroxyls and target.sugar_acetates:
         found.append(
             Reason(
-                "free_hydroxyls",
-                f"The sugar of the target has {target.sugar_hydroxyls} free hydroxyl group(s). "
-                "The stage that takes acetates off is not planned yet: ask for the per-O-acetate.",
+                "partly_acetylated",
+                f"The sugar of the target has {target.sugar_hydroxyls} free and "
+                f"{target.sugar_acetates} acetylated hydroxyl groups. Ask for the per-O-acetate "
+                "or for the free glycoside.",
             )
         )
     if target.other_sugar_groups:
         found.append(
             Reason(
                 "not_acetates",
-                f"{target.other_sugar_groups} oxygen(s) of the sugar carry another group than "
-                "acetyl; the donor would not be a peracetate.",
+                f"The sugar carries another group than acetyl ({target.other_sugar_groups} found); "
+                "the donor would not be a peracetate.",
             )
         )
     return tuple(found)
 
 
+def _kind_of_alcohol(hydroxyl: str) -> str:
+    return {"phenol": "a phenol", "acid": "a carboxylic acid"}.get(
+        hydroxyl, f"a {hydroxyl} alcohol"
+    )
+
+
 def _acceptor_reasons(target: Target, method: Method) -> tuple[Reason, ...]:
     found = []
     if target.acceptor_oh not in method["acceptor_oh"]:
-        allowed = ", ".join(method["acceptor_oh"])
+        allowed = " and ".join(method["acceptor_oh"])
         found.append(
             Reason(
                 "acceptor_not_planned",
-                f"The acceptor is a {target.acceptor_oh} hydroxyl compound; "
-                f"{method['name']} is planned for: {allowed}.",
+                f"The acceptor is {_kind_of_alcohol(target.acceptor_oh)}; {method['name']} is "
+                f"planned for {allowed} alcohols.",
             )
         )
     if target.acceptor_hydroxyls > 1:
@@ -148,7 +223,33 @@ def _acceptor_reasons(target: Target, method: Method) -> tuple[Reason, ...]:
                 "be glycosylated; protect the others, or plan at least 5 equiv by hand.",
             )
         )
-    for group in target.acceptor_groups:
-        if group in method["does_not_survive"]:
-            found.append(Reason("group_does_not_survive", method["does_not_survive"][group] + "."))
+    if target.acceptor_acids and method["promoter"]["catalytic"]:
+        found.append(
+            Reason(
+                "acid_binds_promoter",
+                f"A free carboxylic acid binds a catalytic promoter ({method['name']}); use a "
+                "stoichiometric one or the ester.",
+            )
+        )
+    for fate in killed(method["promoter"]["survival"], target.acceptor_groups):
+        found.append(Reason("group_does_not_survive", _sentence(fate.reason)))
+    return tuple(found)
+
+
+def _deacetylation_reasons(target: Target) -> tuple[Reason, ...]:
+    if not target.needs_deacetylation:
+        return ()
+    condition = deacetylation_method()["survival"]
+    found = [
+        Reason("group_does_not_survive_deacetylation", _sentence(fate.reason))
+        for fate in killed(condition, target.acceptor_groups)
+    ]
+    if {"Fmoc", "Cbz"} & set(target.acceptor_groups) and not found:
+        found.append(
+            Reason(
+                "beta_elimination",
+                "Methoxide can eliminate an O-glycosylated serine or threonine; deacetylate "
+                "under watched pH after the peptide is assembled.",
+            )
+        )
     return tuple(found)

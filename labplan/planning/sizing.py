@@ -8,9 +8,13 @@ from dataclasses import dataclass, replace
 from datetime import date
 
 from labplan.chemistry import amounts
+from labplan.chemistry.amounts import Content
 from labplan.planning import rounding
 from labplan.planning.bottles import Check, Choice, choose_bottle
+from labplan.planning.figures import bulk_text, bulk_volume_text
 from labplan.planning.values import Charge, PassedOver, ShelfBottle, Shortage
+
+_ASSAY_NAMES = {"titration": "titration", "qnmr": "qNMR", "against_standard": "against a standard"}
 
 
 @dataclass(frozen=True)
@@ -35,40 +39,72 @@ class Need:
 
 
 class Sizer:
-    """Collects charges, shortages and bottles passed over for one stage.
+    """Collects charges, shortages and bottles passed over for a route, stage by stage.
 
-    A bottle used for two charges of one stage counts once: what the first took is gone.
+    A bottle used for two charges counts once: what the first took is gone.
     """
 
     def __init__(self, shelf: tuple[ShelfBottle, ...], as_of: date) -> None:
-        self._shelf = shelf
-        self._as_of = as_of
+        self.shelf = shelf
+        self.as_of = as_of
         self._taken: dict[str, float] = {}
+        self._stage = ""
         self.charges: dict[str, Charge] = {}
         self.shortages: list[Shortage] = []
         self.passed_over: list[PassedOver] = []
+        self.too_small: list[str] = []
+
+    def begin_stage(self, kind: str) -> None:
+        """Start a new set of charges; what earlier stages took stays taken."""
+        self._stage = kind
+        self.charges = {}
+
+    def can_meet(self, need: Need) -> bool:
+        """Whether a bottle fits this need, without taking it."""
+        return self._choose(need).bottle is not None
+
+    def pass_over(self, need: Need) -> None:
+        """Note the bottles that do not fit this need, which is met in another way."""
+        self.passed_over += self._choose(need).passed_over
 
     def add(self, need: Need) -> Charge | None:
         """Choose a bottle and size the charge; without a bottle note the shortage, size it bare."""
-        choice = choose_bottle(
-            self._bottles_for(need),
-            role=need.role,
-            as_of=self._as_of,
-            needed_in=lambda bottle: _amount_in_bottle(need, bottle),
-            checks=need.checks,
-            prefer_dry=need.prefer_dry,
-        )
+        choice = self._choose(need)
         self.passed_over += choice.passed_over
         if choice.bottle is None:
             if not need.optional:
-                self.shortages.append(_shortage(need, choice))
+                self.shortages.append(_shortage(self._stage, need, choice))
             return None
         charge = size_charge(need, choice.bottle)
         taken = charge.mass_mg if choice.bottle.measured_by == "mass" else charge.volume_ml
         code = choice.bottle.code
         self._taken[code] = self._taken.get(code, 0.0) + (taken or 0.0)
-        self.charges[need.key] = charge
+        self._keep(charge)
         return charge
+
+    def add_made(
+        self, need: Need, content: Content, *, from_stage: int, weighed_out: bool
+    ) -> Charge:
+        """A charge that an earlier stage gives: weighed out of it, or all of it as it comes."""
+        assert need.amount_mmol is not None
+        mass = amounts.mass_mg(need.amount_mmol, content)
+        if weighed_out:
+            mass = rounding.round_mass_mg(mass)
+        charge = _charge(
+            need,
+            None,
+            mass_mg=mass,
+            amount_mmol=amounts.amount_mmol(mass, content),
+            dispense="mass",
+            hold=0,
+        )
+        assay = ""
+        if content.assay_pct is not None:
+            assay = f"; {content.assay_pct:g} % planned, to be measured"
+        self._keep(
+            replace(charge, from_stage=from_stage, assay_note=f"from stage {from_stage}{assay}")
+        )
+        return self.charges[need.key]
 
     def add_supply(self, need: Need) -> Charge:
         """A charge from the tap of the laboratory: water, ice. No bottle, nothing held."""
@@ -77,10 +113,25 @@ class Sizer:
         self.charges[need.key] = charge
         return charge
 
+    def _keep(self, charge: Charge) -> None:
+        self.charges[charge.key] = charge
+        if is_too_small(charge):
+            self.too_small.append(charge.name)
+
+    def _choose(self, need: Need) -> Choice:
+        return choose_bottle(
+            self._bottles_for(need),
+            role=need.role,
+            as_of=self.as_of,
+            needed_in=lambda bottle: _amount_in_bottle(need, bottle),
+            checks=need.checks,
+            prefer_dry=need.prefer_dry,
+        )
+
     def _bottles_for(self, need: Need) -> list[ShelfBottle]:
         fitting = [
             bottle
-            for bottle in self._shelf
+            for bottle in self.shelf
             if (need.inchikey and bottle.inchikey == need.inchikey)
             or bottle.substance in need.substances
         ]
@@ -88,6 +139,15 @@ class Sizer:
             replace(bottle, usable=bottle.usable - self._taken.get(bottle.code, 0.0))
             for bottle in fitting
         ]
+
+
+def is_too_small(charge: Charge) -> bool:
+    """A reacting charge that is weighed, under the least weighable mass."""
+    return (
+        charge.amount_mmol is not None
+        and charge.dispense == "mass"
+        and (charge.mass_mg or 0.0) < rounding.LEAST_WEIGHABLE_MG
+    )
 
 
 def size_charge(need: Need, bottle: ShelfBottle) -> Charge:
@@ -149,13 +209,16 @@ def _charge(
     equivalents = None
     if amount_mmol is not None and need.amount_mmol and need.equivalents_planned:
         equivalents = need.equivalents_planned * amount_mmol / need.amount_mmol
+    if equivalents is not None and need.equivalents_of == need.key:
+        equivalents = need.equivalents_planned  # the limiting charge is its own measure
     return Charge(
         key=need.key,
         role=need.role,
         group=need.group,
-        substance=bottle.substance if bottle else need.substances[0],
+        substance=bottle.substance if bottle else next(iter(need.substances), "made here"),
         name=bottle.name if bottle else need.name,
         bottle=bottle,
+        from_stage=None,
         equivalents_planned=need.equivalents_planned,
         equivalents=equivalents,
         equivalents_of=need.equivalents_of,
@@ -194,17 +257,20 @@ def _assay_note(bottle: ShelfBottle | None, *, reacting: bool) -> str:
         return ""
     content = bottle.content
     share = amounts.mass_fraction(content)
+    if content.form == "solution":
+        return f"{bottle.form_label}, {share * 100:.3g} % by mass"
     if content.assay_pct is None:
-        return "no assay given: taken as 100 %"
+        return "no assay on the label: taken as 100 %"
+    if content.assay_kind == "area_pct":
+        return f"{content.assay_pct:g} area-%, not used for the amount"
     if content.assay_kind not in amounts.MASS_FRACTION_ASSAYS:
-        kind = content.assay_kind.replace("_", " ")
-        return f"{content.assay_pct:g} % ({kind}) grades the bottle and does not divide"
+        return f"{content.assay_pct:g} %, kind not known, not used for the amount"
     of = "" if content.assay_of == "as_is" else f" as {content.assay_of}"
     exact = "" if abs(share * 100 - content.assay_pct) < 0.005 else f" = {share * 100:.2f} %"
-    return f"{content.assay_pct:g} %{of}{exact} ({content.assay_kind.replace('_', ' ')})"
+    return f"{content.assay_pct:g} %{of}{exact} ({_ASSAY_NAMES[content.assay_kind]})"
 
 
-def _shortage(need: Need, choice: Choice) -> Shortage:
+def _shortage(stage: str, need: Need, choice: Choice) -> Shortage:
     needed = _needed_text(need)
     if not choice.passed_over:
         detail = f"there is no bottle of {need.name} on the shelf"
@@ -218,7 +284,13 @@ def _shortage(need: Need, choice: Choice) -> Shortage:
         )
     largest = f"{choice.largest_usable:.6g}" if choice.fit_exists else "0"
     return Shortage(
-        need.role, need.substances[0] if need.substances else "", need.name, needed, largest, detail
+        stage,
+        need.role,
+        need.substances[0] if need.substances else "",
+        need.name,
+        needed,
+        largest,
+        detail,
     )
 
 
@@ -226,5 +298,5 @@ def _needed_text(need: Need) -> str:
     if need.amount_mmol is not None:
         return f"{need.amount_mmol:.4g} mmol"
     if need.bulk_volume_ml is not None:
-        return f"{need.bulk_volume_ml:.4g} mL"
-    return f"{(need.bulk_mass_mg or 0) / 1000:.4g} g"
+        return bulk_volume_text(rounding.round_volume_ml(need.bulk_volume_ml, outward=need.outward))
+    return bulk_text(rounding.round_bulk_mg(need.bulk_mass_mg or 0.0))

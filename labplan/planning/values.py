@@ -1,9 +1,10 @@
 """The values planning works on. Units stand last in the names; everything here is frozen."""
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from datetime import date
 
 from labplan.chemistry.amounts import Content
+from labplan.chemistry.structures import Structure
 
 
 @dataclass(frozen=True)
@@ -12,6 +13,14 @@ class Scale:
 
     product_mass_mg: float | None = None
     acceptor_amount_mmol: float | None = None
+
+
+@dataclass(frozen=True)
+class Wishes:
+    """What the requester insists on, by substance key; None leaves it to labplan."""
+
+    promoter: str | None = None
+    solvent: str | None = None
 
 
 @dataclass(frozen=True)
@@ -25,6 +34,7 @@ class ShelfBottle:
     substance: str
     name: str
     cas: str
+    smiles: str
     inchikey: str | None
     content: Content | None  # None for a material or mixture without a molar mass
     form_label: str
@@ -44,6 +54,9 @@ class ShelfBottle:
     water_read_on: date | None
     activated_on: date | None
     density_g_per_ml: float | None = None
+    loading_equiv_per_l: float | None = None  # of a resin
+    solvent: str | None = None  # of a solution, by substance key
+    solvent_name: str | None = None
 
 
 @dataclass(frozen=True)
@@ -65,6 +78,7 @@ class RouteWarning:
 class Shortage:
     """One line that no bottle can meet."""
 
+    stage: str
     role: str
     substance: str
     name: str
@@ -88,7 +102,8 @@ class Charge:
     """One line of what goes into the flask or is used on it.
 
     `hold_amount` is in the bottle's own base unit (micrograms or nanolitres) and is what is
-    set aside; the printed amount is the same number.
+    set aside; the printed amount is the same number. Without a bottle it comes from the
+    laboratory's supply or, with `from_stage`, from an earlier stage.
     """
 
     key: str
@@ -97,6 +112,7 @@ class Charge:
     substance: str
     name: str
     bottle: ShelfBottle | None
+    from_stage: int | None
     equivalents_planned: float | None
     equivalents: float | None
     equivalents_of: str | None
@@ -110,12 +126,23 @@ class Charge:
 
 @dataclass(frozen=True)
 class Water:
-    """Where the water comes from and what it costs."""
+    """Where the water comes from and what it costs, in % of promoter (or reagent) and substrate."""
 
     lines: tuple[tuple[str, float | None], ...]  # (charge key, mmol or None when unknown)
     total_mmol: float
     promoter_share_pct: float
     donor_share_pct: float
+
+
+@dataclass(frozen=True)
+class Quench:
+    """The neutralisation after a Lewis acid: acid set free, base with its excess, gas, vessel."""
+
+    vessel_ml: int
+    acid_mmol: float
+    bicarbonate_mmol: float
+    clear_solution_ml: float  # what would dissolve it all at 0 °C
+    carbon_dioxide_l: float
 
 
 @dataclass(frozen=True)
@@ -131,30 +158,38 @@ class Step:
 
 
 @dataclass(frozen=True)
-class Stage:
-    kind: str
-    method: str
-    limiting: str
-    scale_mmol: float
-    charges: tuple[Charge, ...]
-    water: Water
-    vessel_ml: int
-    quench_vessel_ml: int
-    quench_anions_mmol: float
-    carbon_dioxide_l: float
-    expected_mass_mg: float
-    expected_low_mg: float
-    expected_high_mg: float
-    gross_crude_mg: float
-    yield_pct: tuple[float, float, float]
-    steps: tuple[Step, ...] = ()
-
-
-@dataclass(frozen=True)
 class Ion:
     species: str
     ion: str
     mz: float
+
+
+@dataclass(frozen=True)
+class Stage:
+    """One flask: its charges, its vessels, what it gives. Masses of product pure, in mg."""
+
+    number: int
+    kind: str  # "acetylation", "coupling", "deacetylation"
+    method: str
+    method_name: str
+    limiting: str
+    scale_mmol: float
+    is_provisional: bool  # its limiting charge is what an earlier stage really gives
+    product: Structure
+    product_name: str
+    charges: tuple[Charge, ...]
+    vessel_ml: int
+    yield_pct: tuple[float, float, float]  # low, planned, high
+    expected_mass_mg: float
+    expected_low_mg: float
+    expected_high_mg: float
+    gross_mass_mg: float
+    gross_means: str
+    water: Water | None = None
+    quench: Quench | None = None
+    adiabatic_rise_k: float | None = None
+    ions: tuple[Ion, ...] = ()
+    steps: tuple[Step, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -167,19 +202,27 @@ class SideProduct:
 
 @dataclass(frozen=True)
 class Expectations:
+    """Of the whole route: the product's ions first, then those of what may be left."""
+
     ions: tuple[Ion, ...]
     side_products: tuple[SideProduct, ...]
     anomeric_coupling_hz: tuple[float, float] | None
     anomeric_signal: str
+    mass_mg: tuple[float, float, float] | None  # low, planned, high: the yields in quadrature
 
 
 @dataclass(frozen=True)
 class Route:
+    """Stages in the order they are run, or none with the shortages that prevent them."""
+
+    rank: int
+    method: str
+    method_name: str
     stages: tuple[Stage, ...]
     why: tuple[str, ...]
     warnings: tuple[RouteWarning, ...]
     shortages: tuple[Shortage, ...]
-    passed_over: tuple[PassedOver, ...] = field(default=())
+    passed_over: tuple[PassedOver, ...]
 
     @property
     def is_available(self) -> bool:

@@ -5,7 +5,7 @@ BEAKERS_ML = (25, 50, 100, 150, 250, 400, 600, 800, 1000, 2000, 3000, 5000, 1000
 FUNNELS_ML = (50, 100, 250, 500, 1000, 2000, 5000, 10000)
 MOST_FILL = 0.5  # a flask is filled to 20 to 60 %; half leaves room for the promoter
 QUENCH_HEAD_SPACE = 2.0  # the beaker holds twice the total liquid
-FUNNEL_FILL = 0.6
+FUNNEL_FILL = 2 / 3  # never more, or it cannot be vented
 
 
 def smallest_that_holds(sizes_ml: tuple[int, ...], volume_ml: float) -> int:

@@ -5,34 +5,66 @@ from datetime import date
 from typing import Any
 
 from inventory.selectors import BottleOnShelf, shelf_snapshot
+from labplan.base import clock
 from labplan.base.rights import Actor
 from labplan.chemistry.coupling import Target, read_target
+from labplan.chemistry.errors import TargetProblem
 from labplan.planning.document import plan_document
 from labplan.planning.plan import Plan, make_plan, wanted_from_shelf
-from labplan.planning.values import Scale, ShelfBottle
+from labplan.planning.preview import preview, preview_of_problem
+from labplan.planning.values import Scale, ShelfBottle, Wishes
 
+# the scale of a preview that names none
+DEFAULT_ACCEPTOR_MMOL = 1.0
 # base units in what the engine reckons with: micrograms in mg, nanolitres in mL
 _BASE_UNITS = {"mass": 1_000, "volume": 1_000_000, "count": 1}
 
 
 @dataclass(frozen=True)
 class PlannedOn:
-    """A plan with its document and the codes of all bottles it looked at."""
+    """A plan and the codes of all bottles it looked at."""
 
     plan: Plan
-    document: dict[str, Any]
     bottles_seen: tuple[str, ...]
+    as_of: date
+
+    def document(self) -> dict[str, Any]:
+        return plan_document(self.plan, as_of=self.as_of)
 
 
-def plan_on_shelf(*, actor: Actor, target: Target, scale: Scale, as_of: date) -> PlannedOn:
+def plan_on_shelf(
+    *, actor: Actor, target: Target, scale: Scale, wishes: Wishes, as_of: date
+) -> PlannedOn:
     """Take a snapshot of the shelf and plan the target on it."""
-    wanted = wanted_from_shelf(target)
-    snapshot = shelf_snapshot(actor=actor, inchikeys=wanted.inchikeys, substances=wanted.substances)
-    shelf = tuple(_for_engine(bottle) for bottle in snapshot)
-    plan = make_plan(target, scale, shelf, as_of=as_of)
-    return PlannedOn(
-        plan, plan_document(plan, as_of=as_of), tuple(bottle.code for bottle in snapshot)
+    wanted = wanted_from_shelf(target, wishes)
+    snapshot = shelf_snapshot(
+        actor=actor,
+        inchikeys=wanted.inchikeys,
+        inchikey_blocks=wanted.inchikey_blocks,
+        substances=wanted.substances,
     )
+    shelf = tuple(_for_engine(bottle) for bottle in snapshot)
+    plan = make_plan(target, scale, shelf, as_of=as_of, wishes=wishes)
+    return PlannedOn(plan, tuple(bottle.code for bottle in snapshot), as_of)
+
+
+def preview_target(*, actor: Actor, smiles: str, scale: Scale, wishes: Wishes) -> dict[str, Any]:
+    """What preview_on_shelf answers; a bad structure is answered in it and not raised."""
+    try:
+        target = read_target(smiles)
+    except TargetProblem as problem:
+        return preview_of_problem(problem)
+    return preview_on_shelf(actor=actor, target=target, scale=scale, wishes=wishes)
+
+
+def preview_on_shelf(
+    *, actor: Actor, target: Target, scale: Scale, wishes: Wishes
+) -> dict[str, Any]:
+    """Every route to a target on the shelf as it is."""
+    planned = plan_on_shelf(
+        actor=actor, target=target, scale=scale, wishes=wishes, as_of=clock.today()
+    )
+    return preview(planned.plan)
 
 
 def _for_engine(bottle: BottleOnShelf) -> ShelfBottle:
@@ -50,4 +82,14 @@ _SAME_NAMES = tuple(
     name for name in ShelfBottle.__dataclass_fields__ if name not in ("on_hand", "held", "usable")
 )
 
-__all__ = ["PlannedOn", "Scale", "Target", "plan_on_shelf", "read_target"]
+__all__ = [
+    "DEFAULT_ACCEPTOR_MMOL",
+    "PlannedOn",
+    "Scale",
+    "Target",
+    "Wishes",
+    "plan_on_shelf",
+    "preview_on_shelf",
+    "preview_target",
+    "read_target",
+]

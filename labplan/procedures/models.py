@@ -17,6 +17,9 @@ class Procedure(models.Model):
     target_smiles = models.TextField()
     product_mass_mg = models.DecimalField(max_digits=12, decimal_places=3, null=True)
     acceptor_amount_mmol = models.DecimalField(max_digits=12, decimal_places=6, null=True)
+    # substance codes the requester insists on; empty leaves the choice to labplan
+    promoter = models.CharField(max_length=80, blank=True)
+    solvent = models.CharField(max_length=80, blank=True)
     state = models.CharField(max_length=10, choices=[(s, s) for s in life.STATES])
     reasons = models.TextField(default="[]")  # [{code, detail}], for lists
     attempt = models.PositiveSmallIntegerField(default=0)

@@ -1,6 +1,7 @@
 """What is known of the hazards of a substance, with its evidence; unknown is said as unknown."""
 
 from dataclasses import dataclass
+from functools import cache, lru_cache
 from typing import Any
 
 from labplan import datafiles
@@ -29,9 +30,11 @@ class Hazards:
     summary: str
     evidence: str
     source: str
+    note: str
     row: dict[str, Any] | None
 
 
+@lru_cache(maxsize=2048)
 def hazards_of(substance: str, name: str) -> Hazards:
     """Return the packaged classification of a substance key, or an unknown one."""
     row = next(
@@ -57,15 +60,26 @@ def hazards_of(substance: str, name: str) -> Hazards:
         summary=row["signal_word"] or ("" if codes else NOT_CLASSIFIED_TEXT),
         evidence=row["evidence"],
         source=row["source"],
+        note=row["note"] or "",
         row=row,
     )
 
 
 def _unknown(substance: str, name: str, row: dict[str, Any] | None) -> Hazards:
     return Hazards(
-        substance, name, False, None, (), (), (), UNKNOWN_TEXT, "not known",
-        row["source"] if row else "none", row,
-    )  # fmt: skip
+        substance=substance,
+        name=name,
+        established=False,
+        signal_word=None,
+        pictograms=(),
+        hazard_statements=(),
+        precautionary_statements=(),
+        summary=UNKNOWN_TEXT,
+        evidence="not known",
+        source=row["source"] if row else "none",
+        note=(row["note"] or "") if row else "",
+        row=row,
+    )
 
 
 def statement_text(code: str) -> str:
@@ -73,6 +87,7 @@ def statement_text(code: str) -> str:
     return _texts()[code]
 
 
+@cache
 def _texts() -> dict[str, str]:
     tables = datafiles.table("statements")
     return {

@@ -22,6 +22,7 @@ ALLOWED_HOSTS = os.environ.get("LABPLAN_HOSTS", "127.0.0.1,localhost,[::1]").spl
 
 INSTALLED_APPS = [
     "rest_framework",
+    "drf_spectacular",
     "labplan.base",
     "inventory",
     "labplan.procedures",
@@ -66,6 +67,33 @@ REST_FRAMEWORK = {
     "EXCEPTION_HANDLER": "labplan.base.problems.problem_response",
     "UNAUTHENTICATED_USER": None,
     "COERCE_DECIMAL_TO_STRING": True,
+    # There is one form of each answer; ?format= is an unknown parameter like any other.
+    "URL_FORMAT_OVERRIDE": None,
+    "DEFAULT_SCHEMA_CLASS": "drf_spectacular.openapi.AutoSchema",
+}
+# docs/openapi.yaml is made from this by `make openapi`.
+SPECTACULAR_SETTINGS = {
+    "OAS_VERSION": "3.1.0",
+    "TITLE": "labplan",
+    "DESCRIPTION": (
+        "Plans glycoside couplings on the stock a laboratory really has.\n\n"
+        "Send a token as 'Authorization: Bearer <token>'; bodies are JSON. Units stand in the "
+        "names of fields. Unknown fields and parameters are refused (400), values that break a "
+        "rule too (422), and every refusal is a problem (RFC 9457) that says what to do.\n\n"
+        "labplan is a planning aid: a qualified chemist checks and approves what it writes."
+    ),
+    "VERSION": "0.1.0",
+    "COMPONENT_SPLIT_REQUEST": True,
+    "SCHEMA_PATH_PREFIX": "/api/v1",
+    "POSTPROCESSING_HOOKS": ["labplan.base.api.schema.add_what_all_share"],
+    "TAGS": [
+        {"name": "Routes", "description": "What could be made, before anything is asked for."},
+        {"name": "Procedures", "description": "Requested glycosides, from the wish to the flask."},
+        {"name": "Stock", "description": "Substances, bottles, places, and the book of a bottle."},
+        {"name": "Reservations", "description": "What is set aside, and for which project."},
+        {"name": "Projects", "description": "Who may use what."},
+        {"name": "About this API", "description": "This description, for programs and people."},
+    ],
 }
 
 LOGGING = {

@@ -124,7 +124,7 @@ def test_files_are_canonical(name: str) -> None:
 @pytest.mark.parametrize(
     ("name", "group", "key", "count"),
     [
-        ("sources", "sources", "key", 32),
+        ("sources", "sources", "key", 35),
         ("substances", "substances", "key", 65),
         ("classifications", "classifications", "substance", 65),
         ("statements", "hazard", "code", 112),

@@ -1,5 +1,9 @@
 """What the open connection really runs under: options at the wrong level are silently ignored."""
 
+import os
+import subprocess
+import sys
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -95,3 +99,25 @@ def test_percent_signs_and_options_of_an_address_are_kept() -> None:
     assert made["HOST"] == "/run/pg"
     assert made["OPTIONS"]["options"] == "-c a.b=1 -c lock_timeout=3000"
     assert database_from_url("sqlite:////tmp/a%20b.sqlite3")["NAME"] == "/tmp/a b.sqlite3"
+
+
+@pytest.mark.parametrize("ends", ["pass", "raise SystemExit(3)", "os.fork() or os._exit(0)"])
+def test_a_process_on_the_test_settings_leaves_no_database_behind(
+    ends: str, tmp_path: Path
+) -> None:
+    """Also when it fails, and when a child of it ends first."""
+    program = (
+        "import os, pathlib, tempfile, django; django.setup()\n"
+        "from django.db import connection as c\n"
+        "c.cursor().execute('CREATE TABLE kept (id INTEGER)'); c.close()\n"
+        "assert list(pathlib.Path(tempfile.gettempdir()).glob('labplan-test-*/*.sqlite3*'))\n"
+    )
+    environment = {**os.environ, "TMPDIR": str(tmp_path),
+                   "DJANGO_SETTINGS_MODULE": "labplan.settings.test"}  # fmt: skip
+    environment.pop("DATABASE_URL", None)
+    ended = subprocess.run(
+        [sys.executable, "-c", program + ends], cwd=Path(__file__).resolve().parents[2],
+        env=environment, capture_output=True, text=True, timeout=60, check=False,
+    )  # fmt: skip
+    assert ended.returncode == (3 if "3" in ends else 0), ended.stderr
+    assert list(tmp_path.iterdir()) == []

@@ -171,6 +171,8 @@ def test_a_release_gives_back_everything_and_closes_the_reservation(shelf: Shelf
     reservation.refresh_from_db()
     assert (reservation.state, reservation.version) == ("closed", 2)
     given = Movement.objects.filter(kind="release").order_by("bottle__code", "seq")
+    entered = given.values_list("entered_amount", "entered_unit")
+    assert list(entered) == [("30", "mg"), ("1", "mg"), ("5", "mg")]
     assert list(given.values_list("bottle__code", "held_change", "held_after")) == [
         ("A", -30_000, 1_000),
         ("A", -1_000, 0),

@@ -78,9 +78,10 @@ def test_the_demo_stock_by_kind(lab: Laboratory) -> None:
         "count": 1,
     }
     assert Counter(Bottle.objects.values_list("form__kind", flat=True)) == {
-        "neat": 58,
+        "neat": 57,
         "hydrate": 5,
         "solution": 2,
+        "loaded": 1,
         "anomer_mixture": 1,
     }
     assert Counter(Bottle.objects.values_list("status", flat=True)) == {

@@ -22,7 +22,7 @@ from inventory.models import Hold, Movement, Reservation
 from inventory.selectors import shelf_snapshot
 from inventory.services import HoldLine, hold_lines, release_reservation
 from labplan.base import clock
-from labplan.base.models import Membership, OutboxMessage
+from labplan.base.models import Membership, OutboxMessage, Person, Project
 from labplan.planning.plan import wanted_from_shelf
 from labplan.procedures import engine
 from labplan.procedures.models import Document, Procedure
@@ -224,6 +224,74 @@ def test_who_lost_his_role_meanwhile_gets_nothing(live_lab: Laboratory) -> None:
     assert OutboxMessage.objects.get().state == "done"
 
 
+def _deactivate() -> None:
+    Person.objects.filter(code="MIRA").update(is_active=False)
+
+
+def _close_the_project() -> None:
+    Project.objects.filter(code="LECTIN-07").update(is_open=False)
+
+
+def _assert_failed(procedure: Procedure, code: str) -> None:
+    procedure.refresh_from_db()
+    assert (procedure.state, procedure.attempt) == ("failed", 1)
+    [reason] = json.loads(procedure.reasons)
+    assert reason["code"] == code
+    assert len(reason["detail"]) > 30
+    assert (procedure.reservation_code, procedure.document_id) == (None, None)
+    assert OutboxMessage.objects.get().state == "done"
+
+
+AFTER_THE_REQUEST = [
+    (_deactivate, "requester_inactive"), (_close_the_project, "project_closed"),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("happens", "code"), AFTER_THE_REQUEST)
+def test_nothing_is_planned_for_who_or_what_is_gone_by_then(
+    live_lab: Laboratory, looks: dict[str, Any], happens: Callable[[], None], code: str
+) -> None:
+    procedure, before = _request(live_lab), live_lab.counts()
+    happens()
+    assert live_lab.run_outbox() == 1
+    _assert_failed(procedure, code)
+    assert looks["count"] == 0
+    assert live_lab.counts() == before
+
+
+@pytest.mark.parametrize("look", [1, planning.FREE_TRIES + 2])
+@pytest.mark.parametrize(("happens", "code"), AFTER_THE_REQUEST)
+def test_nothing_is_held_for_who_or_what_goes_during_the_planning(
+    live_lab: Laboratory,
+    looks: dict[str, Any],
+    happens: Callable[[], None],
+    code: str,
+    look: int,
+) -> None:
+    """At the first look, or at the last one, which is made while the rows stand still."""
+    rival = Rival(live_lab)
+
+    def before(number: int) -> None:
+        if number > 1:
+            rival.give_back()
+        if number == look and look > 1:
+            happens()
+
+    def after(number: int) -> None:
+        if look == 1:
+            happens()
+        elif number <= planning.FREE_TRIES:
+            rival.take_all_of("OCT-1")
+
+    looks["before"], looks["after"] = before, after
+    procedure = _request(live_lab)
+    assert live_lab.run_outbox() == 1
+    _assert_failed(procedure, code)
+    assert looks["count"] == look
+    held = Reservation.objects.filter(project__code="LECTIN-07", purpose__startswith="procedure")
+    assert not held.exists()
+
+
 def _no_float(text: str) -> float:
     raise AssertionError(f"a float in the document: {text}")
 
@@ -285,7 +353,10 @@ def test_another_process_with_another_hash_seed_makes_the_same_bytes(
     target = engine.read_target(OCTYL_GLUCOSIDE)
     wanted = wanted_from_shelf(target)
     snapshot = shelf_snapshot(
-        actor=live_lab.actor(), inchikeys=wanted.inchikeys, substances=wanted.substances
+        actor=live_lab.actor(),
+        inchikeys=wanted.inchikeys,
+        inchikey_blocks=wanted.inchikey_blocks,
+        substances=wanted.substances,
     )
     assert len(snapshot) > 10
     shelf_file = tmp_path / "shelf.pickle"
@@ -325,7 +396,7 @@ def test_a_refusal_by_the_rules_of_chemistry_is_no_shortage(live_lab: Laboratory
 def test_one_bottle_for_two_lines_is_counted_for_both(
     live_lab: Laboratory, left_ml: int, end: str
 ) -> None:
-    """73 mL as the solvent and 110 mL for the extraction: each fits into 150 mL, both do not."""
+    """73 mL as the solvent, 110 to extract, 14.6 to rinse: each fits into 150 mL, all do not."""
     for code, left_nl in (("DCM-3", 1_000), ("DCM-2", 1_000), ("DCM-1", left_ml * 1_000_000)):
         bottle = live_lab.bottle(code)
         free = bottle.balance.on_hand - bottle.balance.held - bottle.heel
@@ -341,7 +412,7 @@ def test_one_bottle_for_two_lines_is_counted_for_both(
     assert (procedure.state, procedure.attempt) == (end, 1)
     holds = Hold.objects.filter(reservation__code=procedure.reservation_code, bottle_id=before.pk)
     amounts = list(holds.order_by("line").values_list("amount", flat=True))
-    assert amounts == ([73_000_000, 110_000_000] if end == "planned" else [])
+    assert amounts == ([73_000_000, 110_000_000, 14_600_000] if end == "planned" else [])
     after = live_lab.bottle("DCM-1").balance
     assert (after.held - before.held, after.seq - before.seq) == (sum(amounts), len(amounts))
 

@@ -21,13 +21,13 @@ def test_the_octyl_glucoside_is_cut_into_pentaacetate_and_octanol() -> None:
     assert target.donor.inchikey == BETA_GLUCOSE_PENTAACETATE
     assert target.donor_name == "1,2,3,4,6-penta-O-acetyl-beta-D-glucopyranose"
     assert target.acceptor.smiles == "CCCCCCCCO"
-    assert (target.residue_key, target.anomer, target.relation) == (
-        "d-glucose",
+    assert (target.residue_name, target.anomer, target.relation) == (
+        "D-glucose",
         "beta",
         "1,2-trans",
     )
     assert (target.acceptor_oh, target.acceptor_hydroxyls) == ("primary", 1)
-    assert (target.sugar_acyls, target.sugar_hydroxyls, target.other_sugar_groups) == (4, 0, 0)
+    assert (target.sugar_acetates, target.sugar_hydroxyls, target.other_sugar_groups) == (4, 0, 0)
 
 
 def test_masses_balance_donor_and_acceptor_give_glycoside_and_acetic_acid() -> None:
@@ -107,7 +107,67 @@ def test_any_text_is_read_or_refused_and_never_breaks(text: str) -> None:
 def test_groups_of_the_acceptor_are_found() -> None:
     assert read_target(GLUCOSIDE.format("CC=C")).acceptor_groups == ("alkene",)
     assert read_target(GLUCOSIDE.format("CCN=[N+]=[N-]")).acceptor_groups == ("azide",)
-    assert read_target(GLUCOSIDE.format("CCNC(=O)OC(C)(C)C")).acceptor_groups == ("tert-butyl",)
+    assert read_target(GLUCOSIDE.format("CCNC(=O)OC(C)(C)C")).acceptor_groups == ("Boc",)
     assert read_target(GLUCOSIDE.format("CC#C")).acceptor_groups == ("alkyne",)
     assert read_target(GLUCOSIDE.format("CCN")).acceptor_groups == ("amine",)
     assert read_target(GLUCOSIDE.format("CCCCC(=O)O")).acceptor_groups == ("carboxylic acid",)
+
+
+LACTOSIDE = (
+    "C=CCCCO[C@@H]1O[C@H](CO)[C@@H](O[C@@H]2O[C@H](CO)[C@H](O)[C@H](O)[C@H]2O)[C@H](O)[C@H]1O"
+)
+
+
+def test_a_free_lactoside_goes_back_to_the_octaacetate_of_lactose() -> None:
+    target = read_target(LACTOSIDE)
+    assert target.name == "pent-4-en-1-yl beta-lactoside"
+    assert target.needs_deacetylation
+    assert target.glycoside_name == "pent-4-en-1-yl hepta-O-acetyl-beta-lactoside"
+    assert target.glycoside.formula == "C31H44O18"
+    assert target.glycoside_acetates == 7
+    assert target.donor.inchikey == "WOTQVEKSRLZRSX-HHZNOXSWSA-N"  # CAS 6291-42-5
+    assert (target.sugar_hydroxyls, target.sugar_acetates, target.other_sugar_groups) == (7, 0, 0)
+
+
+@pytest.mark.parametrize(
+    ("residue", "smiles"),
+    [
+        ("D-mannose", "CO[C@H]1O[C@H](CO)[C@@H](O)[C@H](O)[C@@H]1O"),
+        ("L-rhamnose", "CO[C@@H]1O[C@@H](C)[C@H](O)[C@@H](O)[C@H]1O"),
+        ("D-xylose", "CO[C@@H]1OC[C@@H](O)[C@H](O)[C@H]1O"),
+        ("D-galactose", "CO[C@@H]1O[C@H](CO)[C@H](O)[C@H](O)[C@H]1O"),
+    ],
+)
+def test_free_glycosides_of_the_planned_sugars_are_named(residue: str, smiles: str) -> None:
+    target = read_target(smiles)
+    assert (target.residue_name, target.relation) == (residue, "1,2-trans")
+
+
+def test_cellobiose_is_not_taken_for_lactose() -> None:
+    cellobioside = LACTOSIDE.replace("[C@H](O)[C@H](O)[C@H]2O", "[C@@H](O)[C@H](O)[C@H]2O")
+    target = read_target(cellobioside)
+    assert target.residue is None
+    assert target.structure.formula == read_target(LACTOSIDE).structure.formula
+
+
+def test_a_protected_serine_is_named_with_the_sugar_on_its_oxygen() -> None:
+    serine = "[C@H](NC(=O)OCC2c3ccccc3-c3ccccc32)C(=O)OCc2ccccc2"
+    target = read_target(GLUCOSIDE.format(f"C{serine}"))
+    assert target.acceptor_name == "N-(9-fluorenylmethoxycarbonyl)-L-serine benzyl ester"
+    assert target.name == (
+        "N-(9-fluorenylmethoxycarbonyl)-O-(2,3,4,6-tetra-O-acetyl-beta-D-glucopyranosyl)-L-serine "
+        "benzyl ester"
+    )
+    assert target.acceptor_groups == ("Fmoc", "benzyl ester")
+
+
+def test_numbers_on_atoms_are_no_part_of_the_structure() -> None:
+    """All atoms numbered, and one of them: the same target, and no number comes out again."""
+    plain = read_target(OCTYL_GLUCOSIDE)
+    mol = Chem.MolFromSmiles(OCTYL_GLUCOSIDE)
+    for atom in mol.GetAtoms():
+        atom.SetAtomMapNum(atom.GetIdx() + 1)
+    numbered = Chem.MolToSmiles(mol)
+    assert ":17]" in numbered
+    assert read_target(numbered) == plain
+    assert read_target(OCTYL_GLUCOSIDE.replace("CCCCCCCCO", "[CH3:5]CCCCCCCO", 1)) == plain

@@ -1,5 +1,6 @@
 """The route on a shelf: amounts by hand, bottles by rule, refusals by veto."""
 
+import re
 from dataclasses import replace
 from datetime import date, timedelta
 
@@ -13,7 +14,7 @@ from labplan.planning import rounding
 from labplan.planning.document import plan_document
 from labplan.planning.plan import Plan, make_plan
 from labplan.planning.steps import amount_text, charge_text
-from labplan.planning.values import Charge, Scale, ShelfBottle
+from labplan.planning.values import Charge, Scale, ShelfBottle, Wishes
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import OCTYL_GLUCOSIDE
 
@@ -114,7 +115,7 @@ def test_the_alcohol_stabilised_solvent_still_serves_the_work_up() -> None:
     [
         ({"expires_on": AS_OF - timedelta(days=1)}, "expired on 2026-11-30"),
         ({"status": "quarantined"}, "is quarantined"),
-        ({"usable": 5.0}, "holds 5 mL that can be used and 73 mL is needed"),
+        ({"usable": 5.0}, "holds 5 mL that can be used, 73 mL is needed"),
         ({"stabiliser_state": "unknown"}, "its stabiliser is not known"),
         ({"water_ppm": 300.0}, "holds 300 ppm of water; at most 100 ppm here"),
     ],
@@ -159,11 +160,11 @@ def test_all_shortages_are_listed_at_once() -> None:
 
 
 def test_one_bottle_used_twice_counts_once() -> None:
-    """One bottle of dichloromethane for reaction and work-up: the second finds what is left."""
+    """One bottle of dichloromethane for reaction (73), rinse (14.6) and extraction (110 mL)."""
     shelf = without(demo_shelf(), "DCM-2", "DCM-3")
-    enough, short = changed(shelf, "DCM-1", usable=183.0), changed(shelf, "DCM-1", usable=182.0)
+    enough, short = changed(shelf, "DCM-1", usable=197.6), changed(shelf, "DCM-1", usable=197.5)
     assert plan(enough).route.is_available  # type: ignore[union-attr]
-    assert [s.role for s in plan(short).route.shortages] == ["extraction"]  # type: ignore[union-attr]
+    assert [s.role for s in plan(short).route.shortages] == ["rinse"]  # type: ignore[union-attr]
 
 
 def test_without_activated_sieves_the_plan_stands_with_a_warning() -> None:
@@ -200,8 +201,8 @@ GLUCOSIDE = "CC(=O)OC[C@H]1O[C@@H](O{})[C@H](OC(C)=O)[C@@H](OC(C)=O)[C@@H]1OC(C)
     ("smiles", "code"),
     [
         (GLUCOSIDE.format("CC").replace("[C@@H](OCC)", "[C@H](OCC)"), "wrong_relation_1_2_cis"),
-        ("OC[C@H]1O[C@@H](OCC)[C@H](O)[C@@H](O)[C@@H]1O", "free_hydroxyls"),
-        (GLUCOSIDE.format("C2CCCCC2"), "acceptor_not_planned"),
+        ("CC(=O)OC[C@H]1O[C@@H](OCC)[C@H](O)[C@@H](O)[C@@H]1O", "partly_acetylated"),
+        (GLUCOSIDE.format("C(C)(C)CC"), "acceptor_not_planned"),
         (GLUCOSIDE.format("c2ccccc2"), "acceptor_not_planned"),
         (GLUCOSIDE.format("CCO"), "several_acceptor_hydroxyls"),
         (GLUCOSIDE.format("CCNC(=O)OC(C)(C)C"), "group_does_not_survive"),
@@ -219,7 +220,66 @@ def test_what_peracetate_coupling_cannot_do_is_vetoed(smiles: str, code: str) ->
 def test_a_refused_cis_target_names_what_does_it_elsewhere() -> None:
     alpha = GLUCOSIDE.format("CC").replace("[C@@H](OCC)", "[C@H](OCC)")
     (reason,) = plan(demo_shelf(), smiles=alpha).reasons
-    assert "ether-protected donor" in reason.detail
+    assert "ether-protected glucosyl donor" in reason.detail
+
+
+def test_an_azide_is_worked_behind_a_shield_and_never_stands() -> None:
+    azide = GLUCOSIDE.format("CCN=[N+]=[N-]")
+    planned = plan(demo_shelf(), Scale(product_mass_mg=1000.0), azide)
+    (stage,) = planned.route.stages  # type: ignore[union-attr]
+    text = " ".join(step.text for step in stage.steps)
+    assert "behind a shield" in text
+    assert "Azide waste apart" in text
+    assert "2-azidoethanol, solution, 1 mol/L in toluene (bottle AZE-1)" in text
+    concentrate = next(step for step in stage.steps if step.title == "Dry and concentrate")
+    assert concentrate.pause == "do not stop"
+    assert "30 °C" in concentrate.text
+    hazards = [h["name"] for h in plan_document(planned, as_of=AS_OF)["hazards"]]
+    assert "Toluene" in hazards
+
+
+def test_without_gluconate_gel_in_date_bf3_is_a_stop() -> None:
+    planned = plan(changed(demo_shelf(), "CGG-1", expires_on=AS_OF - timedelta(days=1)))
+    assert [w.code for w in planned.route.warnings if w.severity == "stop"] == [  # type: ignore[union-attr]
+        "no_gluconate_gel"
+    ]
+
+
+def test_a_wished_promoter_is_taken_and_an_unknown_one_is_refused() -> None:
+    shelf = demo_shelf()
+    target = read_target(OCTYL_GLUCOSIDE)
+    wished = make_plan(
+        target, TWO_GRAMS, shelf, as_of=AS_OF, wishes=Wishes(promoter="indium-tribromide")
+    )
+    found = charges(wished)
+    # at 55 %: 2000 / 460.52 / 0.55 = 7.8963 mmol x 0.5 x 354.53 / 0.99 = 1413.9 mg
+    assert (found["promoter"].bottle.code, found["promoter"].mass_mg) == ("INB-1", 1414.0)  # type: ignore[union-attr]
+    assert "acetyl_transfer" in [w.code for w in wished.route.warnings]  # type: ignore[union-attr]
+    unknown = make_plan(target, TWO_GRAMS, shelf, as_of=AS_OF, wishes=Wishes(promoter="iodine"))
+    assert [reason.code for reason in unknown.reasons] == ["no_such_method"]
+
+
+def test_bismuth_triflate_counts_its_hydrate_water_in_the_weighing() -> None:
+    wished = make_plan(
+        read_target(OCTYL_GLUCOSIDE), TWO_GRAMS, demo_shelf(), as_of=AS_OF,
+        wishes=Wishes(promoter="bismuth-triflate"),
+    )  # fmt: skip
+    promoter = charges(wished)["promoter"]
+    # at 45 %: 9.6510 mmol x 0.1 x (656.19 + 4 x 18.015) / 0.98 = 717.2 mg
+    assert promoter.mass_mg == 717.0
+    assert "sieves" not in charges(wished)
+
+
+def test_all_routes_are_kept_best_first() -> None:
+    planned = plan(demo_shelf())
+    assert [r.method for r in planned.routes] == [
+        "peracetate-bf3", "peracetate-inbr3", "peracetate-bismuth-triflate",
+    ]  # fmt: skip
+    without_bf3 = plan(without(demo_shelf(), "BFE-1"))
+    assert without_bf3.routes[0].method == "peracetate-inbr3"
+    assert without_bf3.routes[0].warnings[0].code == "second_choice"
+    assert "boron trifluoride" in without_bf3.routes[0].warnings[0].detail
+    assert without_bf3.routes[-1].shortages
 
 
 @given(st.permutations(range(len(demo_shelf()))))
@@ -274,11 +334,12 @@ def test_every_charge_has_its_step_and_every_step_its_charge() -> None:
 
 def test_steps_name_no_amount_that_is_not_in_the_table() -> None:
     (stage,) = plan(demo_shelf()).route.stages  # type: ignore[union-attr]
-    import re
-
+    assert stage.quench is not None
     allowed = {amount_text(charge) for charge in stage.charges}
-    allowed |= {f"{stage.vessel_ml} mL", f"{stage.quench_vessel_ml} mL", "250 mL"}
-    allowed |= {"1.77 L", "3.804 g", "2.000 g", "1.667 g", "2.333 g"}
+    # vessels, the funnel, the bed of the column, the gas, what a clear quench would take
+    allowed |= {f"{stage.vessel_ml} mL", f"{stage.quench.vessel_ml} mL", "500 mL", "304 mL"}
+    allowed |= {"1.77 L", f"{stage.quench.clear_solution_ml:.0f} mL"}
+    allowed |= {"3.804 g", "2.000 g", "1.667 g", "2.333 g"}
     named = {
         amount
         for step in stage.steps
@@ -293,7 +354,7 @@ def test_promoter_comes_last_and_the_reaction_goes_into_the_bicarbonate() -> Non
              ("donor", "acceptor", "solvent", "sieves", "promoter", "quench_base")]  # fmt: skip
     assert order[-2:] == ["promoter", "quench_base"]
     quench = next(step for step in stage.steps if step.title == "Quench")
-    assert "INTO the slurry" in quench.text
+    assert "INTO the stirred quench" in quench.text
     assert "open" in quench.text
 
 

@@ -1,6 +1,7 @@
 """What the demo prints fits a terminal of 80 columns and says all that counts."""
 
 import io
+from decimal import Decimal
 from typing import Any
 
 import pytest
@@ -8,11 +9,14 @@ from rich.cells import cell_len
 from rich.console import Console
 
 from inventory.models import Bottle
-from labplan.procedures.demo.printing import print_procedure
+from labplan.procedures.printing import print_procedure
+from tests.api import targets
 from tests.laboratory import OCTYL_GLUCOSIDE, PROCEDURES, Laboratory, octyl_order
 
 ALPHA = OCTYL_GLUCOSIDE.replace("O[C@@H]1O", "O[C@H]1O", 1)
 DECYL = "CC" + OCTYL_GLUCOSIDE
+LACTOSIDE = targets.LACTOSIDE_FREE
+SERINE = targets.glucoside(f"C[C@H]({targets.FMOC})C(=O)O")
 
 
 def planned(lab: Laboratory, **changes: Any) -> tuple[dict[str, Any], list[dict[str, Any]]]:
@@ -23,7 +27,8 @@ def planned(lab: Laboratory, **changes: Any) -> tuple[dict[str, Any], list[dict[
     procedure = client.get(location).json()
     route = procedure["document"]["route"]
     stages = route["stages"] if route else []
-    codes = [c["bottle"] for s in stages for c in s["charges"] if c["group"] == "reaction"]
+    charges = [c for s in stages for c in s["charges"] if c["group"] == "reaction" and c["bottle"]]
+    codes = dict.fromkeys(charge["bottle"] for charge in charges)
     return procedure, [client.get(f"/api/v1/bottles/{code}/").json() for code in codes]
 
 
@@ -51,8 +56,24 @@ def too_wide(text: str, width: int) -> list[str]:
         {"target_smiles": DECYL},
         {"target_smiles": ALPHA},
         {"product_mass_g": "100"},
+        {"target_smiles": LACTOSIDE},
+        {"target_smiles": LACTOSIDE, "product_mass_g": "0.2", "promoter": "indium-tribromide"},
+        {"target_smiles": LACTOSIDE, "product_mass_g": "60"},
+        {"target_smiles": SERINE},
     ],
-    ids=["demo", "large", "small", "by acceptor", "decyl", "refused", "short"],
+    ids=[
+        "octyl",
+        "large",
+        "small",
+        "by acceptor",
+        "decyl",
+        "refused",
+        "short",
+        "three stages",
+        "indium",
+        "three stages short",
+        "serine",
+    ],
 )
 def test_no_line_is_wider_than_the_terminal(
     changes: dict[str, Any], width: int, lab: Laboratory
@@ -62,30 +83,50 @@ def test_no_line_is_wider_than_the_terminal(
     assert too_wide(text, width) == []
 
 
-def test_every_amount_and_bottle_is_printed_whole(lab: Laboratory) -> None:
-    procedure, shelf = planned(lab)
+@pytest.mark.parametrize(("smiles", "stages"), [(OCTYL_GLUCOSIDE, 1), (LACTOSIDE, 3)])
+def test_every_amount_and_bottle_is_printed_whole(
+    smiles: str, stages: int, lab: Laboratory
+) -> None:
+    procedure, shelf = planned(lab, target_smiles=smiles)
     text = printed(procedure, shelf)
-    for charge in procedure["document"]["route"]["stages"][0]["charges"]:
-        lines = [line for line in text.splitlines() if charge["amount_text"] in line]
-        where = f"{charge['bottle']} {charge['place']}" if charge["bottle"] else "supply"
-        assert any(where in line for line in lines), charge["key"]
+    assert len(procedure["document"]["route"]["stages"]) == stages
+    for stage in procedure["document"]["route"]["stages"]:
+        for charge in stage["charges"]:
+            lines = [line for line in text.splitlines() if charge["amount_text"] in line]
+            assert any(where_from(charge) in line for line in lines), charge["key"]
     for bottle in shelf:
-        unit = "volume_ml" if bottle["measured_by"] == "volume" else "mass_mg"
         lines = [line for line in text.splitlines() if line.startswith(bottle["code"])]
-        assert any(bottle[f"usable_{unit}"] in line for line in lines), bottle["code"]
+        assert any(shelf_amount(bottle) in line for line in lines), bottle["code"]
 
 
-def test_every_step_statement_and_caution_is_printed(lab: Laboratory) -> None:
-    procedure, shelf = planned(lab)
+def where_from(charge: dict[str, Any]) -> str:
+    if charge["from_stage"]:
+        return f"stage {charge['from_stage']} "
+    return f"{charge['bottle']} {charge['place']} " if charge["bottle"] else "supply "
+
+
+def shelf_amount(bottle: dict[str, Any]) -> str:
+    """What is free, in mL or in g."""
+    if bottle["measured_by"] == "volume":
+        return f" {bottle['usable_volume_ml']} mL "
+    return f" {(Decimal(bottle['usable_mass_mg']) / 1000).normalize():f} g "
+
+
+@pytest.mark.parametrize("smiles", [OCTYL_GLUCOSIDE, LACTOSIDE], ids=["octyl", "three stages"])
+def test_every_step_statement_and_caution_is_printed(smiles: str, lab: Laboratory) -> None:
+    procedure, shelf = planned(lab, target_smiles=smiles)
     text = " ".join(printed(procedure, shelf).split())
     document = procedure["document"]
-    steps = document["route"]["stages"][0]["steps"]
-    for step in steps:
-        assert f"{step['number']}. {step['title']}. " + " ".join(step["text"].split()) in text
+    for stage in document["route"]["stages"]:
+        for step in stage["steps"]:
+            assert f"{step['number']}. {step['title']}. " + " ".join(step["text"].split()) in text
+            assert " ".join(step["watch"].split()) in text
+        assert f"{stage['expected']['mass_mg']} mg of {stage['product']['name']}" in text
     for line in (*document["route"]["why"], *document["cautions"]):
         assert " ".join(line.split()) in text
     for warning in document["route"]["warnings"]:
-        assert f"{warning['severity']}: {warning['detail']}" in text
+        assert f"{warning['severity'].upper()}: {warning['detail']}" in text
+    assert bool(document["route"]["warnings"]) is (smiles == LACTOSIDE)
     for hazard in document["hazards"]:
         for statement in hazard["hazard_statements"]:
             assert f"{statement['code']} {statement['text'].rstrip('.')}" in text
@@ -98,15 +139,15 @@ def test_every_step_statement_and_caution_is_printed(lab: Laboratory) -> None:
 def test_a_refusal_is_printed_with_its_reason(lab: Laboratory) -> None:
     procedure, shelf = planned(lab, target_smiles=ALPHA)
     text = " ".join(printed(procedure, shelf).split())
-    assert f"wrong_relation_1_2_cis: {procedure['reasons'][0]['detail']}" in text
+    assert f"Why not - {procedure['reasons'][0]['detail']}" in text
     assert "is refused" in text
 
 
 def test_a_shortage_is_printed_with_its_reason(lab: Laboratory) -> None:
     Bottle.objects.filter(code="BFE-1").update(status=Bottle.Status.QUARANTINED)
-    procedure, shelf = planned(lab)
+    procedure, shelf = planned(lab, promoter="boron-trifluoride-diethyl-etherate")
     text = " ".join(printed(procedure, shelf).split())
-    assert "Short of boron trifluoride diethyl etherate: no bottle is fit" in text
+    assert "Short, coupling: 21.72 mmol of boron trifluoride diethyl etherate; no bottle" in text
     assert "BFE-1 is quarantined" in text
 
 

@@ -114,7 +114,7 @@ def test_a_deoxy_sugar_is_described_and_not_named() -> None:
     (ring,) = rings("CO[C@H]1C[C@@H](O)[C@H](O)[C@@H](CO)O1")
     assert ring.c2_substituent == "H"
     assert ring.relation == "none"
-    assert ring.residue_key is None
+    assert ring.residue is None
 
 
 def test_an_open_anomeric_centre_is_said() -> None:
@@ -127,4 +127,4 @@ def test_an_open_anomeric_centre_is_said() -> None:
 def test_amino_sugars_are_described_by_their_nitrogen() -> None:
     (ring,) = rings(SMILES["N-Acetyl-D-glucosamine (alpha)"])
     assert (ring.c2_substituent, ring.configuration, ring.relation) == ("N", "gluco", "1,2-cis")
-    assert ring.residue_key is None
+    assert ring.residue is None

@@ -7,6 +7,7 @@ from rest_framework.response import Response
 from rest_framework.views import APIView
 
 from labplan.base import selectors
+from labplan.base.api import schema
 from labplan.base.models import Project
 from labplan.base.pagination import ByCodePagination
 from labplan.base.views import ListView
@@ -16,6 +17,7 @@ def show_project(project: Project) -> dict[str, Any]:
     return {"code": project.code, "title": project.title, "is_open": project.is_open}
 
 
+@schema.project_list
 class ProjectList(ListView):
     pagination = ByCodePagination
 
@@ -26,6 +28,7 @@ class ProjectList(ListView):
         return show_project(row)
 
 
+@schema.project_detail
 class ProjectDetail(APIView):
     def get(self, request: Any, code: str) -> Response:
         project = selectors.get_project(actor=request.user, code=code)

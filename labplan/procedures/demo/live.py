@@ -69,6 +69,9 @@ class ApiClient:
         return json.loads(self.get_text(path))
 
     def get_text(self, path: str) -> str:
+        return self.get_bytes(path).decode()
+
+    def get_bytes(self, path: str) -> bytes:
         return self._send(urllib.request.Request(self.address + path))
 
     def post(self, path: str, body: dict[str, Any]) -> Any:
@@ -92,8 +95,8 @@ class ApiClient:
             time.sleep(0.05)
         raise TimeoutError(f"{path} is still queued after {seconds:g} s")
 
-    def _send(self, request: urllib.request.Request) -> str:
+    def _send(self, request: urllib.request.Request) -> bytes:
         request.add_header("Authorization", f"Bearer {self._token}")
         with urllib.request.urlopen(request, timeout=20) as response:
-            text: str = response.read().decode()
-            return text
+            body: bytes = response.read()
+            return body

@@ -25,15 +25,13 @@ def cancel_procedure(
     claim = once or Unclaimed()
     with transaction.atomic(durable=True):
         claim.insert()
-        procedure = (
+        found = (
             Procedure.objects.select_for_update(no_key=True, of=("self",))
             .select_related("project", "document")
             .filter(code=code)
             .first()
         )
-        if procedure is None or not may(actor, "procedure.view", project_id=procedure.project_id):
-            raise NotFound(f"There is no procedure {code}.")
-        require(actor, "procedure.cancel", project_id=procedure.project_id)
+        procedure = _require_right(actor, found, code)
         check_version(procedure)
         before = procedure.state
         life.require_action(before, "cancel")
@@ -49,4 +47,16 @@ def cancel_procedure(
             before=before, after=procedure.state,
         )  # fmt: skip
         claim.remember(procedure)
+    return procedure
+
+
+def require_may_cancel(*, actor: Actor, code: str) -> None:
+    """Raise NotFound or NotAllowed like a first request; says nothing about state or version."""
+    _require_right(actor, Procedure.objects.filter(code=code).first(), code)
+
+
+def _require_right(actor: Actor, procedure: Procedure | None, code: str) -> Procedure:
+    if procedure is None or not may(actor, "procedure.view", project_id=procedure.project_id):
+        raise NotFound(f"There is no procedure {code}.")
+    require(actor, "procedure.cancel", project_id=procedure.project_id)
     return procedure

@@ -16,19 +16,27 @@ from inventory.errors import StockShort
 from inventory.services import HoldLine, hold_lines, keep_still
 from labplan.base import clock, outbox
 from labplan.base.canonical import canonical_bytes, sha256_hex
-from labplan.base.errors import DomainError
+from labplan.base.errors import DomainError, NotAllowed
 from labplan.base.events import record_event
 from labplan.base.models import Person
 from labplan.base.problems import is_lock_timeout
 from labplan.base.rights import Actor, actor_for
 from labplan.planning.values import Charge
 from labplan.procedures import life
-from labplan.procedures.engine import PlannedOn, Scale, plan_on_shelf, read_target
+from labplan.procedures.engine import PlannedOn, Scale, Wishes, plan_on_shelf, read_target
 from labplan.procedures.models import Document, Procedure
 
 MAX_ATTEMPTS = 2
 FREE_TRIES = 2
 HOLD_DAYS = 14
+
+
+class RequesterInactive(NotAllowed):
+    code = "requester_inactive"
+
+
+class ProjectClosed(NotAllowed):
+    code = "project_closed"
 
 
 @dataclass(frozen=True)
@@ -43,6 +51,7 @@ class Attempt:
     project_id: int
     smiles: str
     scale: Scale
+    wishes: Wishes
 
 
 def plan_procedure(*, procedure_id: int, message_id: int) -> None:
@@ -50,6 +59,13 @@ def plan_procedure(*, procedure_id: int, message_id: int) -> None:
     attempt = begin_attempt(procedure_id, message_id)
     if attempt is None:
         return
+    try:
+        _plan_until_settled(attempt)
+    except DomainError as error:
+        _settle_bare(attempt, life.FAILED, error.code, error.detail)
+
+
+def _plan_until_settled(attempt: Attempt) -> None:
     for _ in range(FREE_TRIES):
         planned = compute_plan(attempt)
         try:
@@ -61,9 +77,6 @@ def plan_procedure(*, procedure_id: int, message_id: int) -> None:
             if not is_lock_timeout(error):
                 raise
             continue  # somebody sits on the bottles: nothing was changed, look again
-        except DomainError as error:
-            _settle_bare(attempt, life.FAILED, error.code, error.detail)
-            return
     _settle_on_still_rows(attempt)
 
 
@@ -82,20 +95,46 @@ def begin_attempt(procedure_id: int, message_id: int) -> Attempt | None:
                 [("engine_crashed", "Planning broke off twice; tell the operator this code.")],
             )  # fmt: skip
             return None
-        person = Person.objects.get(code=procedure.requested_by)
+        try:
+            actor = _actor_behind(procedure)
+        except DomainError as error:
+            _close(procedure, life.FAILED, message_id, [(error.code, error.detail)])
+            return None
         return Attempt(
-            procedure.pk, procedure.code, procedure.attempt, message_id, actor_for(person),
+            procedure.pk, procedure.code, procedure.attempt, message_id, actor,
             procedure.project_id, procedure.target_smiles,
             Scale(_float(procedure.product_mass_mg), _float(procedure.acceptor_amount_mmol)),
+            Wishes(procedure.promoter or None, procedure.solvent or None),
         )  # fmt: skip
+
+
+def _actor_behind(procedure: Procedure) -> Actor:
+    """Who asked, with the roles of this moment.
+
+    Raises RequesterInactive or ProjectClosed: between the request and now much may have changed.
+    """
+    person = Person.objects.filter(code=procedure.requested_by, is_active=True).first()
+    if person is None:
+        raise RequesterInactive(
+            f"{procedure.requested_by}, who asked for this, is not active any more; somebody else "
+            "of the project must ask for it."
+        )
+    if not procedure.project.is_open:
+        raise ProjectClosed(
+            f"The project {procedure.project.code} was closed meanwhile; nothing is charged to it."
+        )
+    return actor_for(person)
 
 
 def compute_plan(attempt: Attempt) -> PlannedOn:
     """Snapshot and plan, outside any transaction of its own."""
     return plan_on_shelf(
-        actor=attempt.actor, target=read_target(attempt.smiles), scale=attempt.scale,
+        actor=attempt.actor,
+        target=read_target(attempt.smiles),
+        scale=attempt.scale,
+        wishes=attempt.wishes,
         as_of=clock.today(),
-    )  # fmt: skip
+    )
 
 
 def settle_plan(attempt: Attempt, planned: PlannedOn) -> None:
@@ -127,16 +166,17 @@ def _settle(attempt: Attempt, planned: PlannedOn) -> None:
     procedure = _locked(attempt.procedure_id)
     if procedure.state != life.QUEUED or procedure.attempt != attempt.number:
         return
+    actor = _actor_behind(procedure)
     state = _state_of(planned)
     if state == life.PLANNED:
         reservation = hold_lines(
-            actor=attempt.actor, project_id=attempt.project_id,
+            actor=actor, project_id=attempt.project_id,
             purpose=f"procedure {attempt.code}",
             expires_on=clock.today() + timedelta(days=HOLD_DAYS),
             lines=_hold_lines(planned),
         )  # fmt: skip
         procedure.reservation_code = reservation.code
-    procedure.document = _store_document(attempt, planned.document)
+    procedure.document = _store_document(attempt, planned.document())
     _close(procedure, state, attempt.message_id, _reasons_of(planned))
 
 
@@ -152,7 +192,7 @@ def _reasons_of(planned: PlannedOn) -> list[tuple[str, str]]:
     found = [(reason.code, reason.detail) for reason in plan.reasons]
     if plan.route is not None:
         found += [
-            ("short", f"{s.role}: {s.needed} of {s.name} needed; {s.detail}")
+            ("short", f"{s.stage}, {s.role}: {s.needed} of {s.name} needed; {s.detail}")
             for s in plan.route.shortages
         ]
     return found

@@ -14,7 +14,7 @@ from labplan.base.models import Project
 from labplan.base.rights import Actor, may, require
 from labplan.chemistry.errors import TargetProblem
 from labplan.procedures import life
-from labplan.procedures.engine import read_target
+from labplan.procedures.engine import Target, read_target
 from labplan.procedures.models import Procedure
 
 PLAN_TOPIC = "procedure.plan"
@@ -30,6 +30,8 @@ class ProcedureOrder:
     target_smiles: str
     product_mass_mg: Decimal | None = None
     acceptor_amount_mmol: Decimal | None = None
+    promoter: str = ""
+    solvent: str = ""
 
 
 def request_procedure(
@@ -40,9 +42,10 @@ def request_procedure(
     Raises InvalidValue (a structure that is no defined glycoside, an unknown project),
     NotAllowed; then nothing is stored. Safe to repeat with the same claim.
     """
-    project = _project_of(actor, order)
-    require(actor, "procedure.request", project_id=project.pk)
-    _require_readable(order.target_smiles)
+    project = require_may_request(actor=actor, project_code=order.project_code)
+    if not project.is_open:
+        raise NotAllowed(f"The project {project.code} is closed; nothing is charged to it.")
+    read_wanted_target(order.target_smiles)
     claim = once or Unclaimed()
     with transaction.atomic(durable=True):
         claim.insert()
@@ -51,6 +54,8 @@ def request_procedure(
             project=project, requested_by=actor.code, target_smiles=order.target_smiles.strip(),
             product_mass_mg=order.product_mass_mg,
             acceptor_amount_mmol=order.acceptor_amount_mmol,
+            promoter=order.promoter,
+            solvent=order.solvent,
             state=life.QUEUED, created_at=clock.now(),
         )  # fmt: skip
         outbox.enqueue(PLAN_TOPIC, {"procedure_id": procedure.pk})
@@ -62,27 +67,31 @@ def request_procedure(
     return procedure
 
 
-def _project_of(actor: Actor, order: ProcedureOrder) -> Project:
-    """A project the actor may not see is answered like one that is not there."""
-    project = Project.objects.filter(code=order.project_code).first()
+def require_may_request(*, actor: Actor, project_code: str) -> Project:
+    """The project asked for, if the actor may request procedures in it.
+
+    Raises InvalidValue for a project the actor may not see, as for one that is not there, and
+    NotAllowed.
+    """
+    project = Project.objects.filter(code=project_code).first()
     if project is None or not may(actor, "project.view", project_id=project.pk):
         raise InvalidValue(
             "Correct the fields listed in errors.",
             errors=(
                 FieldProblem(
                     "project", "unknown_project",
-                    f"There is no project {order.project_code!r} that you belong to.",
+                    f"There is no project {project_code!r} that you belong to.",
                 ),
             ),
         )  # fmt: skip
-    if not project.is_open:
-        raise NotAllowed(f"The project {project.code} is closed; nothing is charged to it.")
+    require(actor, "procedure.request", project_id=project.pk)
     return project
 
 
-def _require_readable(smiles: str) -> None:
+def read_wanted_target(smiles: str) -> Target:
+    """Read a structure that somebody typed; InvalidValue says what is wrong with it."""
     try:
-        read_target(smiles)
+        return read_target(smiles)
     except TargetProblem as problem:
         raise InvalidValue(
             problem.detail, errors=(FieldProblem("target_smiles", problem.code, problem.detail),)

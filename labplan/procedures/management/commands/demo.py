@@ -15,7 +15,7 @@ from labplan.base import clock
 from labplan.base.tokens import create_token
 from labplan.procedures.demo import scenario as demo_scenario
 from labplan.procedures.demo.live import ApiClient, running_relay, running_server
-from labplan.procedures.demo.printing import print_procedure
+from labplan.procedures.printing import print_procedure
 
 
 class Command(BaseCommand):
@@ -86,20 +86,24 @@ def _ask(console: Console, client: ApiClient, wanted: dict[str, Any]) -> dict[st
 def _bottles_used(procedure: dict[str, Any]) -> list[str]:
     route = procedure["document"]["route"]
     stages = route["stages"] if route else []
-    return [
+    used = [
         charge["bottle"]
         for stage in stages
         for charge in stage["charges"]
         if charge["group"] == "reaction" and charge["bottle"]
     ]
+    return list(dict.fromkeys(used))
 
 
 def _leave_files(console: Console, client: ApiClient, procedure: dict[str, Any]) -> None:
     sheet, answer = settings.OUT_DIR / "sheet.html", settings.OUT_DIR / "procedure.json"
     sheet.write_text(client.get_text(procedure["links"]["sheet_html"]), encoding="utf-8")
+    pdf = client.get_bytes(procedure["links"]["sheet_pdf"])
+    (settings.OUT_DIR / "sheet.pdf").write_bytes(pdf)
     answer.write_text(json.dumps(procedure, indent=1, ensure_ascii=False), encoding="utf-8")
     console.print(
-        "\nThe sheet for the hood: [bold]out/sheet.html[/]; all of it: out/procedure.json"
+        "\nThe sheet for the hood: [bold]out/sheet.pdf[/] and out/sheet.html; all of it: "
+        "out/procedure.json"
     )
 
 

@@ -1,0 +1,1 @@
+"""The kinds of stage: each sizes its charges and writes its steps."""

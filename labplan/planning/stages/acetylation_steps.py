@@ -1,0 +1,140 @@
+"""The peracetylation as numbered steps: hot salt and anhydride first, sugar in portions."""
+
+from labplan.planning.figures import mass_text
+from labplan.planning.stages.acetylation import AcetylationPlan
+from labplan.planning.steps import MAY_STAND, Writer
+from labplan.planning.values import Stage, Step
+from labplan.planning.vessels import BEAKERS_ML, funnel_ml, smallest_that_holds
+
+PORTIONS = 5
+
+
+def acetylation_steps(plan: AcetylationPlan, stage: Stage) -> tuple[Step, ...]:
+    """From the sugar to the dried crude peracetate."""
+    writer = Writer(stage.charges)
+    _prepare(writer, stage)
+    if plan.method["order"] == "hot":
+        _hot(writer, plan, stage)
+    else:
+        _in_portions(writer, plan, stage)
+    _work_up(writer, plan)
+    _dry(writer, plan, stage)
+    return tuple(writer.steps)
+
+
+def _prepare(writer: Writer, stage: Stage) -> None:
+    writer.add(
+        "Before you start",
+        "Read the supplier's safety data sheet of every bottle named here and compare codes and "
+        "labels with the table. Work in a hood with goggles and gloves; acetic anhydride burns "
+        "eyes and skin and its vapour is harmful.",
+        f"Fit a {stage.vessel_ml} mL three-necked flask with stirring bar, reflux condenser, "
+        "internal thermometer and a stopper, on a bath that can be dropped at once.",
+        watch="a bottle that differs from the table: stop and plan again",
+        pause=MAY_STAND,
+    )
+
+
+def _exotherm(stage: Stage) -> str:
+    rise = stage.adiabatic_rise_k or 0.0
+    return f"If all the heat stayed in the flask it would warm by about {rise:.0f} K."
+
+
+def _hot(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+    hours = plan.method["duration_h"]
+    writer.add(
+        "Heat anhydride and salt",
+        f"Stir {writer.text('anhydride')} with {writer.text('reagent')} and warm to "
+        f"{plan.method['temperature_c']} °C inside.",
+        uses=("anhydride", "reagent"),
+    )
+    writer.add(
+        "Add the sugar in portions",
+        f"Add {writer.text('sugar')} in at least {PORTIONS} portions, each only after the exotherm "
+        f"of the one before has fallen. {_exotherm(stage)} Never charge everything cold and heat "
+        "it.",
+        uses=("sugar",),
+        watch="inside not above 120 °C: drop the bath; the flask must reflux, not boil over",
+    )
+    writer.add(
+        "Finish the acetylation",
+        f"Keep at {plan.method['temperature_c']} °C for {hours['low']} to {hours['high']} h, until "
+        "the solution is clear and TLC (heptane/ethyl acetate 1:2, charred) shows one main spot. "
+        "Let it cool to below 50 °C.",
+        watch="brown is usual, black is not",
+    )
+
+
+def _in_portions(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+    hours = plan.method["duration_h"]
+    writer.add(
+        "Dissolve the iodine",
+        f"Stir {writer.text('reagent')} in {writer.text('anhydride')} in an ice bath.",
+        uses=("reagent", "anhydride"),
+    )
+    writer.add(
+        "Add the sugar in portions",
+        f"Add {writer.text('sugar')} in at least {PORTIONS} portions, each after the exotherm of "
+        f"the one before has fallen. {_exotherm(stage)}",
+        uses=("sugar",),
+        watch="inside not above 30 °C",
+    )
+    writer.add(
+        "Finish the acetylation",
+        f"Stir at {plan.method['temperature_c']} °C for {hours['low']} to {hours['high']} h, until "
+        "TLC (heptane/ethyl acetate 1:1, charred) shows one main spot.",
+        pause=MAY_STAND,
+    )
+
+
+def _work_up(writer: Writer, plan: AcetylationPlan) -> None:
+    ice_ml = writer.by_key["ice_water"].volume_ml or 0.0
+    beaker = smallest_that_holds(BEAKERS_ML, ice_ml * 1.5)
+    thiosulfate = ""
+    if writer.has("reducing_agent"):
+        thiosulfate = f"Stir in {writer.text('reducing_agent')} until the brown colour has gone."
+    writer.add(
+        "Hydrolyse the anhydride",
+        f"Pour the mixture slowly, below 50 °C, into {writer.text('ice_water')}, half of it ice, "
+        f"in an open, stirred {beaker} mL beaker. {thiosulfate}".strip(),
+        "Stir for 1 to 2 h until no oily drops of anhydride are left.",
+        uses=("ice_water", "reducing_agent"),
+        watch="keep it below 30 °C with more ice",
+    )
+    third = (writer.by_key["extraction_solvent"].volume_ml or 0.0) / 3
+    writer.add(
+        "Extract and wash",
+        f"Extract three times with a third each of {writer.text('extraction_solvent')} in a "
+        f"{funnel_ml(ice_ml * 1.1 + third)} mL funnel. Wash the combined organic layers with "
+        f"bicarbonate made from {writer.text('wash_base')} and {writer.text('wash_water')}, in "
+        "portions and venting often, until no more gas comes, then with brine made from "
+        f"{writer.text('brine_salt')} and {writer.text('brine_water')}.",
+        uses=("extraction_solvent", "wash_base", "wash_water", "brine_salt", "brine_water"),
+        watch="dichloromethane is the lower layer; carbon dioxide builds pressure in the funnel",
+    )
+
+
+def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+    times = int(plan.method["work_up"]["drying_times"])
+    writer.add(
+        "Dry the peracetate",
+        f"Dry over {writer.text('drying_agent')} for 15 min, filter and evaporate at 40 °C or "
+        f"below. Take it down {times} times with a share each of {writer.text('drying_solvent')}: "
+        "water or an alcohol left in it would take part in the coupling. Dry to constant mass in "
+        "vacuum.",
+        uses=("drying_agent", "drying_solvent"),
+        watch="foams in vacuum: open the pump slowly",
+        pause=MAY_STAND,
+    )
+    writer.add(
+        "Weigh, check and rescale",
+        f"Expected: {mass_text(round(stage.expected_mass_mg))} of pure {stage.product_name} "
+        f"({mass_text(round(stage.expected_low_mg))} to "
+        f"{mass_text(round(stage.expected_high_mg))}), {mass_text(round(stage.gross_mass_mg))} as "
+        f"{stage.gross_means}. Look at the anomers by NMR. What is weighed here sets every "
+        "charge of the next stage. Enter it, and the anhydride really used.",
+        "Waste: the water layers are dilute acetic acid; dichloromethane to halogenated, toluene "
+        "to non-halogenated.",
+        watch="the waste rules of your house come first",
+        pause=MAY_STAND,
+    )

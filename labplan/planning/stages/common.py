@@ -1,0 +1,85 @@
+"""What all stages share: needs for salts and solvents, expected masses, ions."""
+
+from labplan.chemistry.masses import adduct_mz
+from labplan.chemistry.reference import find_by_key
+from labplan.chemistry.structures import Structure
+from labplan.planning.figures import in_sentence
+from labplan.planning.sizing import Need
+from labplan.planning.values import Charge, Ion
+
+MOLAR_VOLUME_25C_L_PER_MOL = 24.465  # ideal gas at 25 °C and 101.325 kPa
+BICARBONATE_G_PER_MOL = 84.006
+
+
+def readable(key: str) -> str:
+    """The name of a packaged substance."""
+    packaged = find_by_key(key)
+    return in_sentence(packaged.name) if packaged else key.replace("-", " ")
+
+
+def bulk_need(
+    key: str,
+    role: str,
+    substance: str,
+    *,
+    group: str = "work-up",
+    mass_mg: float | None = None,
+    volume_ml: float | None = None,
+    outward: bool = False,
+) -> Need:
+    """A salt by mass or a solvent by volume, of any fit bottle."""
+    return Need(
+        key=key,
+        role=role,
+        group=group,
+        substances=(substance,),
+        name=readable(substance),
+        bulk_mass_mg=mass_mg,
+        bulk_volume_ml=volume_ml,
+        outward=outward,
+    )
+
+
+def water_need(key: str, role: str, volume_ml: float) -> Need:
+    """Deionised water from the laboratory's supply."""
+    return Need(
+        key=key,
+        role=role,
+        group="work-up",
+        substances=("water",),
+        name="Water, deionised",
+        bulk_volume_ml=volume_ml,
+    )
+
+
+def expected_mg(
+    amount_mmol: float, product: Structure, yields: dict[str, float]
+) -> tuple[float, float, float]:
+    """Pure product [mg] at the low, planned and high yield."""
+    theory = amount_mmol * product.molar_mass_g_per_mol
+    low, planned, high = (theory * yields[name] / 100 for name in ("low", "planned", "high"))
+    return low, planned, high
+
+
+def yield_triple(yields: dict[str, float]) -> tuple[float, float, float]:
+    return float(yields["low"]), float(yields["planned"]), float(yields["high"])
+
+
+def salt_ions(species: str, structure: Structure) -> tuple[Ion, ...]:
+    """[M+NH4]+ and [M+Na]+, which lead for acetylated sugars."""
+    return tuple(
+        Ion(species, f"[M+{adduct}]+", adduct_mz(structure.monoisotopic_mass_da, adduct))
+        for adduct in ("NH4", "Na")
+    )
+
+
+def liquid_ml(charges: list[Charge]) -> float:
+    return sum(charge.volume_ml or 0.0 for charge in charges)
+
+
+def mass_of_mg(charge: Charge) -> float:
+    """Mass of a charge, from its volume and density where it is measured."""
+    if charge.mass_mg is not None:
+        return charge.mass_mg
+    density = charge.bottle.density_g_per_ml if charge.bottle else 1.0
+    return (charge.volume_ml or 0.0) * 1000 * (density or 1.0)
