@@ -1,0 +1,1 @@
+"""The sheet one takes to the hood, from the stored document."""
