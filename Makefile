@@ -4,7 +4,7 @@ ARGS ?=
 VENV_PYTHON := .venv/bin/python
 
 .DEFAULT_GOAL := help
-.PHONY: help demo test check bench lock clean setup-run setup-test setup-dev
+.PHONY: help demo test check bench openapi lock clean setup-run setup-test setup-dev
 .NOTPARALLEL:
 MAKEFLAGS += --no-print-directory
 
@@ -23,6 +23,9 @@ check: setup-dev ## Style, types, import rules, migrations, nothing of this mach
 
 bench: setup-test ## Measure the speed of planning and of the ledger
 	@$(VENV_PYTHON) -m tests.bench $(ARGS)
+
+openapi: setup-run ## Make docs/openapi.yaml again from the code
+	@$(VENV_PYTHON) tools/make_openapi.py
 
 lock: ## Make the lock files again from pyproject.toml; ARGS=--upgrade takes new versions
 	@$(PYTHON) tools/make_locks.py $(ARGS)

@@ -18,6 +18,11 @@ CHECKS = {
     "types (mypy)": [PYTHON, "-m", "mypy"],
     "imports (lint-imports)": [str(PROGRAMS / "lint-imports")],
     "migrations are complete": [PYTHON, "manage.py", "makemigrations", "--check", "--dry-run"],
+    "OpenAPI file is current, no warnings": [
+        PYTHON,
+        str(Path("tools", "make_openapi.py")),
+        "--check",
+    ],
     "nothing of this machine in the tree": [PYTHON, str(Path("tools", "check_tree.py"))],
 }
 
@@ -45,7 +50,7 @@ def main() -> int:
         started = time.monotonic()
         passed, said = run_check(command)
         word = "ok" if passed else "FAILED"
-        print(f"{heading:<36} {word} ({time.monotonic() - started:.1f} s)", flush=True)
+        print(f"{heading:<37} {word} ({time.monotonic() - started:.1f} s)", flush=True)
         if not passed:
             failed.append(heading)
             print(said.rstrip(), flush=True)

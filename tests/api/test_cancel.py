@@ -10,6 +10,7 @@ from labplan.base.models import Event
 from labplan.procedures import life
 from labplan.procedures.models import Procedure
 from tests.api.problems import assert_problem
+from tests.api.url_map import EXPECTED
 from tests.laboratory import PROCEDURES, ApiTestClient, Laboratory, octyl_order
 
 
@@ -39,7 +40,7 @@ def test_a_queued_procedure_is_cancelled_and_never_planned(lab: Laboratory) -> N
     response = cancel(client, accepted, If_Match=accepted["ETag"])
     assert response.status_code == 200
     body = response.json()
-    assert (body["state"], body["actions"], body["reservation"]) == ("cancelled", [], None)
+    assert (body["state"], body["actions"], body["reservation"]) == ("cancelled", {}, None)
     assert lab.run_outbox() == 1
     assert client.get(accepted["Location"]).json()["state"] == "cancelled"
     assert lab.counts() == before
@@ -245,3 +246,20 @@ def test_a_cancel_without_any_body_is_enough(lab: Laboratory) -> None:
         headers={**client._headers, "Idempotency-Key": "cancel-key-2", "If-Match": "*"},
     )  # fmt: skip
     assert (response.status_code, response.json()["state"]) == (200, "cancelled")
+
+
+def test_what_may_be_done_is_told_with_its_address_and_only_what_is_served(
+    lab: Laboratory,
+) -> None:
+    client, accepted = lab.client(), queued(lab)
+    path = accepted["Location"]
+    assert accepted.json()["actions"] == {"cancel": path + "cancel/"}
+    lab.run_outbox()
+    shown = client.get(path)
+    served = {name.removeprefix("procedure-") for name in EXPECTED}
+    assert "cancel" in served
+    assert set(shown.json()["actions"]) == {"approve", "cancel"} & served
+    told = client.post(shown.json()["actions"]["cancel"], If_Match=shown["ETag"])
+    assert (told.status_code, told.json()["actions"]) == (200, {})
+    again = assert_problem(client.post(path + "cancel/", If_Match="*"), 409, "state_forbids")
+    assert again["detail"].endswith("possible: nothing any more.")

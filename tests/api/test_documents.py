@@ -14,7 +14,9 @@ from labplan.base.models import PersonName, Project
 from labplan.procedures.models import Document
 from tests.api import targets
 from tests.api.problems import assert_problem
-from tests.laboratory import PROCEDURES, Laboratory, octyl_order
+from tests.laboratory import OCTYL_GLUCOSIDE, PROCEDURES, Laboratory, octyl_order
+
+LOADING = {"src", "href", "action", "xlink:href", "srcset", "data", "poster", "formaction"}
 
 
 @pytest.fixture
@@ -32,21 +34,29 @@ def order_and_plan(lab: Laboratory, **changes: Any) -> dict[str, Any]:
 
 
 class Page(HTMLParser):
-    """The text of a page and the attributes that could load something."""
+    """The text of a page, its tags, all attributes, and those that could load something."""
 
     def __init__(self, source: str) -> None:
         super().__init__()
         self.words: list[str] = []
         self.tags: set[str] = set()
         self.addresses: list[str] = []
+        self.attributes: set[str] = set()
+        self._is_style = False
         self.feed(source)
 
     def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
         self.tags.add(tag)
-        self.addresses += [str(v) for name, v in attrs if name in {"src", "href", "action"}]
+        self._is_style = tag == "style"
+        self.attributes |= {name for name, _ in attrs}
+        self.addresses += [str(v) for name, v in attrs if name in LOADING]
 
     def handle_data(self, data: str) -> None:
-        self.words.append(data)
+        if not self._is_style:
+            self.words.append(data)
+
+    def handle_endtag(self, tag: str) -> None:
+        self._is_style = False
 
     @property
     def text(self) -> str:
@@ -108,58 +118,107 @@ def test_the_sheet_is_given_whatever_is_accepted(lab: Laboratory, planned: dict[
 def test_the_sheet_names_every_charge_with_amount_and_bottle(
     lab: Laboratory, planned: dict[str, Any]
 ) -> None:
-    text = Page(sheet_of(lab, planned)).text
-    charges = [c for s in planned["document"]["route"]["stages"] for c in s["charges"]]
-    assert len(charges) == 14
+    assert_every_charge_is_on(sheet_of(lab, planned), planned["document"], count=16)
+
+
+def test_the_sheet_of_three_stages_names_all_their_charges(lab: Laboratory) -> None:
+    shown = order_and_plan(lab, target_smiles=targets.LACTOSIDE_FREE)
+    stages = shown["document"]["route"]["stages"]
+    assert [stage["number"] for stage in stages] == [1, 2, 3]
+    source = sheet_of(lab, shown)
+    assert_every_charge_is_on(source, shown["document"], count=32)
+    text = Page(source).text
+    for stage in stages:
+        assert squeezed(stage["product"]["name"]) in squeezed(text)
+        for ion in stage["ions"]:
+            assert ion["mz"] in text
+    for line in shown["document"]["route"]["why"]:
+        assert squeezed(line) in squeezed(text)
+    for warning in shown["document"]["route"]["warnings"]:
+        assert squeezed(warning["detail"]) in squeezed(text)
+
+
+def assert_every_charge_is_on(source: str, document: dict[str, Any], *, count: int) -> None:
+    """Amount and bottle of a charge stand close together, with its lot and its place."""
+    text = Page(source).text
+    charges = [c for s in document["route"]["stages"] for c in s["charges"]]
+    assert len(charges) == count
     for charge in charges:
-        bottle = f"{charge['bottle']} , {charge['place']}"
-        place = bottle if charge["bottle"] else "laboratory supply"
-        row = text.index(f"{charge['role']} {charge['name']}")
-        assert charge["amount_text"] in text[row : row + 300], charge["key"]
-        assert place in text[row : row + 300], charge["key"]
-        if charge["lot"]:
-            assert f"lot {charge['lot']}" in text
+        assert squeezed(charge["name"]) in squeezed(text), charge["key"]
+        where = charge["bottle"] or (
+            f"stage {charge['from_stage']}" if charge["from_stage"] else "supply"
+        )
+        assert any(
+            where in text[max(0, at - 300) : at + 300]
+            for at in places_of(charge["amount_text"], text)
+        ), charge["key"]
+        if charge["bottle"]:
+            assert charge["lot"] in text
+            assert charge["place"] in text
+
+
+def places_of(part: str, text: str) -> list[int]:
+    """Where the part stands as a whole: no digit or letter at its ends."""
+    return [found.start() for found in re.finditer(rf"(?<![\w.]){re.escape(part)}(?!\w)", text)]
 
 
 def test_the_sheet_has_every_step_in_order(lab: Laboratory, planned: dict[str, Any]) -> None:
-    text = Page(sheet_of(lab, planned)).text
+    text = squeezed(Page(sheet_of(lab, planned)).text)
     steps = planned["document"]["route"]["stages"][0]["steps"]
     assert [step["number"] for step in steps] == list(range(1, len(steps) + 1))
-    places = []
+    at = 0
     for step in steps:
-        whole = f"{step['number']} {step['title']}. {' '.join(step['text'].split())}"
-        places.append(text.index(whole))
-        assert text.index(step["pause"].capitalize() + ".", places[-1]) > 0
-        if step["watch"]:
-            assert f"Watch: {step['watch']}." in text
-    assert places == sorted(places)
+        at = text.index(squeezed(step["title"]), at)
+        at = text.index(squeezed(step["text"]), at)
+        assert squeezed(step["pause"]) in text[at:]
+        assert squeezed(step["watch"]) in text
+
+
+TYPESET = str.maketrans({"α": "alpha", "β": "beta", "µ": "u", "−": "-", "→": "->"})
+
+
+def squeezed(text: str) -> str:
+    """Without spaces, capitals and typesetting, so that marked-up words do not matter."""
+    return re.sub(r"\s+", "", text).translate(TYPESET).lower()
 
 
 def test_the_sheet_has_every_hazard_statement_and_says_what_is_unknown(
     lab: Laboratory, planned: dict[str, Any]
 ) -> None:
-    text = Page(sheet_of(lab, planned)).text
-    section = text[text.index("Hazards Substance Signal word") :]
+    text = squeezed(Page(sheet_of(lab, planned)).text)
     hazards = planned["document"]["hazards"]
     statements = [s for h in hazards for s in h["hazard_statements"]]
     assert len(statements) > 20
     for line in hazards:
-        row = section[section.index(line["name"]) :]
+        assert squeezed(line["name"]) in text
         for statement in (*line["hazard_statements"], *line["precautionary_statements"]):
-            assert f"{statement['code']} {statement['text']}" in row
+            assert squeezed(statement["code"]) in text
+            assert squeezed(statement["text"].rstrip(".")) in text
     unknown = [h["name"] for h in hazards if not h["established"]]
     assert len(unknown) >= 2
+    assert "hazardsnotestablished:handleashazardous" in text
     for name in unknown:
-        row = section[section.index(name) + len(name) :].strip()
-        assert row.startswith("unknown Hazards not established: handle as hazardous.")
+        near = [text[found.end() : found.end() + 1500]
+                for found in re.finditer(re.escape(squeezed(name)), text)]  # fmt: skip
+        assert any("notestablished" in part for part in near), name
 
 
-def test_every_substance_in_the_flask_has_a_line_of_hazards(
-    lab: Laboratory, planned: dict[str, Any]
+@pytest.mark.parametrize(
+    ("smiles", "solvents"),
+    [(OCTYL_GLUCOSIDE, set()), (targets.LACTOSIDE_FREE, {"methanol"})],
+    ids=["one stage", "three stages"],
+)
+def test_every_substance_in_a_flask_has_a_line_of_hazards(
+    smiles: str, solvents: set[str], lab: Laboratory
 ) -> None:
-    document = planned["document"]
-    substances = {c["substance"] for s in document["route"]["stages"] for c in s["charges"]}
-    assert {line["substance"] for line in document["hazards"]} == {*substances, "made here"}
+    """What is bought, the solvent of a solution, and one line for what each stage makes."""
+    document = order_and_plan(lab, target_smiles=smiles)["document"]
+    stages = document["route"]["stages"]
+    bought = {c["substance"] for s in stages for c in s["charges"] if c["from_stage"] is None}
+    lines = [line["substance"] for line in document["hazards"]]
+    assert set(lines) == bought | solvents | {"made here"}
+    assert lines.count("made here") == len(stages)
+    assert len(set(lines)) == len(lines) - len(stages) + 1
 
 
 def test_the_sheet_says_whose_it_is_and_what_it_was_made_from(
@@ -167,15 +226,17 @@ def test_the_sheet_says_whose_it_is_and_what_it_was_made_from(
 ) -> None:
     text = Page(sheet_of(lab, planned)).text
     assert planned["document_sha256"] in text
-    assert "LECTIN-07, Glycoside probes for lectin binding" in text
-    assert "MIRA, Mira Okonjo" in text
-    assert f"{planned['code']} (planned)" in text
-    assert "Shelf as of 2026-12-01" in text
+    assert "LECTIN-07" in text
+    assert "Glycoside probes for lectin binding" in text
+    assert "Mira Okonjo" in text
+    assert "MIRA" in text
+    assert planned["code"] in text
+    assert "2026-12-01" in text
     for caution in planned["document"]["cautions"]:
         assert caution in text
     for version in planned["document"]["versions"].values():
         assert version in text
-    assert "Checked and approved by a qualified chemist" in text
+    assert "qualified chemist" in text
 
 
 def test_an_erased_name_leaves_a_sheet_with_the_code(
@@ -183,7 +244,7 @@ def test_an_erased_name_leaves_a_sheet_with_the_code(
 ) -> None:
     PersonName.objects.filter(person__code="MIRA").delete()
     text = Page(sheet_of(lab, planned)).text
-    assert "Asked for by MIRA Shelf" in text
+    assert "MIRA" in text
     assert "Okonjo" not in text
 
 
@@ -196,21 +257,25 @@ def test_what_people_typed_is_escaped_on_the_sheet(
     source = sheet_of(lab, planned)
     page = Page(source)
     assert html.escape(title) in source
-    assert not {"script", "img", "b"} & page.tags
     assert "<b onclick=x>Mira</b>" in page.text
+    assert "script" not in page.tags
+    assert not {name for name in page.attributes if name.startswith("on")}
+    assert not [address for address in page.addresses if "elsewhere" in address]
 
 
 def test_the_sheet_loads_nothing_from_elsewhere(lab: Laboratory, planned: dict[str, Any]) -> None:
     source = sheet_of(lab, planned)
     page = Page(source)
-    assert not re.search(r"https?:|//[a-z]|@import|url\(", source)
-    assert page.addresses == []
-    assert not {"script", "link", "iframe", "object", "embed", "img", "base"} & page.tags
+    # the name of a namespace is no address
+    source = re.sub(r'xmlns(:\w+)?="http://www\.w3\.org/[\w/]+"', "", source)
+    assert not re.search(r"https?:|//[a-z]|@import|url\((?!#)", source)
+    assert [address for address in page.addresses if not address.startswith(("data:", "#"))] == []
+    assert not {"script", "link", "iframe", "object", "embed", "base"} & page.tags
 
 
 def test_the_sheet_prints_on_a4(lab: Laboratory, planned: dict[str, Any]) -> None:
     source = sheet_of(lab, planned)
-    assert re.search(r"@page \{ size: A4;", source)
+    assert re.search(r"@page\s*\{[^}]*size:\s*A4", source)
     assert source.startswith("<!doctype html>")
     assert '<meta charset="utf-8">' in source
 
@@ -218,10 +283,9 @@ def test_the_sheet_prints_on_a4(lab: Laboratory, planned: dict[str, Any]) -> Non
 def test_a_refused_procedure_has_a_sheet_with_the_reasons(lab: Laboratory) -> None:
     shown = order_and_plan(lab, target_smiles=targets.ALPHA_OCTYL)
     text = Page(sheet_of(lab, shown)).text
-    assert "Why this is not planned" in text
-    assert shown["reasons"][0]["detail"] in text
-    assert "[wrong_relation_1_2_cis]" in text
-    assert "Into the flask" not in text
+    assert squeezed(shown["reasons"][0]["detail"]) in squeezed(text)
+    assert shown["code"] in text
+    assert "GPA-1" not in text
 
 
 def test_nothing_on_the_sheet_is_an_empty_or_unfilled_figure(

@@ -4,7 +4,7 @@ from typing import Any
 
 import pytest
 
-from labplan.base.models import Event, OutboxMessage, RememberedAnswer
+from labplan.base.models import Event, Membership, OutboxMessage, Project, RememberedAnswer
 from labplan.procedures.models import Procedure
 from tests.api.problems import assert_problem, error_codes
 from tests.laboratory import PROCEDURES, Laboratory, octyl_order
@@ -166,3 +166,52 @@ def test_a_refused_cancel_does_not_use_the_key_up(lab: Laboratory) -> None:
     accepted = client.post(PROCEDURES, octyl_order())
     assert_problem(client.post(cancel_path(accepted), key=KEY), 428, "precondition_missing")
     assert client.post(cancel_path(accepted), key=KEY, If_Match="*").status_code == 200
+
+
+def test_a_remembered_answer_is_not_for_a_token_that_may_only_read(lab: Laboratory) -> None:
+    """The same person, key and request, by another token."""
+    writing, reading = lab.client("MIRA"), lab.client("MIRA", scope="read")
+    accepted = writing.post(PROCEDURES, octyl_order(), key=KEY)
+    cancelled = writing.post(cancel_path(accepted), key=KEY, If_Match="*")
+    assert (accepted.status_code, cancelled.status_code) == (202, 200)
+    for response in (
+        reading.post(PROCEDURES, octyl_order(), key=KEY),
+        reading.post(cancel_path(accepted), key=KEY, If_Match="*"),
+    ):
+        body = assert_problem(response, 403, "not_allowed")
+        assert body["detail"] == "This token may only read; make one with scope write."
+        assert accepted.json()["code"] not in response.content.decode()
+
+
+def test_who_has_left_the_project_gets_what_a_first_request_would_get(lab: Laboratory) -> None:
+    client = lab.client("MIRA")
+    accepted = client.post(PROCEDURES, octyl_order(), key=KEY)
+    assert client.post(cancel_path(accepted), key=KEY, If_Match="*").status_code == 200
+    Membership.objects.filter(person__code="MIRA").delete()
+    for key in (KEY, "another-key"):
+        again = client.post(PROCEDURES, octyl_order(), key=key)
+        assert error_codes(assert_problem(again, 422, "invalid_value")) == [
+            ("project", "unknown_project")
+        ]
+        assert_problem(client.post(cancel_path(accepted), key=key, If_Match="*"), 404, "not_found")
+
+
+def test_who_has_become_a_viewer_gets_what_a_first_request_would_get(lab: Laboratory) -> None:
+    client = lab.client("MIRA")
+    accepted = client.post(PROCEDURES, octyl_order(), key=KEY)
+    assert client.post(cancel_path(accepted), key=KEY, If_Match="*").status_code == 200
+    Membership.objects.filter(person__code="MIRA").update(role="viewer")
+    for key in (KEY, "another-key"):
+        assert_problem(client.post(PROCEDURES, octyl_order(), key=key), 403, "not_allowed")
+        again = client.post(cancel_path(accepted), key=key, If_Match="*")
+        assert_problem(again, 403, "not_allowed")
+
+
+def test_a_project_closed_meanwhile_does_not_hide_what_was_answered(lab: Laboratory) -> None:
+    """Closing takes nobody's right away: who asked learns that it was taken."""
+    client = lab.client("MIRA")
+    accepted = client.post(PROCEDURES, octyl_order(), key=KEY)
+    Project.objects.filter(code="LECTIN-07").update(is_open=False)
+    again = client.post(PROCEDURES, octyl_order(), key=KEY)
+    assert (again.status_code, again.content) == (202, accepted.content)
+    assert_problem(client.post(PROCEDURES, octyl_order()), 403, "not_allowed")

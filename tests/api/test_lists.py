@@ -228,10 +228,23 @@ def test_the_book_of_a_bottle_starts_with_its_newest_line(lab: Laboratory) -> No
     assert [line["held_change_mass_mg"] for line in lines] == ["-2854", "2854", "0"]
     assert [line["on_hand_after_mass_mg"] for line in lines] == ["100000"] * 3
     assert [line["actor"] for line in lines] == ["MIRA", "MIRA", "JONAS"]
-    assert lines[1]["entered"] == "2854 mg"
+    assert [line["entered"] for line in lines] == ["2854 mg", "2854 mg", "100 g"]
     assert lines[1]["amount_mmol"] == "7.23844"
-    assert lines[2]["entered"] == "100 g"
     assert {line["booked_on"] for line in lines} == {"2026-12-01"}
+
+
+def test_what_is_measured_is_given_back_in_the_unit_it_was_held_in(lab: Laboratory) -> None:
+    client = lab.client()
+    accepted = client.post(PROCEDURES, octyl_order())
+    lab.run_outbox()
+    client.post(accepted["Location"] + "cancel/", If_Match="*")
+    (page,) = walk(lab.client("JONAS"), BOTTLES + "DCM-1/movements/?page_size=50")
+    entered: dict[str, list[str]] = {"release": [], "hold": []}
+    for line in page:
+        entered.setdefault(line["kind"], []).append(line["entered"])
+    assert sorted(entered["release"]) == sorted(entered["hold"])
+    assert all(text.endswith(" mL") for text in entered["release"])
+    assert len(entered["release"]) > 0
 
 
 def test_amounts_are_plain_decimals_with_the_unit_in_the_name(lab: Laboratory) -> None:
@@ -281,3 +294,29 @@ def test_the_shelf_of_the_api_is_the_delivery_note(lab: Laboratory) -> None:
             assert row["lot"] == sent["lot"]
             assert row["status"] == (sent["status"] or "usable")
             assert row["expires_on"] == (sent["expires_on"] or None)
+
+
+@pytest.mark.parametrize(
+    ("path", "field", "named"),
+    [
+        (PROCEDURES + "?state=plannd", "state", "queued, planned, refused, short"),
+        (PROCEDURES + "?state=", "state", "queued, planned"),
+        (PROCEDURES + "?state=PLANNED&project=LECTIN-07", "state", "queued, planned"),
+        (BOTTLES + "?status=ok", "status", "usable, quarantined, disposed"),
+        (BOTTLES + "?status=usable%20", "status", "usable, quarantined, disposed"),
+    ],
+)
+def test_a_state_that_does_not_exist_is_refused_and_those_that_do_are_named(
+    path: str, field: str, named: str, lab: Laboratory
+) -> None:
+    body = assert_problem(lab.client().get(path), 422, "invalid_value")
+    (line,) = body["errors"]
+    assert (line["field"], line["code"]) == (field, "unknown_value")
+    assert line["detail"].startswith(f"{field} is one of: {named}")
+    assert body["detail"] == line["detail"]
+
+
+def test_a_format_is_an_unknown_parameter_like_any_other(lab: Laboratory) -> None:
+    for value in ("json", "html"):
+        body = assert_problem(lab.client().get(f"{BOTTLES}?format={value}"), 400, "unknown_field")
+        assert "format" in body["detail"]

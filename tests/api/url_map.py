@@ -16,7 +16,8 @@ READS = ("GET", "HEAD", "OPTIONS")
 class Expected:
     """What a route serves, and what a person without a project there sees of it.
 
-    `sees`: "stock" (the same as everybody), "nothing" (an empty list), "hidden" (404).
+    `sees`: "stock" (the same as everybody), "nothing" (an empty list), "hidden" (404), "public"
+    (holds no data of the laboratory: the same for everybody, also without a token).
     """
 
     sees: str
@@ -24,10 +25,14 @@ class Expected:
     methods: tuple[str, ...] = READS
     # of a POST by somebody without a project
     post_status: int | None = None
+    # a POST that only looks may be sent with a token of scope read
+    post_only_looks: bool = False
 
 
 # A route that is not in here fails test_rights_walk: say who may see it before it is served.
 EXPECTED: dict[str, Expected] = {
+    "openapi-document": Expected("public"),
+    "documentation-page": Expected("public"),
     "project-list": Expected("nothing"),
     "project-detail": Expected("hidden", ("project",)),
     "substance-list": Expected("stock"),
@@ -38,10 +43,12 @@ EXPECTED: dict[str, Expected] = {
     "place-list": Expected("stock"),
     "reservation-list": Expected("nothing"),
     "reservation-detail": Expected("hidden", ("reservation",)),
+    "route-preview": Expected("stock", (), ("POST", "OPTIONS"), 200, post_only_looks=True),
     "procedure-list": Expected("nothing", (), (*READS, "POST"), 422),
     "procedure-detail": Expected("hidden", ("procedure",)),
     "procedure-document": Expected("hidden", ("procedure",)),
     "procedure-sheet-html": Expected("hidden", ("procedure",)),
+    "procedure-sheet-pdf": Expected("hidden", ("procedure",)),
     "procedure-cancel": Expected("hidden", ("procedure",), ("POST", "OPTIONS"), 404),
 }
 

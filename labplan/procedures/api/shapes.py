@@ -1,9 +1,10 @@
 """A procedure as JSON."""
 
 import json
+from contextlib import suppress
 from typing import Any
 
-from django.urls import reverse
+from django.urls import NoReverseMatch, reverse
 
 from labplan.base.preconditions import etag_of
 from labplan.procedures import life
@@ -18,7 +19,7 @@ def show_summary(procedure: Procedure) -> dict[str, Any]:
     """State and links, without the document."""
     links = {
         name: reverse(f"procedure-{name.replace('_', '-')}", args=[procedure.code])
-        for name in ("detail", "document", "sheet_html")
+        for name in ("detail", "document", "sheet_html", "sheet_pdf")
     }
     has_document = procedure.document_id is not None
     mass, mmol = procedure.product_mass_mg, procedure.acceptor_amount_mmol
@@ -29,8 +30,10 @@ def show_summary(procedure: Procedure) -> dict[str, Any]:
         "target_smiles": procedure.target_smiles,
         "product_mass_g": f"{(mass / 1000).normalize():f}" if mass is not None else None,
         "acceptor_amount_mmol": f"{mmol.normalize():f}" if mmol is not None else None,
+        "promoter": procedure.promoter or None,
+        "solvent": procedure.solvent or None,
         "state": procedure.state,
-        "actions": list(life.actions_in(procedure.state)),
+        "actions": _actions(procedure),
         "reasons": json.loads(procedure.reasons),
         "reservation": str(procedure.reservation_code) if procedure.reservation_code else None,
         "created_at": procedure.created_at.isoformat(),
@@ -40,8 +43,18 @@ def show_summary(procedure: Procedure) -> dict[str, Any]:
             "self": links["detail"],
             "document": links["document"] if has_document else None,
             "sheet_html": links["sheet_html"] if has_document else None,
+            "sheet_pdf": links["sheet_pdf"] if has_document else None,
         },
     }
+
+
+def _actions(procedure: Procedure) -> dict[str, str]:
+    """What a person may do now -> where to POST it, as far as it is served."""
+    found = {}
+    for action in life.actions_in(procedure.state):
+        with suppress(NoReverseMatch):
+            found[action] = reverse(f"procedure-{action}", args=[procedure.code])
+    return found
 
 
 def show_detail(procedure: Procedure) -> dict[str, Any]:

@@ -1,5 +1,6 @@
 """Procedures over HTTP."""
 
+import hashlib
 from functools import partial
 from typing import Any
 
@@ -8,20 +9,32 @@ from django.http import HttpResponse
 from rest_framework.response import Response
 from rest_framework.views import APIView
 
-from labplan.base.errors import NotFound
-from labplan.base.fields import StrictSerializer
+from labplan.base.errors import FieldProblem, InvalidValue, NotFound
+from labplan.base.fields import StrictSerializer, require_known_parameters
 from labplan.base.idempotency import answer_once, claim_from
 from labplan.base.preconditions import is_known, require_match
 from labplan.base.views import ListView
-from labplan.procedures import selectors, services
-from labplan.procedures.api import shapes
-from labplan.procedures.api.orders import read_order
+from labplan.procedures import life, selectors, services
+from labplan.procedures.api import schema, shapes
+from labplan.procedures.api.orders import read_order, read_preview
 from labplan.procedures.models import Document, Procedure
-from labplan.procedures.sheet import sheet_html
+from labplan.procedures.sheet.html import sheet_html
+from labplan.procedures.sheet.of_procedure import view_of
+from labplan.procedures.sheet.pdf import PAPERS, sheet_pdf
 
 
+@schema.route_preview
+class RoutePreview(APIView):
+    """Moves nothing, so that it needs neither a key nor a token of scope write."""
+
+    def post(self, request: Any) -> Response:
+        return Response(services.preview_routes(actor=request.user, **read_preview(request.data)))
+
+
+@schema.procedure_list
 class ProcedureList(ListView):
     filters = {"project", "state"}
+    choices = {"state": life.STATES}
 
     def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Procedure]:
         return selectors.list_procedures(actor=request.user, **wanted)
@@ -33,8 +46,14 @@ class ProcedureList(ListView):
         order = read_order(request.data)
         claim = claim_from(request, route="procedure.request", render=_accepted)
         return answer_once(
-            claim, partial(services.request_procedure, actor=request.user, order=order, once=claim)
-        )
+            claim,
+            check_rights=partial(
+                services.require_may_request, actor=request.user, project_code=order.project_code
+            ),
+            work=partial(
+                services.request_procedure, actor=request.user, order=order, once=claim
+            ),
+        )  # fmt: skip
 
 
 def _accepted(procedure: Procedure) -> Response:
@@ -45,6 +64,7 @@ def _accepted(procedure: Procedure) -> Response:
     return Response(body, status=202, headers=headers)
 
 
+@schema.procedure_detail
 class ProcedureDetail(APIView):
     def get(self, request: Any, code: str) -> Response:
         procedure = selectors.get_procedure(actor=request.user, code=code)
@@ -54,6 +74,7 @@ class ProcedureDetail(APIView):
         return Response(shapes.show_detail(procedure), headers=headers)
 
 
+@schema.procedure_document
 class ProcedureDocument(APIView):
     """The canonical bytes as stored; their SHA-256 is the ETag."""
 
@@ -67,6 +88,7 @@ class ProcedureDocument(APIView):
         )
 
 
+@schema.procedure_sheet_html
 class ProcedureSheetHtml(APIView):
     def perform_content_negotiation(self, request: Any, force: bool = False) -> Any:
         """The sheet is HTML and its refusals are problems, whatever Accept asks for."""
@@ -75,7 +97,35 @@ class ProcedureSheetHtml(APIView):
     def get(self, request: Any, code: str) -> HttpResponse:
         procedure = selectors.get_procedure(actor=request.user, code=code)
         _document(request, code)
-        return HttpResponse(sheet_html(procedure))
+        return HttpResponse(sheet_html(view_of(procedure)))
+
+
+@schema.procedure_sheet_pdf
+class ProcedureSheetPdf(APIView):
+    """The sheet for a printer. The same state, document and paper give the same bytes."""
+
+    def perform_content_negotiation(self, request: Any, force: bool = False) -> Any:
+        """The sheet is a PDF and its refusals are problems, whatever Accept asks for."""
+        return super().perform_content_negotiation(request, force=True)
+
+    def get(self, request: Any, code: str) -> HttpResponse:
+        require_known_parameters(request, {"paper"})
+        paper = _paper(request)
+        _document(request, code)
+        pdf = sheet_pdf(view_of(selectors.get_procedure(actor=request.user, code=code)), paper)
+        etag = f'"{hashlib.sha256(pdf).hexdigest()}"'
+        if is_known(request, etag):
+            return HttpResponse(status=304, headers={"ETag": etag})
+        headers = {"ETag": etag, "Content-Disposition": f'inline; filename="{code}-{paper}.pdf"'}
+        return HttpResponse(pdf, content_type="application/pdf", headers=headers)
+
+
+def _paper(request: Any) -> str:
+    paper: str = request.query_params.get("paper", "a4")
+    if paper not in PAPERS:
+        detail = f"Give one of: {', '.join(sorted(PAPERS))}."
+        raise InvalidValue(detail, errors=(FieldProblem("paper", "unknown_paper", detail),))
+    return paper
 
 
 def _document(request: Any, code: str) -> Document:
@@ -85,13 +135,15 @@ def _document(request: Any, code: str) -> Document:
     return procedure.document
 
 
+@schema.procedure_cancel
 class ProcedureCancel(APIView):
     def post(self, request: Any, code: str) -> Response:
         StrictSerializer(data=request.data).read()
         claim = claim_from(request, route="procedure.cancel", render=_shown)
         return answer_once(
             claim,
-            partial(
+            check_rights=partial(services.require_may_cancel, actor=request.user, code=code),
+            work=partial(
                 services.cancel_procedure, actor=request.user, code=code, once=claim,
                 check_version=lambda procedure: require_match(request, shapes.etag(procedure)),
             ),
