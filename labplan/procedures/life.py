@@ -24,11 +24,16 @@ TRANSITIONS: dict[tuple[str, str], frozenset[str]] = {
     (RUNNING, "abandon"): frozenset({ABANDONED}),
 }
 ACTIONS = tuple(sorted({action for _, action in TRANSITIONS}))
+# What labplan does by itself; all others are for people.
+OWN_ACTIONS = frozenset({"plan", "lapse"})
 SETTLED = frozenset(STATES) - {QUEUED}
 
 
 def actions_in(state: str) -> tuple[str, ...]:
-    return tuple(action for action in ACTIONS if (state, action) in TRANSITIONS)
+    """What a person may do in this state."""
+    return tuple(
+        action for action in ACTIONS if action not in OWN_ACTIONS and (state, action) in TRANSITIONS
+    )
 
 
 def require_action(state: str, action: str) -> frozenset[str]:
