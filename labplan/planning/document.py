@@ -11,7 +11,6 @@ from typing import Any
 
 from labplan import datafiles
 from labplan.chemistry.coupling import Target
-from labplan.chemistry.drawing import draw
 from labplan.chemistry.structures import Structure, rdkit_version
 from labplan.planning.methods import method_row
 from labplan.planning.plan import Plan
@@ -98,6 +97,9 @@ def _structure(structure: Structure) -> dict[str, Any]:
 
 def _drawings(plan: Plan) -> list[dict[str, Any]]:
     """The scheme, one SVG a structure and all at one scale; of what is refused the target alone."""
+    # Loaded with the first document: a preview draws nothing and need not carry it.
+    from labplan.chemistry.drawing import draw
+
     target = plan.target
     parts = {"target": target.structure}
     if plan.route is not None:

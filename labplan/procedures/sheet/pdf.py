@@ -11,8 +11,6 @@ from functools import cache
 from pathlib import Path
 from typing import Any
 
-import typst
-
 from labplan.procedures.sheet.pictograms import PICTOGRAMS
 from labplan.procedures.sheet.typography import Rich
 
@@ -48,7 +46,10 @@ def sheet_pdf(view: dict[str, Any], paper: str = "a4") -> bytes:
 
 
 @cache
-def _compiler() -> typst.Compiler:
+def _compiler() -> Any:
+    # Loaded with the first PDF: most web processes and all workers never make one.
+    import typst
+
     return typst.Compiler(str(_TEMPLATE), root=str(_TEMPLATE.parent), ignore_system_fonts=True)
 
 
