@@ -78,6 +78,8 @@ class Form(models.Model):
     solution_temperature_c = models.DecimalField(max_digits=5, decimal_places=1, null=True)
     # the share that reacts, for a mix of anomers
     active_share_pct = models.DecimalField(max_digits=6, decimal_places=3, null=True)
+    # where the form has a number of its own, as a hydrate does
+    cas = models.CharField(max_length=12, blank=True)
     label = models.CharField(max_length=120)
 
     class Meta:

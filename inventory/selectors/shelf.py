@@ -90,7 +90,8 @@ def _on_shelf(bottle: Bottle, readings: Readings) -> BottleOnShelf:
     water = readings.get((bottle.pk, Reading.Kind.WATER_PPM))
     activation = readings.get((bottle.pk, Reading.Kind.ACTIVATION_C))
     return BottleOnShelf(
-        code=bottle.code, substance=substance.code, name=substance.name, cas=substance.cas,
+        code=bottle.code, substance=substance.code, name=substance.name,
+        cas=bottle.form.cas or substance.cas,
         smiles=substance.smiles,
         inchikey=substance.inchikey, content=content_of(bottle), form_label=bottle.form.label,
         measured_by=bottle.measured_by, on_hand=balance.on_hand, held=balance.held,

@@ -54,6 +54,8 @@ def read_receipt(
     substance = finder.find(row)
     if substance is not None:
         _check_strength(row, substance)
+        if row.text("cas") != substance.cas:
+            form["cas"] = row.text("cas")
     if len(row.errors.found) > before or substance is None or place is None:
         return None
     return BottleReceipt(

@@ -42,17 +42,18 @@ def mass_fraction(content: Content) -> float:
     share = _assay_fraction(content)
     if content.form == "hydrate" and content.assay_of != "anhydrous":
         # The assay is of the hydrate as weighed: count its water once, here.
-        hydrate = _hydrate_molar_mass(content)
+        hydrate = weighed_molar_mass(content)
         share *= content.molar_mass_g_per_mol / hydrate
     if content.form == "hydrate" and content.assay_of == "anhydrous":
         water = content.hydrate_water * WATER_MOLAR_MASS_G_PER_MOL
-        share *= 1 - water / _hydrate_molar_mass(content)
+        share *= 1 - water / weighed_molar_mass(content)
     if content.active_share_pct is not None:
         share *= content.active_share_pct / 100
     return share
 
 
-def _hydrate_molar_mass(content: Content) -> float:
+def weighed_molar_mass(content: Content) -> float:
+    """Molar mass [g/mol] of what is weighed: the hydrate's where it is one."""
     return content.molar_mass_g_per_mol + content.hydrate_water * WATER_MOLAR_MASS_G_PER_MOL
 
 

@@ -10,13 +10,14 @@ from decimal import ROUND_HALF_UP, Decimal
 from typing import Any
 
 from labplan import datafiles
+from labplan.chemistry.amounts import weighed_molar_mass
 from labplan.chemistry.coupling import Target
 from labplan.chemistry.structures import Structure, rdkit_version
 from labplan.planning.methods import method_row
 from labplan.planning.plan import Plan
 from labplan.planning.steps import amount_text, name_text
 from labplan.planning.values import Charge, Expectations, Ion, Quench, Route, Stage, Water
-from labplan.safety.hazards import Hazards, hazards_of
+from labplan.safety.hazards import Hazards, hazards_of, solution_key
 
 ENGINE_VERSION = "0.2.0"
 FORMAT = "labplan-procedure-1"
@@ -198,7 +199,7 @@ def _charge(charge: Charge) -> dict[str, Any]:
         "amount_text": amount_text(charge),
         "assay": charge.assay_note or None,
         "density_g_per_ml": number(bottle.density_g_per_ml, 4) if bottle else None,
-        "molar_mass_g_per_mol": number(bottle.content.molar_mass_g_per_mol, 3)
+        "molar_mass_g_per_mol": number(weighed_molar_mass(bottle.content), 3)
         if bottle and bottle.content
         else None,
     }
@@ -254,13 +255,23 @@ def _route_hazards(plan: Plan) -> list[Hazards]:
         for charge in stage.charges:
             if charge.from_stage is not None:
                 continue
-            names.setdefault(charge.substance, charge.name)
-            if charge.bottle and charge.bottle.solvent and charge.bottle.solvent_name:
-                names.setdefault(charge.bottle.solvent, charge.bottle.solvent_name)
+            for key, name in _opened(charge):
+                names.setdefault(key, name)
     found = [hazards_of(key, name) for key, name in names.items()]
     order = {"Danger": 0, "Warning": 1, None: 3}
     found.sort(key=lambda h: (2 if not h.established else order[h.signal_word], h.name))
     return [*found, *(hazards_of(PRODUCT_KEY, name) for name in made.values())]
+
+
+def _opened(charge: Charge) -> list[tuple[str, str]]:
+    """What is in the bottle of a charge: a solution has a row of its own, or that of its parts."""
+    bottle = charge.bottle
+    if bottle is None or not bottle.solvent or not bottle.solvent_name:
+        return [(charge.substance, charge.name)]
+    whole = solution_key(charge.substance, bottle.solvent)
+    if whole is not None:
+        return [(whole, name_text(charge))]
+    return [(charge.substance, name_text(charge)), (bottle.solvent, bottle.solvent_name)]
 
 
 def _hazards(hazards: Hazards) -> dict[str, Any]:

@@ -33,13 +33,23 @@ def water_of(
 
 def _can_be_wet(charge: Charge) -> bool:
     has_reading = charge.bottle is not None and charge.bottle.water_ppm is not None
-    return has_reading or charge.role in ("solvent", "acceptor")
+    return has_reading or charge.role in ("solvent", "acceptor") or _hydrate_mmol(charge) > 0
+
+
+def _hydrate_mmol(charge: Charge) -> float:
+    """The water of crystallisation that a charge brings, as of bismuth triflate tetrahydrate."""
+    if charge.bottle is None or charge.bottle.content is None or charge.amount_mmol is None:
+        return 0.0
+    return charge.amount_mmol * charge.bottle.content.hydrate_water
 
 
 def _water_mmol(charge: Charge, as_of: date) -> float | None:
     bottle = charge.bottle
     if bottle is None:
         return None
+    hydrate = _hydrate_mmol(charge)
+    if hydrate:
+        return hydrate
     ppm = water_now_ppm(bottle, as_of)
     mass = charge.mass_mg
     if mass is None and bottle.density_g_per_ml is not None and charge.volume_ml is not None:
@@ -70,7 +80,8 @@ def dryness_warnings(
                 "water_takes_donor",
                 "caution",
                 f"The water counted could take {water.donor_share_pct:.1f} % of the donor as "
-                f"hemiacetal (limit {DONOR_LIMIT_PCT} %).",
+                f"hemiacetal (limit {DONOR_LIMIT_PCT} %): dry what brings it first; a hydrated "
+                "salt to constant mass in vacuum at 100 °C.",
             )
         )
     unknown = [charges[key] for key, mmol in water.lines if mmol is None]

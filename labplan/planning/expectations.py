@@ -5,16 +5,17 @@ import re
 
 from labplan.chemistry.coupling import Target
 from labplan.chemistry.masses import ACETYL_CHANGE_DA, monoisotopic_mass_of_formula
+from labplan.chemistry.structures import Structure
 from labplan.planning.values import Expectations, Ion, SideProduct, Stage
 
 
-def expect(target: Target, stages: tuple[Stage, ...]) -> Expectations:
+def expect(target: Target, stages: tuple[Stage, ...], halide: str | None) -> Expectations:
     """Ions of every stage, last first; side products; the H-1 signal; the mass of the route."""
     ions = [Ion(i.species, i.ion, i.mz) for stage in reversed(stages) for i in stage.ions]
     coupling = target.residue.coupling_hz if target.residue else None
     return Expectations(
         ions=tuple(dict.fromkeys(ions)),
-        side_products=_side_products(target),
+        side_products=_side_products(target, halide),
         anomeric_coupling_hz=coupling,
         anomeric_signal=_anomeric_signal(target, coupling),
         mass_mg=_mass_range_mg(stages),
@@ -48,7 +49,7 @@ def _mass_range_mg(stages: tuple[Stage, ...]) -> tuple[float, float, float] | No
     return planned * (1 - spread), planned, planned * (1 + spread)
 
 
-def _side_products(target: Target) -> tuple[SideProduct, ...]:
+def _side_products(target: Target, halide: str | None) -> tuple[SideProduct, ...]:
     """After the usual list for Lewis-acid couplings of peracetates (common practice)."""
     product, donor, acceptor = target.glycoside, target.donor, target.acceptor
     acetyl = ACETYL_CHANGE_DA
@@ -63,11 +64,11 @@ def _side_products(target: Target) -> tuple[SideProduct, ...]:
         ),
         SideProduct(
             "1,2-cis glycoside", product.formula, product.monoisotopic_mass_da,
-            f"{isomer}; small 3J(H1,H2)",
+            f"{isomer}; {_tells_the_anomer(target)}",
         ),
         SideProduct(
             "hemiacetal (water got in)", _shift(donor.formula, C=-2, H=-2, O=-1), hemiacetal,
-            "runs below the donor; H-1 of the alpha form near 5.4 ppm",
+            "runs below the donor",
         ),
         SideProduct(
             "1,1-linked dimer (water got in)", _double(donor.formula), 2 * hemiacetal - water,
@@ -81,13 +82,27 @@ def _side_products(target: Target) -> tuple[SideProduct, ...]:
             "acetate of the acceptor", _shift(acceptor.formula, C=2, H=2, O=1),
             acceptor.monoisotopic_mass_da + acetyl, "often unseen by ESI; runs at the front",
         ),
-        SideProduct(
-            "glycosyl fluoride", _shift(donor.formula, C=-2, H=-3, O=-2, F=1),
-            donor.monoisotopic_mass_da
-            - monoisotopic_mass_of_formula("C2H3O2") + monoisotopic_mass_of_formula("F"),
-            "2J(H1,F) near 50 Hz",
-        ),
+        *_glycosyl_halide(donor, halide),
     )  # fmt: skip
+
+
+def _glycosyl_halide(donor: Structure, halide: str | None) -> tuple[SideProduct, ...]:
+    """The donor with the promoter's halide in place of its 1-O-acetyl."""
+    if halide is None:
+        return ()
+    name, sign = {
+        "F": ("glycosyl fluoride", "2J(H1,F) near 50 Hz"),
+        "Br": ("glycosyl bromide", "two masses 2 Da apart, as of one bromine"),
+    }[halide]
+    lost = monoisotopic_mass_of_formula("C2H3O2")
+    mass = donor.monoisotopic_mass_da - lost + monoisotopic_mass_of_formula(halide)
+    formula = _shift(donor.formula, C=-2, H=-3, O=-2, **{halide: 1})
+    return (SideProduct(name, formula, mass, sign),)
+
+
+def _tells_the_anomer(target: Target) -> str:
+    hz = target.residue.coupling_hz if target.residue else None
+    return "1J(C1,H1) decides" if hz and hz[1] <= 2 else "small 3J(H1,H2)"
 
 
 def _counts(formula: str) -> dict[str, int]:

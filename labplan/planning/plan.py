@@ -16,6 +16,7 @@ from labplan.planning.methods import (
     fitting_couplings,
     group_cautions,
     later_cautions,
+    method_row,
     solvent_of,
 )
 from labplan.planning.sizing import Sizer
@@ -139,7 +140,9 @@ def make_plan(
     found.sort(key=lambda route: (not route.is_available, route.rank))
     found = [_explained(found[0], sized[0][0]), *found[1:]]
     routes = tuple(replace(route, rank=i) for i, route in enumerate(found, start=1))
-    return Plan(target, "plannable", (), routes, expect(target, routes[0].stages))
+    return Plan(
+        target, "plannable", (), routes, expect(target, routes[0].stages, _halide(routes[0]))
+    )
 
 
 def _explained(best: Route, first: Route | None) -> Route:
@@ -154,6 +157,12 @@ def _explained(best: Route, first: Route | None) -> Route:
         f"{best.method_name} instead.",
     )
     return replace(best, warnings=(second, *best.warnings))
+
+
+def _halide(route: Route) -> str | None:
+    """The halide of the promoter, which can end up on the donor."""
+    halide: str | None = method_row(route.method)["promoter"]["halide"]
+    return halide
 
 
 class _Attempt:

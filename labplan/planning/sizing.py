@@ -101,6 +101,8 @@ class Sizer:
         assay = ""
         if content.assay_pct is not None:
             assay = f"; {content.assay_pct:g} % planned, to be measured"
+        if content.active_share_pct is not None:
+            assay += f", {content.active_share_pct:g} % of it the form that reacts"
         self._keep(
             replace(charge, from_stage=from_stage, assay_note=f"from stage {from_stage}{assay}")
         )

@@ -34,6 +34,15 @@ class Hazards:
     row: dict[str, Any] | None
 
 
+# (dissolved substance, solvent) -> the classification of the solution as it is sold
+_SOLUTIONS = {("sodium-methoxide", "methanol"): "sodium-methoxide-25-in-methanol"}
+
+
+def solution_key(substance: str, solvent: str) -> str | None:
+    """The key of a solution that has a classification of its own, else None."""
+    return _SOLUTIONS.get((substance, solvent))
+
+
 @lru_cache(maxsize=2048)
 def hazards_of(substance: str, name: str) -> Hazards:
     """Return the packaged classification of a substance key, or an unknown one."""

@@ -126,7 +126,7 @@ def test_the_sheet_of_three_stages_names_all_their_charges(lab: Laboratory) -> N
     stages = shown["document"]["route"]["stages"]
     assert [stage["number"] for stage in stages] == [1, 2, 3]
     source = sheet_of(lab, shown)
-    assert_every_charge_is_on(source, shown["document"], count=32)
+    assert_every_charge_is_on(source, shown["document"], count=33)
     text = Page(source).text
     for stage in stages:
         assert squeezed(stage["product"]["name"]) in squeezed(text)
@@ -215,6 +215,8 @@ def test_every_substance_in_a_flask_has_a_line_of_hazards(
     document = order_and_plan(lab, target_smiles=smiles)["document"]
     stages = document["route"]["stages"]
     bought = {c["substance"] for s in stages for c in s["charges"] if c["from_stage"] is None}
+    if "sodium-methoxide" in bought:  # sold as a solution, which has a classification of its own
+        bought = bought - {"sodium-methoxide"} | {"sodium-methoxide-25-in-methanol"}
     lines = [line["substance"] for line in document["hazards"]]
     assert set(lines) == bought | solvents | {"made here"}
     assert lines.count("made here") == len(stages)

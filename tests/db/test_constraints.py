@@ -88,7 +88,8 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
         "smiles": "C", "inchikey": code, "formula": "", "density_source": "",
     },
     "inventory_form": lambda code: {
-        "substance_id": _key(Substance), "kind": "neat", "solution_basis": "", "label": code,
+        "substance_id": _key(Substance), "kind": "neat", "solution_basis": "", "cas": "",
+        "label": code,
     },
     "inventory_bottle": _bottle_row,
     "inventory_reading": lambda code: {

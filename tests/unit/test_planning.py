@@ -348,14 +348,14 @@ def test_steps_name_no_amount_that_is_not_in_the_table() -> None:
     assert named <= allowed
 
 
-def test_promoter_comes_last_and_the_reaction_goes_into_the_bicarbonate() -> None:
+def test_the_quench_is_ready_before_the_promoter_and_the_reaction_goes_into_it() -> None:
     (stage,) = plan(demo_shelf()).route.stages  # type: ignore[union-attr]
-    order = [key for step in stage.steps for key in step.charges if key in
-             ("donor", "acceptor", "solvent", "sieves", "promoter", "quench_base")]  # fmt: skip
-    assert order[-2:] == ["promoter", "quench_base"]
+    order = [key for step in stage.steps for key in step.charges]
+    assert order.index("sieves") < order.index("quench_base") < order.index("promoter")
+    assert max(map(order.index, ("donor", "acceptor", "solvent"))) < order.index("promoter")
     quench = next(step for step in stage.steps if step.title == "Quench")
-    assert "INTO the stirred quench" in quench.text
-    assert "open" in quench.text
+    assert "INTO the stirred, open quench" in quench.text
+    assert "never in a closed vessel" in quench.text
 
 
 def test_the_date_is_in_the_document_and_no_float_is() -> None:

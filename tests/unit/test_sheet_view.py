@@ -125,7 +125,7 @@ def test_every_step_asks_for_the_amount_of_every_charge_it_uses() -> None:
         assert last["weighed"] == ["product weighed"]
         assert sum(step["is_sampled"] for step in after["steps"]) >= 1
     coupling = shown["stages"][1]["steps"]
-    assert [s["number"] for s in coupling if s["weighed"] == ["crude weighed"]] == [8]
+    assert [s["number"] for s in coupling if s["weighed"] == ["crude weighed"]] == [9]
     assert [s["title"].plain for s in coupling if s["is_sampled"]] == ["Let it react"]
 
 

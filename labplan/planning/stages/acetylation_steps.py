@@ -29,7 +29,8 @@ def _prepare(writer: Writer, stage: Stage) -> None:
         "labels with the table. Work in a hood with goggles and gloves; acetic anhydride burns "
         "eyes and skin and its vapour is harmful.",
         f"Fit a {stage.vessel_ml} mL three-necked flask with stirring bar, reflux condenser, "
-        "internal thermometer and a stopper, on a bath that can be dropped at once.",
+        "internal thermometer and a stopper, a drying tube on the condenser, on a bath that can be "
+        "dropped at once.",
         watch="a bottle that differs from the table: stop and plan again",
         pause=MAY_STAND,
     )
@@ -54,7 +55,8 @@ def _hot(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
         f"of the one before has fallen. {_exotherm(stage)} Never charge everything cold and heat "
         "it.",
         uses=("sugar",),
-        watch="inside not above 120 °C: drop the bath; the flask must reflux, not boil over",
+        watch="inside not above 120 °C: drop the bath. If a portion gives no rise within 10 min or "
+        "stays undissolved, add no more until it has gone: the heat can come late",
     )
     writer.add(
         "Finish the acetylation",
@@ -89,7 +91,7 @@ def _in_portions(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
 
 def _work_up(writer: Writer, plan: AcetylationPlan) -> None:
     ice_ml = writer.by_key["ice_water"].volume_ml or 0.0
-    beaker = smallest_that_holds(BEAKERS_ML, ice_ml * 1.5)
+    beaker = smallest_that_holds(BEAKERS_ML, ice_ml * 2.5)
     thiosulfate = ""
     if writer.has("reducing_agent"):
         thiosulfate = f"Stir in {writer.text('reducing_agent')} until the brown colour has gone."
@@ -128,13 +130,32 @@ def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
     )
     writer.add(
         "Weigh, check and rescale",
-        f"Expected: {mass_text(round(stage.expected_mass_mg))} of pure {stage.product_name} "
-        f"({mass_text(round(stage.expected_low_mg))} to "
+        f"Expected: {mass_text(round(stage.expected_mass_mg))} of "
+        f"{stage.product_name}{_anomers(plan)} ({mass_text(round(stage.expected_low_mg))} to "
         f"{mass_text(round(stage.expected_high_mg))}), {mass_text(round(stage.gross_mass_mg))} as "
-        f"{stage.gross_means}. Look at the anomers by NMR. What is weighed here sets every "
+        f"{stage.gross_means}. {_signals(plan)}What is weighed here sets every "
         "charge of the next stage. Enter it, and the anhydride really used.",
-        "Waste: the water layers are dilute acetic acid; dichloromethane to halogenated, toluene "
-        "to non-halogenated.",
+        "Waste: the water layers are dilute acetic acid"
+        f"{', with iodide and thiosulfate' if writer.has('reducing_agent') else ''}; "
+        "dichloromethane to halogenated, toluene to non-halogenated.",
         watch="the waste rules of your house come first",
         pause=MAY_STAND,
+    )
+
+
+def _anomers(plan: AcetylationPlan) -> str:
+    if plan.active_share_pct >= 100:
+        return ""
+    return f" (all forms; {plan.active_share_pct:g} % of it is the wanted one)"
+
+
+def _signals(plan: AcetylationPlan) -> str:
+    """H-1 of the two pentaacetates in CDCl3, recalled; a guide, to be checked with a reference."""
+    residue = plan.target.residue
+    if residue is None or residue.key not in ("d-glucose", "d-galactose", "lactose"):
+        return "Look at the forms by NMR and take the share of the wanted one into the factor. "
+    return (
+        "Look at H-1 by NMR: near 5.7 ppm, d, 8 Hz for the wanted beta form, near 6.3 ppm, d, "
+        "3.5 Hz for alpha (recalled; check). Over 5 % of alpha: crystallise from ethanol and dry "
+        "again, or take the share into the factor. "
     )

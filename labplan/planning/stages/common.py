@@ -1,5 +1,6 @@
 """What all stages share: needs for salts and solvents, expected masses, ions."""
 
+from labplan.chemistry.coupling import Target
 from labplan.chemistry.masses import adduct_mz
 from labplan.chemistry.reference import find_by_key
 from labplan.chemistry.structures import Structure
@@ -38,6 +39,11 @@ def bulk_need(
         bulk_volume_ml=volume_ml,
         outward=outward,
     )
+
+
+def acceptor_carbons(target: Target) -> int:
+    """Carbon atoms of the alcohol: what decides whether it, or its glycoside, likes water."""
+    return sum(letter in "Cc" for letter in target.acceptor.smiles)
 
 
 def water_need(key: str, role: str, volume_ml: float) -> Need:

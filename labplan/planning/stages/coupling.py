@@ -22,6 +22,7 @@ from labplan.planning.stages.common import (
 from labplan.planning.values import Ion, Quench, RouteWarning, Stage
 
 REVIEW_LIMITING_MG = 20_000
+AZIDE_WASHES_SHARE = 1.5  # three washes of half the reaction volume (common practice)
 BICARBONATE_M_AT_0C = 0.8  # saturated, common practice (1.1 at 20 °C)
 
 
@@ -198,17 +199,21 @@ def _add_work_up(sizer: Sizer, plan: CouplingPlan, reaction_ml: float, acid_mmol
         sizer.add(need)
     _add_filtration(sizer, work_up, reaction_ml)
     sizer.add_supply(water_need("quench_water", "quench", reaction_ml))
+    if "azide" in plan.target.acceptor_groups:
+        sizer.add_supply(water_need("azide_water", "wash", reaction_ml * AZIDE_WASHES_SHARE))
     if plan.has_acid:
         sizer.add_supply(water_need("neutralising_water", "neutralisation", reaction_ml))
     sizer.add_supply(water_need("brine_water", "brine", brine_ml))
 
 
 def _add_filtration(sizer: Sizer, work_up: dict[str, object], reaction_ml: float) -> None:
-    """Powdered sieves block a frit: a pad of filter aid, and solvent to rinse the cake."""
+    """Powdered sieves and basic bismuth salts block a frit: a pad, and solvent for the cake."""
     sieves = sizer.charges.get("sieves")
-    if sieves is None:
+    pad_mg = reaction_ml * 1000 * float(str(work_up.get("pad_g_per_ml", 0)))
+    if sieves is not None:
+        pad_mg += (sieves.mass_mg or 0.0) * float(str(work_up["filter_aid_g_per_g_sieves"]))
+    if not pad_mg:
         return
-    pad_mg = (sieves.mass_mg or 0.0) * float(str(work_up["filter_aid_g_per_g_sieves"]))
     sizer.add(bulk_need("filter_aid", "filter aid", str(work_up["filter_aid"]), mass_mg=pad_mg))
     sizer.add(
         bulk_need(
@@ -293,7 +298,7 @@ def _stage(
         expected_low_mg=low,
         expected_high_mg=high,
         gross_mass_mg=gross_mg,
-        gross_means="the most that the crude can weigh",
+        gross_means="product in full, and the alcohol that is left over",
         water=water,
         quench=_quench(plan, charges["quench_water"].volume_ml or 0.0, reaction, acid_mmol),
         ions=_ions(target),

@@ -7,6 +7,7 @@ open, stirred bicarbonate, never the reverse; peracetates show by charring only.
 import math
 
 from labplan.planning.figures import mass_text, three_figures
+from labplan.planning.stages.common import acceptor_carbons
 from labplan.planning.stages.coupling import CouplingPlan, eluent_kind
 from labplan.planning.steps import DO_NOT_STOP, MAY_STAND, UNATTENDED, Writer
 from labplan.planning.values import Quench, ShelfBottle, Stage, Step
@@ -21,14 +22,12 @@ def coupling_steps(plan: CouplingPlan, stage: Stage, gel: ShelfBottle | None) ->
     writer = Writer(stage.charges)
     _prepare(writer, plan, stage, gel)
     _charge_flask(writer, plan)
+    _make_quench_ready(writer, plan, stage.quench)
     _react(writer, plan)
+    _quench(writer, plan, stage.quench)
+    _extract(writer, plan)
     if plan.has_acid:
-        _quench_into_water(writer, stage.quench)
-        _extract(writer, plan)
         _neutralise_water_layers(writer, stage.quench)
-    else:
-        _quench(writer, plan, stage.quench)
-        _extract(writer, plan)
     _concentrate(writer, plan, stage)
     _purify(writer, plan, stage)
     _finish(writer, plan, stage)
@@ -43,15 +42,16 @@ def _prepare(writer: Writer, plan: CouplingPlan, stage: Stage, gel: ShelfBottle 
         "Work in a hood, with goggles and laminate gloves under nitrile ones: dichloromethane goes "
         "through thin nitrile in a minute or two; change them at once when wetted.",
         _gel_sentence(plan, gel),
-        "Start early: the promoter should be in before 10 o'clock.",
+        "Start early: the coupling wants to be watched for most of a day.",
+        "Work behind a shield from the moment the azide is opened." if _has_azide(plan) else "",
         watch="a bottle that differs from the table: stop and plan again",
         pause=MAY_STAND,
     )
     writer.add(
         "Dry the flask",
-        f"Dry a {stage.vessel_ml} mL two-necked round-bottomed flask with a stirring bar at 120 °C "
-        "for 2 h, or with a heat gun in vacuum. Let it cool under dry argon or nitrogen, then fit "
-        "a septum and an internal thermometer.",
+        f"Dry a {stage.vessel_ml} mL three-necked round-bottomed flask with a stirring bar at "
+        "120 °C for 2 h, or with a heat gun in vacuum. Let it cool under dry argon, then fit a "
+        "septum, an internal thermometer and an argon inlet with a bubbler as relief.",
         pause=MAY_STAND,
     )
 
@@ -66,7 +66,8 @@ def _gel_sentence(plan: CouplingPlan, gel: ShelfBottle | None) -> str:
         where = f"Calcium gluconate gel stands in {gel.place} (bottle {gel.code}{until})"
     return (
         f"{where}: BF3 etherate gives hydrogen fluoride with water. On skin: flush at once, rub in "
-        "the gel, then see a doctor. Wear a face shield while it is transferred."
+        "the gel, then a doctor. In the eyes: rinse for 15 min, no gel, then a doctor. Breathed "
+        "in: fresh air, then a doctor. Wear a face shield while it is transferred."
     )
 
 
@@ -83,8 +84,8 @@ def _charge_flask(writer: Writer, plan: CouplingPlan) -> None:
     )
     donor = f"{writer.text('donor')}, dried to constant mass in vacuum at 40 °C or below"
     provisional = (
-        "The mass is a planning figure: weigh what the stage before really gave and rescale every "
-        "charge of this stage."
+        "The mass is a planning figure: divide what the stage before really gave by it and "
+        "multiply every charge of this stage by that factor."
         if plan.made_donor is not None
         else ""
     )
@@ -95,23 +96,32 @@ def _charge_flask(writer: Writer, plan: CouplingPlan) -> None:
         sieves = f"Add {writer.text('sieves')}, activated {day}."
     writer.add(
         "Charge donor and alcohol",
+        _before_the_azide(plan),
         f"Weigh {donor}, into the flask and purge with argon. {provisional}".strip(),
         f"Add {writer.text('solvent')}, then {writer.text('acceptor')}, {how}.",
         sieves,
-        _shield(plan),
-        "Stir for 30 min at room temperature.",
+        "Stir for 30 min at room temperature under a slow stream of argon.",
         uses=("donor", "solvent", "acceptor", "sieves"),
-        watch="donor and alcohol dissolve; weigh back what stays on the paper",
+        watch="a protected amino acid may stay a slurry until the promoter is in"
+        if _is_amino_acid(plan)
+        else "donor and alcohol dissolve; weigh back what stays on the paper",
     )
 
 
-def _shield(plan: CouplingPlan) -> str:
-    if "azide" not in plan.target.acceptor_groups:
+def _has_azide(plan: CouplingPlan) -> bool:
+    return "azide" in plan.target.acceptor_groups
+
+
+def _is_amino_acid(plan: CouplingPlan) -> bool:
+    return bool({"Fmoc", "Cbz"} & set(plan.target.acceptor_groups))
+
+
+def _before_the_azide(plan: CouplingPlan) -> str:
+    if not _has_azide(plan):
         return ""
     return (
-        "From here on work behind a shield, with no metal spatula; the azide must be free of "
-        "inorganic azide, which gives diazidomethane with dichloromethane and hydrazoic acid with "
-        "acid."
+        "Behind a shield, with no metal spatula. The azide must be free of inorganic azide, which "
+        "gives diazidomethane with dichloromethane and hydrazoic acid with acid."
     )
 
 
@@ -130,8 +140,7 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
             if by_syringe
             else "in one portion, quickly: it takes up water from the air."
         ),
-        "Rinse syringe and needle with a little dichloromethane into the "
-        f"{'water' if plan.has_acid else 'bicarbonate'} of the quench."
+        "Draw some of the quench into syringe and needle and push it back, at once."
         if by_syringe
         else "",
         uses=("promoter",),
@@ -145,9 +154,10 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         ("Let it come to room temperature" if cold else "Keep it at room temperature")
         + f" (about {temperature['reaction']} °C) and stir under "
         f"argon for {hours['low']} to {hours['high']} h, usually {hours['usual']} h."
-        + (" Keep an azide at or below 20 °C." if _shield(plan) else ""),
-        "After 1 h and then every hour shake two drops with saturated sodium hydrogencarbonate and "
-        "ethyl acetate and spot the upper layer beside donor and alcohol.",
+        + (" Keep an azide at or below 20 °C." if _has_azide(plan) else ""),
+        "After 1 h and then every hour shake two drops with "
+        + ("water" if plan.has_acid else "saturated sodium hydrogencarbonate")
+        + " and ethyl acetate and spot the upper layer beside donor and alcohol.",
         _seeing(plan),
         "Or look for the ions of this stage by LC-MS.",
         watch="stop as soon as the donor has gone or stays the same between two samples: longer "
@@ -162,7 +172,12 @@ def _seeing(plan: CouplingPlan) -> str:
         if eluent_kind(plan.target) == "eluent"
         else ("heptane/ethyl acetate 1:2")
     )
-    char = "dip in 5 to 10 % sulfuric acid in ethanol and char with a heat gun"
+    if plan.has_acid:
+        plate += " with 0.5 % of acetic acid"
+    char = (
+        "dip in 5 to 10 % sulfuric acid in ethanol, let the ethanol go in the hood and char with "
+        "a heat gun"
+    )
     if UV_GROUPS & set(plan.target.acceptor_groups) or _is_aromatic(plan):
         return (
             f"Develop in {plate}; look at 254 nm for alcohol and product, then {char}: the donor "
@@ -176,8 +191,8 @@ def _is_aromatic(plan: CouplingPlan) -> bool:
 
 
 POUR = (
-    "Cool the reaction back to 0 °C and pour it INTO the stirred quench in portions of about a "
-    "tenth, over 10 to 15 min; never the reverse, never in a closed vessel."
+    "Cool the reaction back to 0 °C and pour it INTO the stirred, open quench in portions of "
+    "about a tenth, over 10 to 15 min; never the reverse, never in a closed vessel."
 )
 
 
@@ -188,30 +203,44 @@ def _slurry(writer: Writer, quench: Quench) -> str:
     return f"; it stays a slurry (clear at 0 °C it would take {quench.clear_solution_ml:.0f} mL)"
 
 
-def _quench(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
+def _make_quench_ready(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
+    """Before the promoter is opened: a spill of it goes there too."""
+    if plan.has_acid:
+        writer.add(
+            "Make the quench ready",
+            f"Put {writer.text('quench_water')} into an open {quench.vessel_ml} mL plastic beaker "
+            "in an ice bath: the product is an acid and would be lost in bicarbonate.",
+            uses=("quench_water",),
+        )
+        return
     writer.add(
-        "Quench",
+        "Make the quench ready",
         f"Stir {writer.text('quench_base')} with {writer.text('quench_water')} in an open "
         f"{quench.vessel_ml} mL beaker in an ice bath{_slurry(writer, quench)}.",
+        uses=("quench_base", "quench_water"),
+        pause=MAY_STAND,
+    )
+
+
+def _quench(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
+    if plan.has_acid:
+        writer.add(
+            "Quench",
+            f"{_filtering(writer)} Do this before any water: hydrogen fluoride etches glass.",
+            POUR,
+            uses=("filter_aid", "rinse_solvent"),
+            watch="from here to the neutralised water layers: the water is strongly acid and holds "
+            "hydrogen fluoride; plastic vessels and funnels only, laminate gloves, face shield",
+        )
+        return
+    writer.add(
+        "Quench",
         POUR,
         f"Up to {three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
         "Stir until the gas has stopped and the water layer is at pH 7 or above; if it is not, add "
         "solid sodium hydrogencarbonate by the spatula.",
-        uses=("quench_base", "quench_water"),
         watch="foam: wait between portions"
         + ("; the water contains fluoride, never acidify it" if _has_fluoride(plan) else ""),
-    )
-
-
-def _quench_into_water(writer: Writer, quench: Quench) -> None:
-    """A free acid would go into bicarbonate with the product: water first, base on the waste."""
-    writer.add(
-        "Quench",
-        f"Stir {writer.text('quench_water')} with ice in an open {quench.vessel_ml} mL plastic "
-        "beaker: the product is an acid and would be lost in bicarbonate.",
-        POUR,
-        uses=("quench_water",),
-        watch="the water layer is strongly acid and contains fluoride: plastic, not glass",
     )
 
 
@@ -219,8 +248,8 @@ def _neutralise_water_layers(writer: Writer, quench: Quench) -> None:
     writer.add(
         "Neutralise the water layers",
         f"Stir {writer.text('quench_base')} with {writer.text('neutralising_water')} in an open "
-        f"{quench.vessel_ml} mL beaker and pour the water layers INTO it in portions. Up to "
-        f"{three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
+        f"{quench.vessel_ml} mL plastic beaker and pour the water layers INTO it in portions. Up "
+        f"to {three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
         uses=("quench_base", "neutralising_water"),
         watch="foam; pH 7 or above at the end",
     )
@@ -238,13 +267,9 @@ def _extract(writer: Writer, plan: CouplingPlan) -> None:
     largest_ml = organic_ml + max(
         charges["quench_water"].volume_ml or 0, charges["brine_water"].volume_ml or 0
     )
-    filtering = ""
-    if writer.has("filter_aid"):
-        filtering = (
-            f"Filter through a pad of {writer.text('filter_aid')} in a sintered funnel and rinse "
-            f"the cake in two portions with {writer.text('rinse_solvent')}."
-        )
-    funnel = f"in a {funnel_ml(largest_ml)} mL funnel, venting it often"
+    filtering = "" if plan.has_acid else _filtering(writer)
+    material = "plastic " if plan.has_acid else ""
+    funnel = f"in a {funnel_ml(largest_ml)} mL {material}funnel, venting it often"
     mixes_with_water = charges["solvent"].substance == "acetonitrile"
     writer.add(
         "Extract",
@@ -259,30 +284,49 @@ def _extract(writer: Writer, plan: CouplingPlan) -> None:
         "An emulsion: let it stand, add a little brine, or filter it again."
         if not plan.has_acid
         else "Use water and brine only, no base.",
-        uses=("filter_aid", "rinse_solvent", "extraction_solvent", "brine_salt", "brine_water"),
+        "Then take out what is left of the azido alcohol with three equal portions of "
+        f"{writer.text('azide_water')}."
+        if writer.has("azide_water")
+        else "",
+        uses=(
+            *(() if plan.has_acid else ("filter_aid", "rinse_solvent")),
+            "extraction_solvent",
+            "brine_salt",
+            "brine_water",
+            "azide_water",
+        ),
         watch="the layers may change places with toluene: test with a drop of water"
         if charges["solvent"].substance == "toluene"
         else "dichloromethane is the lower layer",
     )
 
 
+def _filtering(writer: Writer) -> str:
+    if not writer.has("filter_aid"):
+        return ""
+    return (
+        f"Filter through a pad of {writer.text('filter_aid')} in a sintered funnel and rinse the "
+        f"cake in two portions with {writer.text('rinse_solvent')}."
+    )
+
+
 def _concentrate(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
-    azide = bool(_shield(plan))
+    azide = _has_azide(plan)
     writer.add(
         "Dry and concentrate",
-        "Wash three times with water first, to take out what is left of the azido alcohol."
-        if azide
-        else "",
         f"Dry the organic layer over {writer.text('drying_agent')} for 15 min, filter, and "
         "evaporate: bath "
         + ("30 °C or below, behind the shield." if azide else "40 °C or below.")
         + " Dichloromethane from 800 mbar on"
         + (", toluene from 80 mbar on" if writer.by_key["solvent"].substance == "toluene" else "")
         + "; then 1 h at the oil pump.",
-        f"Weigh the crude; {mass_text(round(stage.gross_mass_mg))} is the most that can be there.",
+        "What the condenser and the pump trap hold contains azido alcohol: azide waste."
+        if azide
+        else "",
+        f"Weigh the crude: about {mass_text(round(stage.gross_mass_mg))} "
+        f"({stage.gross_means}); much more means that solvent is left.",
         uses=("drying_agent",),
-        watch="the crude never stays overnight in contact with moist acid or on silica; dry and "
-        "cold it keeps",
+        watch="the crude does not keep in contact with acid; dry and cold it does",
         pause=DO_NOT_STOP if azide else MAY_STAND,
     )
 
@@ -299,38 +343,40 @@ def _purify(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
         "Purify",
         f"Take {writer.text('silica')}: dry-load the crude on about a twentieth of it, the rest "
         f"packed to {height:.0f} cm ({bed_ml:.0f} mL) in a column of {diameter_cm:.1f} cm.",
-        f"Elute with {' and '.join(writer.text(key) for key in eluents)}, in three equal steps "
-        f"from {gradient} by volume; fractions of a tenth of the bed.",
+        f"Elute with {' and '.join(writer.text(key) for key in eluents)}, mixed {gradient} by "
+        f"volume, a third of the whole each; fractions of a tenth of the bed.",
         "A free acid streaks: put 0.5 % of acetic acid into the eluent." if plan.has_acid else "",
         alcohol_left_over(plan),
         " ".join(plan.method["left_over"]),
         uses=("silica", *eluents),
-        watch="spots from the front: acetate of the alcohol, product, donor, hemiacetal (usual "
-        "order; check with references); pool only what shows one spot",
-        pause=MAY_STAND,
+        watch="acetate of the alcohol runs in front of the product, donor and hemiacetal behind "
+        "it, the alcohol where a reference shows it; do not leave the product on the silica; pool only "
+        "what shows one spot",
     )
 
 
 def alcohol_left_over(plan: CouplingPlan) -> str:
     """What becomes of the excess acceptor, by its size and polarity (common practice)."""
     target = plan.target
-    if {"Fmoc", "Cbz"} & set(target.acceptor_groups):
+    if _is_amino_acid(plan):
         return "The protected amino acid that is left can run with its glycoside: check by LC-MS."
-    carbons = sum(letter in "Cc" for letter in target.acceptor.smiles)
-    if carbons <= 4:
+    if acceptor_carbons(target) <= 4:
         return "What is left of the alcohol has gone with the water layers."
-    if carbons <= 7:
+    if acceptor_carbons(target) <= 7:
         return "What is left of the alcohol goes partly with the water, the rest at the oil pump."
     return (
-        "What is left of the alcohol can run close to the product: take it off at the oil pump, or "
-        "acetylate the crude first, which sends it to the front and brings back lost acetyl."
+        "What is left of the alcohol can run close to the product and does not leave at the oil "
+        "pump: take a reference spot of it; acetylating the crude first would send it to the front."
     )
 
 
 def _finish(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
     writer.add(
         "Dry, weigh and record",
-        "Evaporate the pure fractions at 40 °C or below, dry to constant mass in vacuum and weigh.",
+        "Evaporate the pure fractions at 30 °C or below behind the shield, dry in vacuum and weigh."
+        if _has_azide(plan)
+        else "Evaporate the pure fractions at 40 °C or below, dry to constant mass in vacuum and "
+        "weigh.",
         f"Expected: {mass_text(round(stage.expected_mass_mg))} of {stage.product_name} "
         f"({mass_text(round(stage.expected_low_mg))} to "
         f"{mass_text(round(stage.expected_high_mg))}). Enter what was really weighed and measured.",
@@ -343,7 +389,7 @@ def _finish(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
             else "; water layers to aqueous metal waste"
         )
         + "; silica to solid waste once the solvent is off."
-        + (" Azide waste apart, never to acid, copper or lead." if _shield(plan) else ""),
+        + (" Azide waste apart, never to acid, copper or lead." if _has_azide(plan) else ""),
         watch="the waste rules of your house come first",
         pause=MAY_STAND,
     )

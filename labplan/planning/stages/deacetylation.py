@@ -9,6 +9,7 @@ from labplan.planning import vessels
 from labplan.planning.methods import Method
 from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
+    acceptor_carbons,
     bulk_need,
     expected_mg,
     liquid_ml,
@@ -18,6 +19,9 @@ from labplan.planning.stages.common import (
     yield_triple,
 )
 from labplan.planning.values import RouteWarning, Shortage, Stage
+
+# From here on a glycoside hardly dissolves in cold water and foams (common practice).
+LONG_CHAIN_CARBONS = 8
 
 
 @dataclass(frozen=True)
@@ -77,11 +81,9 @@ def size_deacetylation(
     base = sizer.add(_base_need(plan, amount))
     base_mmol = (base.amount_mmol if base else None) or amount * plan.base_equiv
     _add_resin(plan, sizer, base_mmol)
-    sizer.add_supply(
-        water_need(
-            "water", "keeps the product dissolved", solvent_ml * float(method["water_share"])
-        )
-    )
+    if acceptor_carbons(target) < LONG_CHAIN_CARBONS:
+        share = float(method["water_share"])
+        sizer.add_supply(water_need("water", "keeps the product dissolved", solvent_ml * share))
     if not {"solvent", "base", "resin"} <= set(sizer.charges):
         return None, []
     return _stage(plan, sizer, amount), []
@@ -121,12 +123,15 @@ def _add_resin(plan: DeacetylationPlan, sizer: Sizer, base_mmol: float) -> None:
         return
     step = float(resin["step_ml"])
     with_excess_ml = base_mmol / loading * (1 + float(resin["excess_pct"]) / 100)
+    resin_ml = math.ceil(with_excess_ml / step) * step
+    sizer.add(bulk_need("resin", "neutralisation", resin["substance"], volume_ml=resin_ml))
     sizer.add(
         bulk_need(
-            "resin",
-            "neutralisation",
-            resin["substance"],
-            volume_ml=math.ceil(with_excess_ml / step) * step,
+            "rinse",
+            "rinse of the resin",
+            plan.method["solvent"]["substance"],
+            volume_ml=resin_ml * float(resin["rinse_ml_per_ml"]),
+            outward=True,
         )
     )
 
