@@ -157,7 +157,7 @@ RESERVATION = component(
         "actor": about(PERSON_CODE, "Code of the person it was made for."),
         "purpose": text("What it is for.", "procedure P-7K2M4Q9X"),
         "state": word("Open while it holds anything.", Reservation.State.values),
-        "expires_on": day("It lapses after the end of this day."),
+        "expires_on": day("Set aside until this day; past it, given back by hand so far."),
         "created_at": instant("When it was made, in UTC."),
         "holds": list_of(HOLD, "By line."),
     },

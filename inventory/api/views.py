@@ -4,14 +4,13 @@ from typing import Any
 
 from django.db.models import QuerySet
 from rest_framework.response import Response
-from rest_framework.views import APIView
 
 from inventory import selectors
 from inventory.api import schema, shapes
 from inventory.models import Bottle, Movement, Place, Reservation, Substance
 from labplan.base.errors import NotFound
 from labplan.base.pagination import ByCodePagination
-from labplan.base.views import ListView
+from labplan.base.views import ListView, LookView
 
 
 @schema.substance_list
@@ -27,7 +26,7 @@ class SubstanceList(ListView):
 
 
 @schema.substance_detail
-class SubstanceDetail(APIView):
+class SubstanceDetail(LookView):
     def get(self, request: Any, code: str) -> Response:
         found = selectors.list_substances(actor=request.user).filter(code=code).first()
         if found is None:
@@ -49,7 +48,7 @@ class BottleList(ListView):
 
 
 @schema.bottle_detail
-class BottleDetail(APIView):
+class BottleDetail(LookView):
     def get(self, request: Any, code: str) -> Response:
         return Response(shapes.show_bottle(selectors.get_bottle(actor=request.user, code=code)))
 
@@ -88,7 +87,7 @@ class ReservationList(ListView):
 
 
 @schema.reservation_detail
-class ReservationDetail(APIView):
+class ReservationDetail(LookView):
     def get(self, request: Any, code: Any) -> Response:
         found = selectors.visible_reservations(actor=request.user).filter(code=code).first()
         if found is None:

@@ -122,7 +122,9 @@ def _header_is_sound(
         errors.add(name, "semicolons", "Separate the columns by commas, not semicolons.")
         return False
     for column in sorted(set(header) - set(columns)):
-        errors.add(name, "unknown_column", f"{column!r} is not a column; known: {columns}.")
+        errors.add(
+            name, "unknown_column", f"{column!r} is not a column; known: {', '.join(columns)}."
+        )
     for column in sorted(required - set(header)):
         errors.add(name, "missing_column", f"The column {column!r} is needed.")
     if len(set(header)) != len(header):

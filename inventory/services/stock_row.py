@@ -12,7 +12,7 @@ from inventory.services.receipt import BottleReceipt
 from inventory.services.substances import SubstanceFinder
 from labplan.base import clock
 from labplan.chemistry.forms import form_label
-from labplan.chemistry.masses import molar_mass_of_formula
+from labplan.chemistry.masses import is_part_of_formula, molar_mass_of_formula
 
 PLACE_COLUMNS = ("code", "name", "is_locked", "temperature_c")
 STOCK_COLUMNS = (
@@ -54,8 +54,13 @@ def read_receipt(
     substance = finder.find(row)
     if substance is not None:
         _check_strength(row, substance)
+        _check_assay(row, substance)
         if row.text("cas") != substance.cas:
             form["cas"] = row.text("cas")
+        is_sound = len(row.errors.found) == before
+        if is_sound and substance.kind == Substance.Kind.DEFINED and measured_by == "count":
+            row.error("unit", "not_countable", "A compound is weighed or measured, not counted.")
+    _check_days(fields, row)
     if len(row.errors.found) > before or substance is None or place is None:
         return None
     return BottleReceipt(
@@ -92,6 +97,38 @@ def _check_strength(row: Row, substance: Substance) -> None:
             "density_g_per_ml", "missing",
             "A strength by volume needs the density of the solution.",
         )  # fmt: skip
+
+
+# A label of 46 to 48 % on the etherate counts BF3; taken as etherate it would double the dose.
+_COUNTS_A_PART = {"boron-trifluoride-diethyl-etherate": ("BF3", Decimal(60))}
+
+
+def _check_days(fields: dict[str, Any], row: Row) -> None:
+    received, opened = fields["received_on"], fields["opened_on"]
+    if received and opened and opened < received:
+        row.error("opened_on", "before_receipt", "It was opened before it came.")
+
+
+def _check_assay(row: Row, substance: Substance) -> None:
+    """An assay counts the whole, or a part that the compound has, and never more than all of it."""
+    given = row.text("assay_pct").replace(".", "", 1)
+    assay = Decimal(row.text("assay_pct")) if given.isascii() and given.isdigit() else None
+    of = row.text("assay_of") or "as_is"
+    part, below = _COUNTS_A_PART.get(substance.code, ("", Decimal(0)))
+    if assay is not None and of == "as_is" and assay < below:
+        row.error(
+            "assay_of", "missing",
+            f"{assay} % of {substance.name} most likely counts {part}: say assay_of={part}, or the "
+            "assay of the compound itself.",
+        )  # fmt: skip
+    if assay is None or of in ("as_is", "anhydrous", "hydrate") or not substance.formula:
+        return
+    if not is_part_of_formula(of, substance.formula):
+        row.error("assay_of", "not_a_part", f"{of} is no part of {substance.formula}.")
+        return
+    highest = 100 * molar_mass_of_formula(of) / float(substance.molar_mass_g_per_mol or 1)
+    if float(assay) > highest * 1.001:
+        row.error("assay_pct", "more_than_all", f"At most {highest:.1f} % of {of} can be in it.")
 
 
 def _amount(row: Row) -> tuple[str, int]:

@@ -82,12 +82,15 @@ def _lines(errors: Any) -> tuple[FieldProblem, ...]:
 
 
 def require_known_parameters(request: Any, known: set[str]) -> None:
-    """Refuse a query parameter nobody reads; a typo must not return everything."""
+    """Refuse a query parameter nobody reads, or one given twice; a typo must not pass."""
+    repeated = sorted(n for n in request.query_params if len(request.query_params.getlist(n)) > 1)
+    if repeated:
+        raise MalformedRequest(f"Given more than once: {', '.join(repeated)}. Give each once.")
     unknown = sorted(set(request.query_params) - known)
     if unknown:
         raise UnknownField(
             f"Not known here: {', '.join(unknown)}. "
-            f"This list takes: {', '.join(sorted(known)) or 'no parameters'}.",
+            f"This address takes: {', '.join(sorted(known)) or 'no parameters'}.",
             errors=tuple(
                 FieldProblem(name, "unknown_parameter", "Remove it or correct its name.")
                 for name in unknown

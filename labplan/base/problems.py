@@ -110,11 +110,17 @@ def not_found(request: HttpRequest, exception: Exception) -> JsonResponse:
     return plain_problem(404, "not_found", f"Nothing is served at {request.path}.")
 
 
+_TITLES = {
+    kind.code: kind.title
+    for kind in (domain.NotFound, domain.MalformedRequest, domain.BodyTooLarge)
+}
+
+
 def plain_problem(status: int, code: str, detail: str) -> JsonResponse:
     """A problem outside the API's views, where no serializer is at hand."""
     body = {
         "type": TYPE_PREFIX + code,
-        "title": code.replace("_", " "),
+        "title": _TITLES.get(code, code.replace("_", " ")),
         "status": status,
         "code": code,
         "detail": detail,

@@ -14,7 +14,20 @@ from labplan.base.pagination import NewestFirstPagination
 PAGE_PARAMETERS = {"cursor", "page_size"}
 
 
-class ListView(APIView):
+class LookView(APIView):
+    """A view that refuses query parameters it does not read."""
+
+    parameters: ClassVar[set[str]] = set()
+
+    def initial(self, request: Any, *args: Any, **kwargs: Any) -> None:
+        super().initial(request, *args, **kwargs)
+        require_known_parameters(request, self.parameters_of(request))
+
+    def parameters_of(self, request: Any) -> set[str]:
+        return self.parameters
+
+
+class ListView(LookView):
     """GET a page of rows. Subclasses name the filters and give the rows and their form."""
 
     filters: ClassVar[set[str]] = set()
@@ -23,7 +36,6 @@ class ListView(APIView):
     pagination: ClassVar[type[NewestFirstPagination]] = NewestFirstPagination
 
     def get(self, request: Any, **kwargs: Any) -> Response:
-        require_known_parameters(request, self.filters | PAGE_PARAMETERS)
         wanted = {
             name: request.query_params[name]
             for name in self.filters
@@ -33,6 +45,9 @@ class ListView(APIView):
         paginator = self.pagination()
         page = paginator.paginate_queryset(self.rows(request, wanted, **kwargs), request, self)
         return paginator.get_paginated_response([self.show(row) for row in page or []])
+
+    def parameters_of(self, request: Any) -> set[str]:
+        return self.filters | PAGE_PARAMETERS if request.method == "GET" else set()
 
     @abstractmethod
     def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Any]:

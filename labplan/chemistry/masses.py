@@ -28,6 +28,24 @@ def monoisotopic_mass_of_formula(formula: str) -> float:
     return _sum_over(formula, _TABLE.GetMostCommonIsotopeMass)
 
 
+def atoms_of_formula(formula: str) -> dict[str, int]:
+    """How many atoms of each element a plain formula counts.
+
+    >>> atoms_of_formula("C2H6O")
+    {'C': 2, 'H': 6, 'O': 1}
+    """
+    counts: dict[str, int] = {}
+    for symbol, count in _TOKEN.findall(formula):
+        counts[symbol] = counts.get(symbol, 0) + int(count or 1)
+    return counts
+
+
+def is_part_of_formula(part: str, whole: str) -> bool:
+    """Whether a compound of formula `whole` could contain `part` once."""
+    atoms = atoms_of_formula(whole)
+    return all(atoms.get(symbol, 0) >= n for symbol, n in atoms_of_formula(part).items())
+
+
 def _sum_over(formula: str, mass_of) -> float:  # type: ignore[no-untyped-def]
     tokens = _TOKEN.findall(formula)
     if not formula or "".join(symbol + count for symbol, count in tokens) != formula:

@@ -63,6 +63,10 @@ def read_molecule(smiles: str) -> Chem.Mol:
 
 
 def _parse(text: str) -> Chem.Mol:
+    if not text.isascii() or not text.isprintable():
+        raise TargetProblem(
+            "smiles_unreadable", "The SMILES has a character that no SMILES has; type it again."
+        )
     if any(character.isspace() for character in text):
         raise TargetProblem(
             "smiles_unreadable", "The SMILES has a space in it; give the structure alone."

@@ -23,7 +23,7 @@ class Choice:
 
     bottle: ShelfBottle | None
     passed_over: tuple[PassedOver, ...]
-    largest_usable: float
+    largest_text: str
     fit_exists: bool
 
 
@@ -61,9 +61,16 @@ def choose_bottle(
     return Choice(
         bottle=best[0] if best else None,
         passed_over=tuple(sorted(passed, key=lambda p: p.bottle)),
-        largest_usable=max((b.usable for b, _ in fit), default=0.0),
+        largest_text=_largest_text([bottle for bottle, _ in fit]),
         fit_exists=bool(fit),
     )
+
+
+def _largest_text(fit: list[ShelfBottle]) -> str:
+    if not fit:
+        return "none"
+    largest = max(fit, key=lambda bottle: (bottle.usable, bottle.code))
+    return _in_words(largest, max(largest.usable, 0.0))
 
 
 def _too_little(bottle: ShelfBottle, needed: float) -> str:

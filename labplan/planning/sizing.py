@@ -284,7 +284,7 @@ def _shortage(stage: str, need: Need, choice: Choice) -> Shortage:
         detail = "no single bottle holds enough: " + "; ".join(
             f"{p.bottle} {p.reason}" for p in choice.passed_over
         )
-    largest = f"{choice.largest_usable:.6g}" if choice.fit_exists else "0"
+    largest = choice.largest_text if choice.fit_exists else "none"
     return Shortage(
         stage,
         need.role,

@@ -203,7 +203,7 @@ def _where(charge: dict[str, Any]) -> str:
 
 def _equivalents(charge: dict[str, Any]) -> str:
     planned = charge["equivalents_planned"]
-    return f"{planned}: {charge['equivalents']}" if planned else ""
+    return f"{float(planned):.3f}: {float(charge['equivalents']):.3f}" if planned else ""
 
 
 def _print_steps(console: Console, stage: dict[str, Any]) -> None:

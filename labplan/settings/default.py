@@ -11,10 +11,11 @@ import os
 from pathlib import Path
 
 from labplan.settings.database import database_from_url
+from labplan.settings.places import known_time_zone
 from labplan.settings.secret import read_or_make_secret_key
 
 BASE_DIR = Path(__file__).resolve().parents[2]
-DATA_DIR = Path(os.environ.get("LABPLAN_DATA_DIR", BASE_DIR / "var"))
+DATA_DIR = Path(os.environ.get("LABPLAN_DATA_DIR") or BASE_DIR / "var")
 
 DEBUG = False
 SECRET_KEY = os.environ.get("LABPLAN_SECRET_KEY") or read_or_make_secret_key(DATA_DIR)
@@ -52,7 +53,7 @@ AUTH_USER_MODEL = "base.Person"
 
 USE_TZ = True
 TIME_ZONE = "UTC"
-LAB_TIME_ZONE = os.environ.get("LABPLAN_TIME_ZONE", "UTC")
+LAB_TIME_ZONE = known_time_zone(os.environ.get("LABPLAN_TIME_ZONE") or "UTC")
 USE_I18N = False
 # A body is a few fields; stock lists go through the import command.
 DATA_UPLOAD_MAX_MEMORY_SIZE = 1_000_000

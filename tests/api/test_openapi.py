@@ -122,7 +122,7 @@ def test_a_list_takes_exactly_the_parameters_described(
         if p["in"] == "query"
     }
     refused = lab.client().get(planted.path(name) + "?surely_unknown=1").json()
-    taken = refused["detail"].partition("This list takes: ")[2].rstrip(".").split(", ")
+    taken = refused["detail"].partition("This address takes: ")[2].rstrip(".").split(", ")
     assert set(taken) == described
 
 

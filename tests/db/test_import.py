@@ -27,6 +27,8 @@ SOUND = {
     "code": "T-1", "substance": "Toluene", "amount": "1", "unit": "L", "place": "S1",
     "received_on": "2026-06-15",
 }  # fmt: skip
+# BF3 is 47.8 % of its etherate: a label of 46.5 % counts it.
+ETHERATE = {"substance": "Boron trifluoride diethyl etherate", "unit": "mL"}
 POWDER = {"substance": "Chalk", "kind": "material", "unit": "g"}
 
 
@@ -184,6 +186,12 @@ ROW_ERRORS: list[tuple[dict[str, str], str, str]] = [
     ({"assay_pct": "101"}, "assay_pct", "out_of_range"),
     ({"assay_pct": "99.00001"}, "assay_pct", "too_many_digits"),
     ({"assay_of": "water?"}, "assay_of", "not_a_formula"),
+    ({"assay_pct": "46.5", "assay_of": "BF3"}, "assay_of", "not_a_part"),
+    ({**ETHERATE, "assay_pct": "46.5"}, "assay_of", "missing"),
+    ({**ETHERATE, "assay_pct": "46.5", "assay_of": "UF6"}, "assay_of", "not_a_part"),
+    ({**ETHERATE, "assay_pct": "60", "assay_of": "BF3"}, "assay_pct", "more_than_all"),
+    ({"unit": "pieces"}, "unit", "not_countable"),
+    ({"opened_on": "2026-06-14"}, "opened_on", "before_receipt"),
     ({"assay_of": "CH" * 30}, "assay_of", "too_long"),
     ({"assay_kind": "guess"}, "assay_kind", "not_a_choice"),
     ({"status": "lost"}, "status", "not_a_choice"),

@@ -362,3 +362,44 @@ def test_the_date_is_in_the_document_and_no_float_is() -> None:
     document = plan_document(plan(demo_shelf()), as_of=date(2026, 12, 1))
     assert document["as_of"] == "2026-12-01"
     canonical_bytes(document)  # raises on a float
+
+
+def test_a_shortage_says_the_largest_amount_with_its_unit() -> None:
+    planned = plan(changed(demo_shelf(), "OCT-1", usable=1.2))
+    (short,) = planned.route.shortages  # type: ignore[union-attr]
+    assert (short.role, short.largest_usable) == ("acceptor", "1.2 mL")
+
+
+def test_the_water_of_a_hydrated_promoter_is_counted() -> None:
+    """0.0965 x 10 mmol of Bi(OTf)3.4H2O bring 3.86 mmol of water: 40 % of the donor."""
+    wished = make_plan(
+        read_target(OCTYL_GLUCOSIDE), TWO_GRAMS, demo_shelf(), as_of=AS_OF,
+        wishes=Wishes(promoter="bismuth-triflate"),
+    )  # fmt: skip
+    water = wished.route.stages[0].water  # type: ignore[union-attr]
+    assert water is not None
+    assert dict(water.lines)["promoter"] == pytest.approx(3.86, abs=0.01)
+    assert water.donor_share_pct > 40
+    assert "water_takes_donor" in [w.code for w in wished.route.warnings]  # type: ignore[union-attr]
+
+
+@pytest.mark.parametrize(
+    ("promoter", "halide"),
+    [("boron-trifluoride-diethyl-etherate", "glycosyl fluoride"),
+     ("indium-tribromide", "glycosyl bromide"), ("bismuth-triflate", None)],
+)  # fmt: skip
+def test_only_the_promoters_own_halide_is_expected(promoter: str, halide: str | None) -> None:
+    planned = make_plan(
+        read_target(OCTYL_GLUCOSIDE), TWO_GRAMS, demo_shelf(), as_of=AS_OF,
+        wishes=Wishes(promoter=promoter),
+    )  # fmt: skip
+    names = [s.name for s in planned.expectations.side_products]  # type: ignore[union-attr]
+    assert [name for name in names if name.startswith("glycosyl")] == ([halide] if halide else [])
+
+
+def test_a_long_chain_glycoside_is_not_taken_up_in_water() -> None:
+    free = "CCCCCCCCO[C@@H]1O[C@H](CO)[C@@H](O)[C@H](O)[C@H]1O"
+    planned = plan(demo_shelf(), Scale(product_mass_mg=1000.0), free)
+    last = planned.route.stages[-1]  # type: ignore[union-attr]
+    assert "water" not in {charge.key for charge in last.charges}
+    assert all("take up in water" not in step.text for step in last.steps)

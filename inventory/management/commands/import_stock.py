@@ -3,16 +3,17 @@
 from pathlib import Path
 from typing import Any
 
-from django.core.management.base import BaseCommand, CommandError, CommandParser
+from django.core.management.base import CommandError, CommandParser
 from rich.progress import Progress
 
 from inventory.services import import_stock
+from labplan.base.commands import LabCommand
 from labplan.base.errors import DomainError
 from labplan.base.models import Person
 from labplan.base.rights import actor_for
 
 
-class Command(BaseCommand):
+class Command(LabCommand):
     help = "Import bottles (and places) from CSV: everything or nothing."
 
     def add_arguments(self, parser: CommandParser) -> None:

@@ -2,12 +2,13 @@
 
 from typing import Any
 
-from django.core.management.base import BaseCommand, CommandError
+from django.core.management.base import CommandError
 
 from inventory.services.verify import verify_ledger
+from labplan.base.commands import LabCommand
 
 
-class Command(BaseCommand):
+class Command(LabCommand):
     help = "Re-add every book, look for gaps, compare with balances and open holds."
 
     def handle(self, *args: Any, **options: Any) -> None:

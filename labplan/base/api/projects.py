@@ -4,13 +4,12 @@ from typing import Any
 
 from django.db.models import QuerySet
 from rest_framework.response import Response
-from rest_framework.views import APIView
 
 from labplan.base import selectors
 from labplan.base.api import schema
 from labplan.base.models import Project
 from labplan.base.pagination import ByCodePagination
-from labplan.base.views import ListView
+from labplan.base.views import ListView, LookView
 
 
 def show_project(project: Project) -> dict[str, Any]:
@@ -29,7 +28,7 @@ class ProjectList(ListView):
 
 
 @schema.project_detail
-class ProjectDetail(APIView):
+class ProjectDetail(LookView):
     def get(self, request: Any, code: str) -> Response:
         project = selectors.get_project(actor=request.user, code=code)
         members = project.memberships.select_related("person").order_by("person__code")

@@ -350,8 +350,8 @@ def _purify(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
         " ".join(plan.method["left_over"]),
         uses=("silica", *eluents),
         watch="acetate of the alcohol runs in front of the product, donor and hemiacetal behind "
-        "it, the alcohol where a reference shows it; do not leave the product on the silica; pool only "
-        "what shows one spot",
+        "it, the alcohol where a reference shows it; do not leave the product on the silica; pool "
+        "only what shows one spot",
     )
 
 

@@ -7,13 +7,12 @@ from typing import Any
 from django.db.models import QuerySet
 from django.http import HttpResponse
 from rest_framework.response import Response
-from rest_framework.views import APIView
 
 from labplan.base.errors import FieldProblem, InvalidValue, NotFound
-from labplan.base.fields import StrictSerializer, require_known_parameters
+from labplan.base.fields import StrictSerializer
 from labplan.base.idempotency import answer_once, claim_from
 from labplan.base.preconditions import is_known, require_match
-from labplan.base.views import ListView
+from labplan.base.views import ListView, LookView
 from labplan.procedures import life, selectors, services
 from labplan.procedures.api import schema, shapes
 from labplan.procedures.api.orders import read_order, read_preview
@@ -24,7 +23,7 @@ from labplan.procedures.sheet.pdf import PAPERS, sheet_pdf
 
 
 @schema.route_preview
-class RoutePreview(APIView):
+class RoutePreview(LookView):
     """Moves nothing, so that it needs neither a key nor a token of scope write."""
 
     def post(self, request: Any) -> Response:
@@ -65,7 +64,7 @@ def _accepted(procedure: Procedure) -> Response:
 
 
 @schema.procedure_detail
-class ProcedureDetail(APIView):
+class ProcedureDetail(LookView):
     def get(self, request: Any, code: str) -> Response:
         procedure = selectors.get_procedure(actor=request.user, code=code)
         headers = {"ETag": shapes.etag(procedure)}
@@ -75,7 +74,7 @@ class ProcedureDetail(APIView):
 
 
 @schema.procedure_document
-class ProcedureDocument(APIView):
+class ProcedureDocument(LookView):
     """The canonical bytes as stored; their SHA-256 is the ETag."""
 
     def get(self, request: Any, code: str) -> HttpResponse:
@@ -89,7 +88,7 @@ class ProcedureDocument(APIView):
 
 
 @schema.procedure_sheet_html
-class ProcedureSheetHtml(APIView):
+class ProcedureSheetHtml(LookView):
     def perform_content_negotiation(self, request: Any, force: bool = False) -> Any:
         """The sheet is HTML and its refusals are problems, whatever Accept asks for."""
         return super().perform_content_negotiation(request, force=True)
@@ -101,15 +100,16 @@ class ProcedureSheetHtml(APIView):
 
 
 @schema.procedure_sheet_pdf
-class ProcedureSheetPdf(APIView):
+class ProcedureSheetPdf(LookView):
     """The sheet for a printer. The same state, document and paper give the same bytes."""
+
+    parameters = {"paper"}
 
     def perform_content_negotiation(self, request: Any, force: bool = False) -> Any:
         """The sheet is a PDF and its refusals are problems, whatever Accept asks for."""
         return super().perform_content_negotiation(request, force=True)
 
     def get(self, request: Any, code: str) -> HttpResponse:
-        require_known_parameters(request, {"paper"})
         paper = _paper(request)
         _document(request, code)
         pdf = sheet_pdf(view_of(selectors.get_procedure(actor=request.user, code=code)), paper)
@@ -136,7 +136,7 @@ def _document(request: Any, code: str) -> Document:
 
 
 @schema.procedure_cancel
-class ProcedureCancel(APIView):
+class ProcedureCancel(LookView):
     def post(self, request: Any, code: str) -> Response:
         StrictSerializer(data=request.data).read()
         claim = claim_from(request, route="procedure.cancel", render=_shown)

@@ -10,6 +10,7 @@ from contextlib import contextmanager
 from typing import Any
 from wsgiref.simple_server import WSGIRequestHandler
 
+from django.core.management.base import CommandError
 from django.core.servers.basehttp import ThreadedWSGIServer
 from django.core.wsgi import get_wsgi_application
 from django.db import connection
@@ -25,7 +26,10 @@ class _QuietHandler(WSGIRequestHandler):
 @contextmanager
 def running_server(port: int = 0) -> Iterator[str]:
     """Serve on a port of this machine (0: any free one); yield the address."""
-    server = ThreadedWSGIServer(("127.0.0.1", port), _QuietHandler)
+    try:
+        server = ThreadedWSGIServer(("127.0.0.1", port), _QuietHandler)
+    except (OSError, OverflowError) as error:
+        raise CommandError(f"Port {port} cannot be served on: {error}.") from error
     server.set_app(get_wsgi_application())
     thread = threading.Thread(target=server.serve_forever, kwargs={"poll_interval": 0.05})
     thread.start()

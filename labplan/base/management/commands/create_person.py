@@ -2,14 +2,15 @@
 
 from typing import Any
 
-from django.core.management.base import BaseCommand, CommandError, CommandParser
+from django.core.management.base import CommandError, CommandParser
 from django.db import transaction
 
+from labplan.base.commands import LabCommand, checked_code, checked_text
 from labplan.base.events import record_event
 from labplan.base.models import Person, PersonName
 
 
-class Command(BaseCommand):
+class Command(LabCommand):
     help = "Make a person: a code for ledger and records, and a name that can be erased."
 
     def add_arguments(self, parser: CommandParser) -> None:
@@ -25,12 +26,12 @@ class Command(BaseCommand):
             role = Person.SiteRole.ADMINISTRATOR
         if options["auditor"]:
             role = Person.SiteRole.AUDITOR
-        code = options["code"]
+        code = checked_code(options["code"])
         with transaction.atomic(durable=True):
             if Person.objects.filter(code=code).exists():
                 raise CommandError(f"There is a person {code} already.")
             person = Person.objects.create_user(code, site_role=role)
-            PersonName.objects.create(person=person, full_name=options["name"])
+            PersonName.objects.create(person=person, full_name=checked_text(options["name"], 120))
             record_event(
                 actor_code="OPERATOR",
                 kind="person.created",

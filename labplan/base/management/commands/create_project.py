@@ -2,15 +2,16 @@
 
 from typing import Any
 
-from django.core.management.base import BaseCommand, CommandError, CommandParser
+from django.core.management.base import CommandError, CommandParser
 from django.db import transaction
 
 from labplan.base import clock
+from labplan.base.commands import LabCommand, checked_code, checked_text
 from labplan.base.events import record_event
 from labplan.base.models import Membership, Person, Project
 
 
-class Command(BaseCommand):
+class Command(LabCommand):
     help = "Make a project to charge work to, with its members."
 
     def add_arguments(self, parser: CommandParser) -> None:
@@ -25,13 +26,13 @@ class Command(BaseCommand):
         )
 
     def handle(self, *args: Any, **options: Any) -> None:
-        code = options["code"]
+        code = checked_code(options["code"])
         members = [_read_member(text) for text in options["member"]]
         with transaction.atomic(durable=True):
             if Project.objects.filter(code=code).exists():
                 raise CommandError(f"There is a project {code} already.")
             project = Project.objects.create(
-                code=code, title=options["title"], created_at=clock.now()
+                code=code, title=checked_text(options["title"], 160), created_at=clock.now()
             )
             for person, role in members:
                 Membership.objects.create(person=person, project=project, role=role)

@@ -3,12 +3,13 @@
 import threading
 from typing import Any
 
-from django.core.management.base import BaseCommand, CommandParser
+from django.core.management.base import CommandParser
 
+from labplan.base.commands import LabCommand
 from labplan.base.outbox import deliver_waiting
 
 
-class Command(BaseCommand):
+class Command(LabCommand):
     help = "Run the work that waits in the outbox, here and one after the other."
 
     def add_arguments(self, parser: CommandParser) -> None:
@@ -17,6 +18,8 @@ class Command(BaseCommand):
 
     def handle(self, *args: Any, **options: Any) -> None:
         pause = threading.Event()
+        if not options["once"]:
+            self.stdout.write("Delivering what waits in the outbox, until Ctrl-C.")
         while True:
             if deliver_waiting():
                 continue
