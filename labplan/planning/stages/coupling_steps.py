@@ -140,9 +140,7 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
             if by_syringe
             else "in one portion, quickly: it takes up water from the air."
         ),
-        "Draw some of the quench into syringe and needle and push it back, at once."
-        if by_syringe
-        else "",
+        "Empty and rinse syringe and needle into the open quench at once." if by_syringe else "",
         uses=("promoter",),
         watch="inside not above 5 °C; slow the addition if it climbs"
         if cold
@@ -154,7 +152,7 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         ("Let it come to room temperature" if cold else "Keep it at room temperature")
         + f" (about {temperature['reaction']} °C) and stir under "
         f"argon for {hours['low']} to {hours['high']} h, usually {hours['usual']} h."
-        + (" Keep an azide at or below 20 °C." if _has_azide(plan) else ""),
+        + (" Keep it at or below 20 °C: it is an azide." if _has_azide(plan) else ""),
         "After 1 h and then every hour shake two drops with "
         + ("water" if plan.has_acid else "saturated sodium hydrogencarbonate")
         + " and ethyl acetate and spot the upper layer beside donor and alcohol.",
@@ -284,8 +282,8 @@ def _extract(writer: Writer, plan: CouplingPlan) -> None:
         "An emulsion: let it stand, add a little brine, or filter it again."
         if not plan.has_acid
         else "Use water and brine only, no base.",
-        "Then take out what is left of the azido alcohol with three equal portions of "
-        f"{writer.text('azide_water')}."
+        "Then wash in three equal portions with "
+        f"{writer.text('azide_water')}, to take out what is left of the azido alcohol."
         if writer.has("azide_water")
         else "",
         uses=(
