@@ -148,10 +148,12 @@ def _print_stage(console: Console, stage: dict[str, Any]) -> None:
 def _print_charges(console: Console, stage: dict[str, Any]) -> None:
     table = _table(
         f"Charges; the {stage['limiting']} is limiting",
-        ("Role", False), ("Substance", False), ("Bottle, place", False),
+        ("Role", False), ("Substance", False), ("Bottle,\nplace", False),
         ("Equivalents\nplanned: real", True), ("mmol", True), ("Weigh or\nmeasure", True),
     )  # fmt: skip
-    table.columns[0].max_width = 10
+    table.columns[0].max_width = max(
+        len(word) for charge in stage["charges"] for word in charge["role"].split()
+    )
     for column in table.columns[2:]:
         column.no_wrap = True
     for charge in stage["charges"]:
