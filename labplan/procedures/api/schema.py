@@ -29,7 +29,8 @@ from labplan.base.api.describe import (
 )
 from labplan.procedures import life
 from labplan.procedures.api.orders import OrderSerializer, PreviewSerializer
-from labplan.procedures.api.plan_schema import DOCUMENT, PREVIEW, REASON
+from labplan.procedures.api.plan_parts import REASON
+from labplan.procedures.api.plan_schema import DOCUMENT, PREVIEW
 from labplan.procedures.sheet.pdf import PAPERS
 
 TAG = "Procedures"
