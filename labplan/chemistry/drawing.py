@@ -18,6 +18,7 @@ from rdkit.Chem import rdAbbreviations, rdDepictor
 from rdkit.Chem.Draw import rdMolDraw2D
 from rdkit.Geometry import Point2D
 
+from labplan.chemistry.structures import canonical_smiles
 from labplan.chemistry.sugars import SugarRing, find_sugar_rings
 
 BOND_ANGSTROM = 1.5
@@ -61,10 +62,7 @@ def draw(smiles: str) -> Drawing:
 
     The same SMILES gives the same text in one pinned environment.
     """
-    mol = Chem.MolFromSmiles(smiles)
-    if mol is None:
-        raise ValueError(f"unreadable SMILES: {smiles}")
-    return _drawn(Chem.MolToSmiles(mol))
+    return _drawn(canonical_smiles(smiles))
 
 
 @lru_cache(maxsize=512)

@@ -102,11 +102,16 @@ def describe(mol: Chem.Mol) -> Structure:
 
 def describe_smiles(smiles: str) -> Structure:
     """Describe a structure of the packaged tables or of the stock; ValueError if unreadable."""
+    return _describe(canonical_smiles(smiles))
+
+
+def canonical_smiles(smiles: str) -> str:
+    """RDKit's canonical isomeric SMILES; ValueError if unreadable."""
     with rdBase.BlockLogs():
         mol = Chem.MolFromSmiles(smiles)
     if mol is None:
         raise ValueError(f"unreadable SMILES: {smiles}")
-    return _describe(Chem.MolToSmiles(mol))
+    return str(Chem.MolToSmiles(mol))
 
 
 @lru_cache(maxsize=2048)
