@@ -180,9 +180,6 @@ class Stage:
     charges: tuple[Charge, ...]
     vessel_ml: int
     yield_pct: tuple[float, float, float]  # low, planned, high
-    expected_mass_mg: float
-    expected_low_mg: float
-    expected_high_mg: float
     gross_mass_mg: float
     gross_means: str
     water: Water | None = None
@@ -190,6 +187,21 @@ class Stage:
     adiabatic_rise_k: float | None = None
     ions: tuple[Ion, ...] = ()
     steps: tuple[Step, ...] = ()
+
+    @property
+    def expected_low_mg(self) -> float:
+        return self._expected_mg(self.yield_pct[0])
+
+    @property
+    def expected_mass_mg(self) -> float:
+        return self._expected_mg(self.yield_pct[1])
+
+    @property
+    def expected_high_mg(self) -> float:
+        return self._expected_mg(self.yield_pct[2])
+
+    def _expected_mg(self, pct: float) -> float:
+        return self.scale_mmol * self.product.molar_mass_g_per_mol * pct / 100
 
 
 @dataclass(frozen=True)

@@ -8,8 +8,10 @@ from labplan.planning import vessels
 from labplan.planning.methods import Method
 from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
+    brine_salt_need,
     bulk_need,
-    expected_mg,
+    extraction_need,
+    extraction_volume_ml,
     mass_of_mg,
     readable,
     salt_ions,
@@ -134,30 +136,19 @@ def _add_work_up(
 ) -> None:
     work_up = plan.method["work_up"]
     ice_ml = anhydride_ml * float(work_up["ice_water_volumes"])
-    extraction_ml = ice_ml * float(work_up["extraction_volume_share"]) * int(work_up["extractions"])
+    extraction_ml = extraction_volume_ml(work_up, ice_ml)
     base_ml = ice_ml * float(work_up["bicarbonate_volume_share"])
     brine_ml = ice_ml * float(work_up["brine_volume_share"])
     drying_mmol = plan.donor_mmol * float(work_up["drying_ml_per_mmol"])
     needs = [
-        bulk_need(
-            "extraction_solvent",
-            "extraction",
-            work_up["extraction_solvent"],
-            volume_ml=extraction_ml,
-            outward=True,
-        ),
+        extraction_need(work_up, extraction_ml),
         bulk_need(
             "wash_base",
             "wash",
             work_up["bicarbonate"],
             mass_mg=base_ml * float(work_up["bicarbonate_g_per_ml_water"]) * 1000,
         ),
-        bulk_need(
-            "brine_salt",
-            "brine",
-            work_up["brine_salt"],
-            mass_mg=brine_ml * float(work_up["brine_g_per_ml_water"]) * 1000,
-        ),
+        brine_salt_need(work_up, brine_ml),
         bulk_need(
             "drying_agent",
             "drying agent",
@@ -195,7 +186,8 @@ def _stage(
 ) -> tuple[Stage, list[RouteWarning]]:
     charges, method, target = sizer.charges, plan.method, plan.target
     rise_k = adiabatic_rise_k(plan.hydroxyls, sugar_mmol, charges)
-    low, planned, high = expected_mg(sugar_mmol, target.donor, method["yield_pct"])
+    yield_pct = yield_triple(method["yield_pct"])
+    planned_mg = sugar_mmol * target.donor.molar_mass_g_per_mol * yield_pct[1] / 100
     assay = float(method["product_assay"]["pct"])
     stage = Stage(
         number=plan.stage_number,
@@ -211,11 +203,8 @@ def _stage(
         vessel_ml=vessels.smallest_that_holds(
             vessels.FLASKS_ML, (charges["anhydride"].volume_ml or 0.0) / FLASK_FILL
         ),
-        yield_pct=yield_triple(method["yield_pct"]),
-        expected_mass_mg=planned,
-        expected_low_mg=low,
-        expected_high_mg=high,
-        gross_mass_mg=planned / (assay / 100),
+        yield_pct=yield_pct,
+        gross_mass_mg=planned_mg / (assay / 100),
         gross_means=f"the dried crude at {assay:g} %",
         adiabatic_rise_k=rise_k,
         ions=salt_ions("peracetate", target.donor),

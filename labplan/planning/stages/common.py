@@ -1,4 +1,6 @@
-"""What all stages share: needs for salts and solvents, expected masses, ions."""
+"""What all stages share: needs of substances, salts and solvents, yields, ions."""
+
+from typing import Any
 
 from labplan.chemistry.coupling import Target
 from labplan.chemistry.masses import adduct_mz
@@ -7,6 +9,8 @@ from labplan.chemistry.structures import Structure
 from labplan.planning.figures import in_sentence
 from labplan.planning.sizing import Need
 from labplan.planning.values import Charge, Ion
+
+WorkUp = dict[str, Any]  # the work_up of a method
 
 MOLAR_VOLUME_25C_L_PER_MOL = 24.465  # ideal gas at 25 °C and 101.325 kPa
 BICARBONATE_G_PER_MOL = 84.006
@@ -41,6 +45,47 @@ def bulk_need(
     )
 
 
+def structure_need(
+    role: str, name: str | None, structure: Structure, amount_mmol: float, *, equivalents: float
+) -> Need:
+    """A donor or an acceptor: any fit bottle of this very structure."""
+    return Need(
+        key=role,
+        role=role,
+        group="reaction",
+        substances=(),
+        name=name or structure.smiles,
+        inchikey=structure.inchikey,
+        amount_mmol=amount_mmol,
+        equivalents_planned=equivalents,
+        equivalents_of="donor",
+    )
+
+
+def extraction_volume_ml(work_up: WorkUp, aqueous_ml: float) -> float:
+    """Solvent of all extractions together."""
+    return aqueous_ml * float(work_up["extraction_volume_share"]) * int(work_up["extractions"])
+
+
+def extraction_need(work_up: WorkUp, volume_ml: float) -> Need:
+    return bulk_need(
+        "extraction_solvent",
+        "extraction",
+        work_up["extraction_solvent"],
+        volume_ml=volume_ml,
+        outward=True,
+    )
+
+
+def brine_salt_need(work_up: WorkUp, brine_ml: float) -> Need:
+    return bulk_need(
+        "brine_salt",
+        "brine",
+        work_up["brine_salt"],
+        mass_mg=brine_ml * float(work_up["brine_g_per_ml_water"]) * 1000,
+    )
+
+
 def acceptor_carbons(target: Target) -> int:
     """Carbon atoms of the alcohol: what decides whether it, or its glycoside, likes water."""
     return sum(letter in "Cc" for letter in target.acceptor.smiles)
@@ -56,15 +101,6 @@ def water_need(key: str, role: str, volume_ml: float) -> Need:
         name="Water, deionised",
         bulk_volume_ml=volume_ml,
     )
-
-
-def expected_mg(
-    amount_mmol: float, product: Structure, yields: dict[str, float]
-) -> tuple[float, float, float]:
-    """Pure product [mg] at the low, planned and high yield."""
-    theory = amount_mmol * product.molar_mass_g_per_mol
-    low, planned, high = (theory * yields[name] / 100 for name in ("low", "planned", "high"))
-    return low, planned, high
 
 
 def yield_triple(yields: dict[str, float]) -> tuple[float, float, float]:

@@ -11,11 +11,14 @@ from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
     BICARBONATE_G_PER_MOL,
     MOLAR_VOLUME_25C_L_PER_MOL,
+    brine_salt_need,
     bulk_need,
-    expected_mg,
+    extraction_need,
+    extraction_volume_ml,
     liquid_ml,
     readable,
     salt_ions,
+    structure_need,
     water_need,
     yield_triple,
 )
@@ -59,17 +62,7 @@ def acceptor_equivalents(target: Target, method: Method) -> float:
 
 
 def donor_need(target: Target, donor_mmol: float) -> Need:
-    return Need(
-        key="donor",
-        role="donor",
-        group="reaction",
-        substances=(),
-        name=target.donor_name or target.donor.smiles,
-        inchikey=target.donor.inchikey,
-        amount_mmol=donor_mmol,
-        equivalents_planned=1.0,
-        equivalents_of="donor",
-    )
+    return structure_need("donor", target.donor_name, target.donor, donor_mmol, equivalents=1.0)
 
 
 def size_coupling(plan: CouplingPlan, sizer: Sizer) -> tuple[Stage | None, list[RouteWarning]]:
@@ -111,16 +104,12 @@ def _solvent_ml(plan: CouplingPlan, donor_mmol: float) -> float:
 def _reaction_needs(plan: CouplingPlan, donor_mmol: float) -> tuple[Need, ...]:
     target, promoter = plan.target, plan.method["promoter"]
     return (
-        Need(
-            key="acceptor",
-            role="acceptor",
-            group="reaction",
-            substances=(),
-            name=target.acceptor_name or target.acceptor.smiles,
-            inchikey=target.acceptor.inchikey,
-            amount_mmol=donor_mmol * plan.acceptor_equiv,
-            equivalents_planned=plan.acceptor_equiv,
-            equivalents_of="donor",
+        structure_need(
+            "acceptor",
+            target.acceptor_name,
+            target.acceptor,
+            donor_mmol * plan.acceptor_equiv,
+            equivalents=plan.acceptor_equiv,
         ),
         Need(
             key="promoter",
@@ -178,22 +167,13 @@ def _bicarbonate_mmol(plan: CouplingPlan, acid_mmol: float) -> float:
 def _add_work_up(sizer: Sizer, plan: CouplingPlan, reaction_ml: float, acid_mmol: float) -> None:
     work_up = plan.method["work_up"]
     brine_ml = reaction_ml * float(work_up["brine_volume_share"])
-    extraction_ml = (
-        reaction_ml * float(work_up["extraction_volume_share"]) * int(work_up["extractions"])
-    )
+    extraction_ml = extraction_volume_ml(work_up, reaction_ml)
     base_mg = _bicarbonate_mmol(plan, acid_mmol) * BICARBONATE_G_PER_MOL
-    salt_mg = brine_ml * float(work_up["brine_g_per_ml_water"]) * 1000
     drying_mg = (reaction_ml + extraction_ml) * float(work_up["drying_g_per_100_ml"]) * 10
     for need in (
         bulk_need("quench_base", "quench", work_up["bicarbonate"], mass_mg=base_mg),
-        bulk_need(
-            "extraction_solvent",
-            "extraction",
-            work_up["extraction_solvent"],
-            volume_ml=extraction_ml,
-            outward=True,
-        ),
-        bulk_need("brine_salt", "brine", work_up["brine_salt"], mass_mg=salt_mg),
+        extraction_need(work_up, extraction_ml),
+        brine_salt_need(work_up, brine_ml),
         bulk_need("drying_agent", "drying agent", work_up["drying_agent"], mass_mg=drying_mg),
     ):
         sizer.add(need)
@@ -280,7 +260,6 @@ def _stage(
         as_of=sizer.as_of,
         used_up_per_water=float(method["promoter"]["used_up_per_water"]),
     )
-    low, planned, high = expected_mg(donor_mmol, target.glycoside, method["yield_pct"])
     stage = Stage(
         number=plan.stage_number,
         kind="coupling",
@@ -294,9 +273,6 @@ def _stage(
         charges=tuple(charges.values()),
         vessel_ml=vessels.reaction_flask_ml(liquid_ml(reaction)),
         yield_pct=yield_triple(method["yield_pct"]),
-        expected_mass_mg=planned,
-        expected_low_mg=low,
-        expected_high_mg=high,
         gross_mass_mg=gross_mg,
         gross_means="product in full, and the alcohol that is left over",
         water=water,

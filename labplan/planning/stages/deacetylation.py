@@ -11,7 +11,6 @@ from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
     acceptor_carbons,
     bulk_need,
-    expected_mg,
     liquid_ml,
     readable,
     salt_ions,
@@ -139,7 +138,6 @@ def _add_resin(plan: DeacetylationPlan, sizer: Sizer, base_mmol: float) -> None:
 def _stage(plan: DeacetylationPlan, sizer: Sizer, amount_mmol: float) -> Stage:
     charges, method, target = sizer.charges, plan.method, plan.target
     reaction = [c for c in charges.values() if c.group == "reaction"]
-    low, planned, high = expected_mg(amount_mmol, target.structure, method["yield_pct"])
     return Stage(
         number=plan.stage_number,
         kind="deacetylation",
@@ -153,9 +151,6 @@ def _stage(plan: DeacetylationPlan, sizer: Sizer, amount_mmol: float) -> Stage:
         charges=tuple(charges.values()),
         vessel_ml=vessels.reaction_flask_ml(liquid_ml(reaction)),
         yield_pct=yield_triple(method["yield_pct"]),
-        expected_mass_mg=planned,
-        expected_low_mg=low,
-        expected_high_mg=high,
         gross_mass_mg=amount_mmol * target.structure.molar_mass_g_per_mol,
         gross_means="all that could form",
         ions=salt_ions("product", target.structure),
