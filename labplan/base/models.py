@@ -7,6 +7,7 @@ from django.db import models
 from django.db.models import Q
 
 from labplan.base.append_only import AppendOnlyModel
+from labplan.base.seal_tables import Seal, SealRun  # noqa: F401 - Django finds models here
 
 
 def one_of(field: str, choices: type[models.TextChoices], *, name: str) -> models.CheckConstraint:

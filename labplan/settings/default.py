@@ -3,6 +3,7 @@
 LABPLAN_DATA_DIR     where the SQLite file and the generated key live (default: var/)
 DATABASE_URL         sqlite:///path or postgresql://...  (default: SQLite in LABPLAN_DATA_DIR)
 LABPLAN_SECRET_KEY   Django's key (default: made once and kept in LABPLAN_DATA_DIR)
+LABPLAN_SEAL_KEY     key of the seals (default: made once and kept in LABPLAN_DATA_DIR)
 LABPLAN_HOSTS        host names served, separated by commas (default: this machine only)
 LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
 """
@@ -12,13 +13,15 @@ from pathlib import Path
 
 from labplan.settings.database import database_from_url
 from labplan.settings.places import known_time_zone
-from labplan.settings.secret import read_or_make_secret_key
+from labplan.settings.secret import read_or_make_secret_key, read_seal_key
 
 BASE_DIR = Path(__file__).resolve().parents[2]
 DATA_DIR = Path(os.environ.get("LABPLAN_DATA_DIR") or BASE_DIR / "var")
 
 DEBUG = False
 SECRET_KEY = os.environ.get("LABPLAN_SECRET_KEY") or read_or_make_secret_key(DATA_DIR)
+# Whoever has it can make seals: keep it and its copies apart from those of the database.
+SEAL_KEY = read_seal_key(DATA_DIR)
 ALLOWED_HOSTS = os.environ.get("LABPLAN_HOSTS", "127.0.0.1,localhost,[::1]").split(",")
 
 INSTALLED_APPS = [

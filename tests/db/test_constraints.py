@@ -12,6 +12,7 @@ from django.db import DataError, IntegrityError, connection, models, transaction
 
 from inventory.models import Bottle, Form, Hold, Movement, Place, Reservation, Substance
 from labplan.base.models import Person, Project
+from labplan.base.seal import seal_new
 from labplan.procedures.models import Document, Procedure
 from tests.db.bench import ON_POSTGRESQL, drop_trigger, insert, make_shelf, rows_of
 
@@ -34,6 +35,9 @@ def _stock() -> None:
     Document.objects.create(
         procedure=Procedure.objects.get(), attempt=1, body=b"{}", sha256="0" * 64, created_at=NOON
     )
+    seal_new()
+    for table in ("base_seal", "base_sealrun"):
+        drop_trigger(table, f"{table}_carries_on")
 
 
 def _key(model: type[models.Model], **where: Any) -> int:
@@ -82,6 +86,14 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
         "topic": "t", "payload": "{}", "state": "new", "attempts": 0, "created_at": NOON,
         "available_at": NOON, "last_error": "",
     },
+    "base_seal": lambda code: {
+        "number": 2, "sealed_at": NOON, "key_print": "p", "before": "0" * 64, "runs": 3, "rows": 3,
+        "digest": "1" * 64,
+    },
+    "base_sealrun": lambda code: {
+        "seal_id": 1, "book": code, "subject": 0, "first": 5, "last": 6, "marks": "m" * 16,
+        "digest": "1" * 64,
+    },
     "inventory_place": lambda code: {"code": code, "name": "n", "is_locked": False},
     "inventory_substance": lambda code: {
         "code": code, "kind": "defined", "name": "n", "search_key": "n", "cas": "",
@@ -118,7 +130,7 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     },
     "procedures_document": lambda code: {
         "procedure_id": _key(Procedure), "attempt": 2, "body": b"{}", "sha256": "0" * 64,
-        "created_at": NOON,
+        "seal": "", "created_at": NOON,
     },
 }  # fmt: skip
 TABLES = tuple(SOUND_ROWS)
@@ -158,6 +170,25 @@ CHECKS = [
     Attack("membership_role_known", "base_membership", {"role": "owner"}),
     Attack("api_token_scope_known", "base_apitoken", {"scope": "reed"}),
     Attack("outbox_state_known", "base_outboxmessage", {"state": "lost"}),
+    Attack("seal_number_whole", "base_seal", {"number": 0}),
+    Attack("seal_runs_whole", "base_seal", {"runs": 0}),
+    Attack("seal_rows_whole", "base_seal", {"rows": 0}, ("seal_rows_fill_runs",)),
+    Attack("seal_rows_fill_runs", "base_seal", {"rows": 2}),
+    *[
+        Attack(f"seal_{column}_long", "base_seal", {column: value})
+        for column in ("before", "digest") for value in ("", "1" * 63)
+    ],
+    Attack("seal_run_subject_whole", "base_sealrun", {"subject": -1}),
+    Attack("seal_run_first_whole", "base_sealrun", {"first": 0, "last": 1}),
+    Attack(
+        "seal_run_last_whole", "base_sealrun", {"first": -1, "last": 0},
+        ("seal_run_first_whole",),
+    ),
+    Attack(
+        "seal_run_has_rows", "base_sealrun", {"first": 7, "marks": ""}, ("seal_run_row_marked",)
+    ),
+    Attack("seal_run_digest_long", "base_sealrun", {"digest": "1" * 63}),
+    *[Attack("seal_run_row_marked", "base_sealrun", {"marks": "m" * n}) for n in (0, 15, 17, 24)],
     Attack("substance_kind_known", "inventory_substance", {"kind": "wish"}),
     Attack("substance_defined_has_structure", "inventory_substance", {"inchikey": None}),
     Attack("substance_defined_has_structure", "inventory_substance", {"smiles": ""}),
@@ -283,6 +314,7 @@ CHECKS = [
 UNIQUES = {
     "membership_once": ("base_membership", ("person_id", "project_id")),
     "remembered_answer_once": ("base_rememberedanswer", ("person_id", "route", "key")),
+    "seal_run_once": ("base_sealrun", ("book", "subject", "last")),
     "form_once": ("inventory_form", ("substance_id", "label")),
     "hold_line_once": ("inventory_hold", ("reservation_id", "line")),
     "movement_seq_once": (MOVEMENT, ("bottle_id", "seq")),
@@ -300,6 +332,9 @@ UNIQUES = {
 }
 
 WHOLE_COLUMNS = [
+    *[(f"seal_{column}_whole", "base_seal", column) for column in ("number", "runs", "rows")],
+    *[(f"seal_run_{column}_whole", "base_sealrun", column)
+      for column in ("subject", "first", "last")],
     ("bottle_heel_whole", "inventory_bottle", "heel"),
     ("balance_on_hand_whole", "inventory_balance", "on_hand"),
     ("balance_held_whole", "inventory_balance", "held"),
