@@ -23,6 +23,7 @@ from labplan.base.seal.writing import (
 from labplan.base.seal_tables import MARK_LENGTH, NO_SEAL_BEFORE, Seal, SealRun
 
 SEALS = "seals"
+MOST_HELD_BACK = 1_000
 
 
 @dataclass(frozen=True)
@@ -44,12 +45,14 @@ class SealWalk:
     unsealed_rows: int = 0
     newest: str = ""  # as printed
     _key: bytes = field(default_factory=seal_key)
-    _can_check: bool = True
+    # False while not one seal names the key at hand and not one run was made with it
+    _is_key_sure: bool = True
+    _held_back: list[SealFault] = field(default_factory=list)
     _walked: set[str] = field(default_factory=set)
 
     def check_chain(self, *, newest: str = "") -> None:
         """Walk the seals themselves; `newest` is the value on a paper that is to be found."""
-        self._can_check = self._check_key()
+        self._is_key_sure = self._check_key()
         runs = _Side(_runs_by_seal())
         number, before = 0, NO_SEAL_BEFORE
         for seal in Seal.objects.order_by("number").iterator(chunk_size=FETCHED_AT_ONCE):
@@ -113,7 +116,9 @@ class SealWalk:
         all_runs = digest_of_runs(listed())
         if counted != seal.runs:
             self._say(f"seal {seal.number}", f"closed {seal.runs} runs, {counted} are there")
-        if not self._can_check:
+        if seal.key_print != print_of(self._key):
+            if self._is_key_sure:
+                self._say(f"seal {seal.number}", f"names another key, {seal.key_print}")
             return
         made = digest_of_seal(
             self._key, number=seal.number, sealed_at=seal.sealed_at, key_print=seal.key_print,
@@ -121,6 +126,20 @@ class SealWalk:
         )  # fmt: skip
         if made != seal.digest and counted == seal.runs:
             self._say(f"seal {seal.number}", "is not as it was made, or one of its runs is not")
+
+    def say_of_codes(self, fault: SealFault) -> None:
+        """Report what only the key can tell; wait while the key may be the wrong one."""
+        if self._is_key_sure:
+            self.report(fault)
+        elif len(self._held_back) < MOST_HELD_BACK:
+            self._held_back.append(fault)
+
+    def be_sure_of_key(self) -> None:
+        """A run fits the key: what did not fit it was changed."""
+        self._is_key_sure = True
+        for fault in self._held_back:
+            self.report(fault)
+        self._held_back.clear()
 
     def _say(self, where: str, detail: str) -> None:
         self.report(SealFault(SEALS, where, detail))
@@ -190,8 +209,7 @@ class _BookWatch:
             self._open_run_at(subject, number)
         if self._run is not None and self._run.covers(subject, number):
             self._walk.sealed_rows += 1
-            code = reader.code_of(row) if self._walk._can_check else b""
-            self._run.add(number, code)
+            self._run.add(number, reader.code_of(row))
         else:
             self._see_unsealed(number)
         if self._named_at is not None and (named := row[self._named_at]):
@@ -227,23 +245,20 @@ class _BookWatch:
         in_seal = f"(seal {run.seal})"
         for first, last in run.missing():
             self._say_rows(first, last, f"missing {in_seal}", run.subject)
-        if not self._walk._can_check:
-            return
         if run.is_sound():
+            self._walk.be_sure_of_key()
             if run.changed or run.has_odd_marks:
-                self._walk.report(
-                    SealFault(
-                        SEALS, f"seal {run.seal}",
-                        f"has changed marks for {self._place(run.subject)}; the rows are as sealed",
-                    )
-                )  # fmt: skip
+                place = self._place(run.subject)
+                detail = f"has changed marks for {place}; the rows are as sealed"
+                self._walk.report(SealFault(SEALS, f"seal {run.seal}", detail))
             return
         for number in run.changed:
-            self._say_rows(number, number, f"not as sealed {in_seal}", run.subject)
+            self._say_code(run, number, number, f"not as sealed {in_seal}")
         if not run.changed and not run.is_short:
-            self._say_rows(
-                run.first, run.last, f"sealed by a run that was changed {in_seal}", run.subject
-            )
+            self._say_code(run, run.first, run.last, f"sealed by a run that was changed {in_seal}")
+
+    def _say_code(self, run: "_OpenRun", first: int, last: int, what: str) -> None:
+        self._walk.say_of_codes(self._fault_of_rows(run.subject, first, last, what))
 
     def _see_unsealed(self, number: int) -> None:
         self._walk.unsealed_rows += 1
@@ -264,11 +279,14 @@ class _BookWatch:
             self._walk.report(SealFault(self._place(subject), where, detail))
 
     def _say_rows(self, first: int, last: int, what: str, subject: int | None = None) -> None:
+        place = self._subject or 0 if subject is None else subject
+        self._walk.report(self._fault_of_rows(place, first, last, what))
+
+    def _fault_of_rows(self, subject: int, first: int, last: int, what: str) -> SealFault:
         word = self._book.row_word
-        where = f"{word} {first}" if first == last else f"{word}s {first} to {last}"
-        verb = "is" if first == last else "are"
-        place = self._place(self._subject or 0 if subject is None else subject)
-        self._walk.report(SealFault(place, where, f"{verb} {what}"))
+        if first == last:
+            return SealFault(self._place(subject), f"{word} {first}", f"is {what}")
+        return SealFault(self._place(subject), f"{word}s {first} to {last}", f"are {what}")
 
     def _place(self, subject: int) -> str:
         """The bottle by its code, or the name of the book."""
