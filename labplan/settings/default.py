@@ -5,6 +5,7 @@ DATABASE_URL         sqlite:///path or postgresql://...  (default: SQLite in LAB
 LABPLAN_SECRET_KEY   Django's key (default: made once and kept in LABPLAN_DATA_DIR)
 LABPLAN_SEAL_KEY     key of the seals (default: made once and kept in LABPLAN_DATA_DIR)
 LABPLAN_HOSTS        host names served, separated by commas (default: this machine only)
+LABPLAN_PROXIES      how many proxies of yours stand before it (default: 0)
 LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
 """
 
@@ -54,6 +55,21 @@ DATABASES = {
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
 AUTH_USER_MODEL = "base.Person"
 
+AUTH_PASSWORD_VALIDATORS = [
+    {
+        "NAME": f"django.contrib.auth.password_validation.{name}",
+        "OPTIONS": options,
+    }
+    for name, options in (
+        ("MinimumLengthValidator", {"min_length": 12}),
+        ("UserAttributeSimilarityValidator", {"user_attributes": ("code",)}),
+        ("CommonPasswordValidator", {}),
+        ("NumericPasswordValidator", {}),
+    )
+]
+# How many proxies of our own stand before the web processes; 0 believes no X-Forwarded-For.
+OWN_PROXIES = int(os.environ.get("LABPLAN_PROXIES") or 0)
+
 USE_TZ = True
 TIME_ZONE = "UTC"
 LAB_TIME_ZONE = known_time_zone(os.environ.get("LABPLAN_TIME_ZONE") or "UTC")
@@ -96,6 +112,7 @@ SPECTACULAR_SETTINGS = {
         {"name": "Stock", "description": "Substances, bottles, places, and the book of a bottle."},
         {"name": "Reservations", "description": "What is set aside, and for which project."},
         {"name": "Projects", "description": "Who may use what."},
+        {"name": "Tokens", "description": "What lets a program in: make, list and revoke yours."},
         {"name": "About this API", "description": "This description, for programs and people."},
     ],
 }

@@ -6,6 +6,7 @@ from typing import Any
 
 from django.urls import URLPattern, URLResolver, get_resolver, reverse
 
+from labplan.base.models import ApiToken
 from tests.laboratory import Laboratory, octyl_order
 
 METHODS = ("GET", "HEAD", "POST", "PUT", "PATCH", "DELETE", "OPTIONS", "TRACE", "BREW")
@@ -17,7 +18,8 @@ class Expected:
     """What a route serves, and what a person without a project there sees of it.
 
     `sees`: "stock" (the same as everybody), "nothing" (an empty list), "hidden" (404), "public"
-    (holds no data of the laboratory: the same for everybody, also without a token).
+    (holds no data of the laboratory: the same for everybody, also without a token), "own" (of
+    everybody what is his own), "door" (takes no token: one comes from there).
     """
 
     sees: str
@@ -27,12 +29,17 @@ class Expected:
     post_status: int | None = None
     # a POST that only looks may be sent with a token of scope read
     post_only_looks: bool = False
+    # concerns only who asks, so that no role is needed
+    is_own: bool = False
 
 
 # A route that is not in here fails test_rights_walk: say who may see it before it is served.
 EXPECTED: dict[str, Expected] = {
     "openapi-document": Expected("public"),
     "documentation-page": Expected("public"),
+    "login": Expected("door", (), ("POST", "OPTIONS"), 422, is_own=True),
+    "token-list": Expected("own", (), (*READS, "POST"), 422, is_own=True),
+    "token-revoke": Expected("hidden", ("token",), ("POST", "OPTIONS"), 404, is_own=True),
     "project-list": Expected("nothing"),
     "project-detail": Expected("hidden", ("project",)),
     "substance-list": Expected("stock"),
@@ -96,6 +103,7 @@ def plant_procedure(lab: Laboratory) -> Planted:
         "bottle": "GPA-1",
         "reservation": shown["reservation"],
         "procedure": shown["code"],
+        "token": str(ApiToken.objects.filter(person__code="MIRA").latest("pk").pk),
     }
     document = shown["document"]
     secrets = (

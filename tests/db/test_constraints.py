@@ -76,7 +76,10 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "base_membership": _membership_row,
     "base_apitoken": lambda code: {
         "person_id": _key(Person), "name": "n", "digest": code, "scope": "read",
-        "created_at": NOON, "expires_at": NOON,
+        "created_at": NOON, "expires_at": NOON, "by_login": False,
+    },
+    "base_logincount": lambda code: {
+        "kind": "code", "digest": code, "quarter": 1, "attempts": 1,
     },
     "base_rememberedanswer": lambda code: {
         "person_id": _key(Person), "route": "r", "key": code, "fingerprint": "f", "status": 202,
@@ -169,6 +172,9 @@ CHECKS = [
     Attack("person_site_role_known", "base_person", {"site_role": "root"}),
     Attack("membership_role_known", "base_membership", {"role": "owner"}),
     Attack("api_token_scope_known", "base_apitoken", {"scope": "reed"}),
+    Attack("login_count_kind_known", "base_logincount", {"kind": "name"}),
+    Attack("login_count_quarter_whole", "base_logincount", {"quarter": -1}),
+    Attack("login_count_attempts_whole", "base_logincount", {"attempts": -1}),
     Attack("outbox_state_known", "base_outboxmessage", {"state": "lost"}),
     Attack("seal_number_whole", "base_seal", {"number": 0}),
     Attack("seal_runs_whole", "base_seal", {"runs": 0}),
@@ -314,6 +320,7 @@ CHECKS = [
 UNIQUES = {
     "membership_once": ("base_membership", ("person_id", "project_id")),
     "remembered_answer_once": ("base_rememberedanswer", ("person_id", "route", "key")),
+    "login_count_once": ("base_logincount", ("kind", "digest", "quarter")),
     "seal_run_once": ("base_sealrun", ("book", "subject", "last")),
     "form_once": ("inventory_form", ("substance_id", "label")),
     "hold_line_once": ("inventory_hold", ("reservation_id", "line")),
@@ -332,6 +339,8 @@ UNIQUES = {
 }
 
 WHOLE_COLUMNS = [
+    ("login_count_quarter_whole", "base_logincount", "quarter"),
+    ("login_count_attempts_whole", "base_logincount", "attempts"),
     *[(f"seal_{column}_whole", "base_seal", column) for column in ("number", "runs", "rows")],
     *[(f"seal_run_{column}_whole", "base_sealrun", column)
       for column in ("subject", "first", "last")],
