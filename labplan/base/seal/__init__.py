@@ -1,7 +1,7 @@
 """Seals over what never changes: the book of each bottle, the event log, the documents.
 
 A seal covers runs of consecutive rows, carries the digest of the seal before, and is keyed with a
-key outside the database. docs/decisions/0005 says what that covers and what not.
+key outside the database. docs/decisions/0007 says what that covers and what not.
 """
 
 from labplan.base.seal.printed import newest_printed
