@@ -14,6 +14,7 @@ from pathlib import Path
 
 from labplan.settings.database import database_from_url
 from labplan.settings.places import known_time_zone
+from labplan.settings.proxies import own_proxies
 from labplan.settings.secret import read_or_make_secret_key, read_seal_key
 
 BASE_DIR = Path(__file__).resolve().parents[2]
@@ -67,8 +68,7 @@ AUTH_PASSWORD_VALIDATORS = [
         ("NumericPasswordValidator", {}),
     )
 ]
-# How many proxies of our own stand before the web processes; 0 believes no X-Forwarded-For.
-OWN_PROXIES = int(os.environ.get("LABPLAN_PROXIES") or 0)
+OWN_PROXIES = own_proxies()
 
 USE_TZ = True
 TIME_ZONE = "UTC"

@@ -11,6 +11,7 @@ import yaml
 from openapi_spec_validator import OpenAPIV31SpecValidator
 
 from labplan.base.api.pages import example_of
+from labplan.base.login import set_password
 from tests.api import targets
 from tests.api.openapi import assert_described, faults
 from tests.api.url_map import EXPECTED, Planted, plant_procedure, served_patterns
@@ -274,6 +275,23 @@ def test_problems_are_as_described(
         assert_described(document, route, method, response)
     statuses = {response.status_code for _, _, response in met}
     assert statuses == {400, 401, 403, 404, 409, 412, 415, 422, 428}
+
+
+def test_tokens_and_logins_are_as_described(lab: Laboratory, document: dict[str, Any]) -> None:
+    client, tokens, login = lab.client(), "/api/v1/tokens/", "/api/v1/login/"
+    set_password(person_code="MIRA", password="a heron on one leg")
+    body = {"person": "MIRA", "password": "a heron on one leg"}
+    met = [client.post(login, body)]
+    met += [client.post(login, {**body, "password": "another"}) for _ in range(6)]
+    assert [response.status_code for response in met] == [201, *[401] * 5, 429]
+    for response in met:
+        assert_described(document, login, "post", response)
+    made = client.post(tokens, {"name": "balance"})
+    assert_described(document, tokens, "post", made)
+    revoked = client.post(f"{tokens}{made.json()['id']}/revoke/")
+    assert revoked.status_code == 200
+    assert_described(document, tokens + "{token_id}/revoke/", "post", revoked)
+    assert_described(document, tokens, "get", client.get(tokens))
 
 
 def test_a_field_that_is_gone_or_new_is_found(

@@ -1,5 +1,10 @@
-"""Run all measurements and print one table."""
+"""Run the quick measurements and print one table; the long ones when they are asked for.
 
+make bench ARGS="--ledger 1000000"                sealing and checking a large ledger
+make bench ARGS="--ledger 1000000 --postgresql"   the same on PostgreSQL
+"""
+
+import argparse
 import gc
 import statistics
 import subprocess
@@ -20,7 +25,7 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.bench import paper
+from tests.bench import ledger, paper
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import PENTENYL_LACTOSIDE
 
@@ -85,6 +90,13 @@ def memory_mb(kind: str) -> str:
 
 
 def main() -> None:
+    parser = argparse.ArgumentParser(prog="make bench")
+    parser.add_argument("--ledger", type=int, metavar="MOVEMENTS", help="measure a large ledger")
+    parser.add_argument("--postgresql", action="store_true", help="that on PostgreSQL")
+    options = parser.parse_args()
+    if options.ledger:
+        Console(width=110).print(ledger.measure(options.ledger, on_postgresql=options.postgresql))
+        return
     table = Table("measured", "median", "beside it", "median", "ratio")
     bare = median_ms(bare_rdkit)
     for name, work in (

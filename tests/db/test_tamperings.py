@@ -18,6 +18,7 @@ from inventory.services.holds import release_reservation
 from inventory.services.verify import LedgerFault, verify_ledger
 from labplan.base import append_only, clock
 from labplan.base.events import record_event
+from labplan.base.models import Event
 from labplan.base.seal import newest_printed, seal_new
 from labplan.procedures.models import Document, Procedure
 from tests.db.bench import ON_POSTGRESQL, Shelf, drop_trigger, make_shelf, run_sql
@@ -141,6 +142,23 @@ def test_what_a_false_number_or_amount_of_text_does_not_stop_the_walk() -> None:
     assert (
         f"bottle {line.bottle_id}", "line 'abc'", "has no number: it was written past labplan"
     ) in found  # fmt: skip
+
+
+@pytest.mark.spoils_the_book
+@pytest.mark.django_db
+def test_a_text_that_cannot_be_read_is_a_fault_and_no_breakdown() -> None:
+    sealed_shelf()
+    if ON_POSTGRESQL:  # which stores no such text
+        with pytest.raises(DataError), transaction.atomic():
+            run_sql(r"SELECT convert_from('\xff'::bytea, 'UTF8')")
+        return
+    second = Event.objects.order_by("pk")[1]
+    with as_owner_of_the_database():
+        run_sql("UPDATE base_event SET kind = CAST(x'ff' AS TEXT) WHERE id = %s", [second.pk])
+        faults = verify_ledger().faults
+    assert faults[0].bottle == "events"
+    assert faults[0].where in ("start", f"events, event {second.pk - 1}")
+    assert "what follows cannot be read" in faults[0].detail
 
 
 @pytest.mark.spoils_the_book

@@ -9,6 +9,7 @@ from labplan.base import login, tokens
 from labplan.base.api import schema
 from labplan.base.api.token_bodies import LoginSerializer, TokenSerializer
 from labplan.base.models import ApiToken
+from labplan.base.rights import require
 from labplan.base.views import ListView, LookView
 
 # A token's text must not lie in any cache; for the same reason its POST takes no key: the answer
@@ -39,7 +40,7 @@ class TokenList(ListView):
         return show_token(row, current_id=self.current_id)
 
     def post(self, request: Any) -> Response:
-        tokens.require(request.user, "token.make")
+        require(request.user, "token.make")
         values = TokenSerializer(data=request.data).read()
         return _with_text(tokens.make_own_token(actor=request.user, **values), request)
 

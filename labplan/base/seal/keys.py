@@ -17,6 +17,9 @@ def print_of(key: bytes) -> str:
     return hmac.digest(key, b"print", "sha256").hex()[:16]
 
 
+_encode = json.JSONEncoder(separators=(",", ":")).encode
+
+
 def framed(*parts: Any) -> bytes:
     """Values as bytes of which each value begins and ends in one place only."""
-    return json.dumps(parts, separators=(",", ":")).encode()
+    return _encode(parts).encode()

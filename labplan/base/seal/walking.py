@@ -9,6 +9,8 @@ from functools import lru_cache
 from operator import itemgetter
 from typing import Any
 
+from django.db import OperationalError
+
 from labplan.base.seal.keys import print_of, seal_key
 from labplan.base.seal.printed import fault_of_printed, printed_value
 from labplan.base.seal.registry import Book, books, get_book
@@ -80,10 +82,21 @@ class SealWalk:
         chosen = [reader.columns.index(column) for column in columns]
         pick = itemgetter(*chosen) if len(chosen) > 1 else tuple
         watch = _BookWatch(self, book, reader)
-        for row in reader.all_rows():
+        rows = reader.all_rows()
+        while (row := self._next_row(book, rows, watch)) is not None:
             watch.see(row)
             yield pick(row)
         watch.end()
+
+    def _next_row(self, book: Book, rows: Iterator[Row], watch: "_BookWatch") -> Row | None:
+        """The next row; a text that is none ends the walk of its book with a fault."""
+        try:
+            return next(rows, None)
+        except OperationalError as error:
+            if "decode" not in str(error):
+                raise
+            self.report(SealFault(book.name, watch.where, f"what follows cannot be read: {error}"))
+            return None
 
     def check_other_books(self) -> None:
         """Walk every book that was not walked yet."""
@@ -191,9 +204,17 @@ class _BookWatch:
         self._run: _OpenRun | None = None
         self._loose: tuple[int, int] | None = None  # unsealed rows of this subject so far
         self._subject: int | None = None
+        self._number = 0
         self._sealed_to = _last_by_id(book)
         self._fault_of_named = lru_cache(maxsize=1024)(fault_of_printed)
         self._named_at = reader.columns.index(book.seal_named) if book.seal_named else None
+
+    @property
+    def where(self) -> str:
+        """The row that was seen last."""
+        if self._subject is None:
+            return "start"
+        return f"{self._place(self._subject)}, {self._book.row_word} {self._number}"
 
     def see(self, row: Row) -> None:
         reader = self._reader
@@ -204,6 +225,7 @@ class _BookWatch:
             return
         if subject != self._subject:
             self._subject, self._loose = subject, None
+        self._number = number
         self._close_runs_before((subject, number))
         if self._run is None and self._runs.head is not None:
             self._open_run_at(subject, number)
