@@ -2,16 +2,20 @@
 
 LABPLAN_DATA_DIR     where the SQLite file and the generated key live (default: var/)
 DATABASE_URL         sqlite:///path or postgresql://...  (default: SQLite in LABPLAN_DATA_DIR)
+REDIS_URL            broker, redis://... or redis+socket:///path  (make serve starts one if not set)
 LABPLAN_SECRET_KEY   Django's key (default: made once and kept in LABPLAN_DATA_DIR)
 LABPLAN_HOSTS        host names served, separated by commas (default: this machine only)
 LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
+LABPLAN_PLAN_LIMIT_S when a worker that plans one target is killed (default: 30)
+LABPLAN_LEASE_S      how long a message may lie in the broker before it is sent again (default: 120)
+LABPLAN_LOG          plain or json, a line a record on standard error (default: plain)
 """
 
 import os
 from pathlib import Path
 
 from labplan.settings.database import database_from_url
-from labplan.settings.places import known_time_zone
+from labplan.settings.environment import known_time_zone, whole_seconds
 from labplan.settings.secret import read_or_make_secret_key
 
 BASE_DIR = Path(__file__).resolve().parents[2]
@@ -27,6 +31,7 @@ INSTALLED_APPS = [
     "labplan.base",
     "inventory",
     "labplan.procedures",
+    "labplan.operations",
 ]
 MIDDLEWARE = [
     "django.middleware.security.SecurityMiddleware",
@@ -48,6 +53,10 @@ DATABASES = {
         os.environ.get("DATABASE_URL") or f"sqlite:///{DATA_DIR / 'labplan.sqlite3'}"
     )
 }
+# The broker only carries messages to workers; losing it, or what it holds, loses no work.
+BROKER_URL = os.environ.get("REDIS_URL", "")
+PLAN_LIMIT_S = whole_seconds("LABPLAN_PLAN_LIMIT_S", 30)
+OUTBOX_LEASE_S = whole_seconds("LABPLAN_LEASE_S", 120)
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
 AUTH_USER_MODEL = "base.Person"
 

@@ -1,6 +1,8 @@
 """What may be done with a procedure."""
 
 from labplan.procedures.services.cancel import cancel_procedure, require_may_cancel
+from labplan.procedures.services.giving_up import give_up_planning, requeue_procedure
+from labplan.procedures.services.lapse import lapse_overdue
 from labplan.procedures.services.planning import plan_procedure
 from labplan.procedures.services.preview import preview_routes
 from labplan.procedures.services.request import (
@@ -12,9 +14,12 @@ from labplan.procedures.services.request import (
 __all__ = [
     "ProcedureOrder",
     "cancel_procedure",
+    "give_up_planning",
+    "lapse_overdue",
     "plan_procedure",
     "preview_routes",
     "request_procedure",
+    "requeue_procedure",
     "require_may_cancel",
     "require_may_request",
 ]

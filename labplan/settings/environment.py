@@ -1,5 +1,6 @@
-"""Check what the environment says of where and when the laboratory is."""
+"""Check what the environment says; refuse nonsense at start, not in a request."""
 
+import os
 from zoneinfo import ZoneInfo
 
 from django.core.exceptions import ImproperlyConfigured
@@ -14,3 +15,11 @@ def known_time_zone(name: str) -> str:
             f"LABPLAN_TIME_ZONE={name!r} is no time zone; give one like Europe/Berlin."
         ) from error
     return name
+
+
+def whole_seconds(variable: str, default: int) -> int:
+    """Return the seconds that an environment variable gives, 1 to 86,400."""
+    given = os.environ.get(variable) or str(default)
+    if not given.isdecimal() or not 1 <= int(given) <= 86_400:
+        raise ImproperlyConfigured(f"{variable}={given!r}: give whole seconds, 1 to 86400.")
+    return int(given)
