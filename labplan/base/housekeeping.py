@@ -8,6 +8,8 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from datetime import timedelta
 
+from labplan.base import metrics
+
 
 @dataclass(frozen=True)
 class Duty:
@@ -36,4 +38,11 @@ def duties() -> dict[str, Duty]:
 
 def run_duty(name: str) -> int:
     """Run one sweep now; KeyError for a name that is not registered."""
-    return _duties[name].run()
+    duty = _duties[name]
+    try:
+        found = duty.run()
+    except Exception:
+        metrics.count_sweep(name, "failed")
+        raise
+    metrics.count_sweep(name, "done", found)
+    return found

@@ -35,3 +35,9 @@ def send_to_workers(message: OutboxMessage) -> None:
         time_limit=outbox.limit_s(message.topic),
         retry=False,
     )
+    with tracing.working_on(message.request_id):
+        logger.info(
+            "message %s (%s) sent to %s", message.pk, message.topic, message.queue,
+            extra={"message_id": message.pk, "topic": message.topic, "queue": message.queue,
+                   "send": message.sends},
+        )  # fmt: skip

@@ -45,6 +45,8 @@ def _postgresql(url: str) -> dict[str, Any]:
     from psycopg.conninfo import conninfo_to_dict
 
     parts = dict(conninfo_to_dict(url))
+    # A host that is away must not hold a request, or the health answer, for minutes.
+    parts.setdefault("connect_timeout", "5")
     server_options = f"{parts.pop('options', '')} -c lock_timeout=3000".strip()
     return {
         "ENGINE": "django.db.backends.postgresql",

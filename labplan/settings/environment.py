@@ -23,3 +23,11 @@ def whole_seconds(variable: str, default: int) -> int:
     if not given.isdecimal() or not 1 <= int(given) <= 86_400:
         raise ImproperlyConfigured(f"{variable}={given!r}: give whole seconds, 1 to 86400.")
     return int(given)
+
+
+def one_of_words(variable: str, words: tuple[str, ...]) -> str:
+    """Return the word that an environment variable gives; the first one when it gives none."""
+    given = os.environ.get(variable) or words[0]
+    if given not in words:
+        raise ImproperlyConfigured(f"{variable}={given!r}: give one of {', '.join(words)}.")
+    return given

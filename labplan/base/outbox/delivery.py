@@ -1,11 +1,12 @@
 """Get messages to their handlers: over the broker, or here and now."""
 
 import logging
+import time
 from collections.abc import Callable
 
 from django.db import close_old_connections
 
-from labplan.base import tracing
+from labplan.base import metrics, tracing
 from labplan.base.models import OutboxMessage
 from labplan.base.outbox import messages, topics
 
@@ -58,15 +59,31 @@ def run_message(message_id: int, send: int) -> str:
     if run is None:
         return "left"
     with tracing.working_on(run.request_id):
-        try:
-            topic = topics.find_topic(run.topic)
-            if topic is None:
-                raise LookupError(f"no handler for the topic {run.topic!r}")
-            topic.handler(run.payload, run.message_id)
-        except Exception as error:
-            # Whatever broke, the row must say so and be tried again: the worker itself goes on.
-            logger.exception("message %s (%s) failed", run.message_id, run.topic)
-            close_old_connections()  # it may have been the connection that broke
-            messages.put_back(run, error)
-            return "failed"
+        started = time.monotonic()
+        fields = {"message_id": run.message_id, "topic": run.topic, "attempt": run.attempt}
+        logger.info("run begun: message %s (%s)", run.message_id, run.topic, extra=fields)
+        outcome = _run_handler(run)
+        duration_s = time.monotonic() - started
+        known = run.topic if topics.find_topic(run.topic) else "unknown"
+        metrics.count_run(known, outcome, duration_s)
+        fields |= {"outcome": outcome, "duration_ms": round(duration_s * 1000, 1)}
+        logger.info(
+            "run ended: message %s (%s) is %s after %.0f ms",
+            run.message_id, run.topic, outcome, duration_s * 1000, extra=fields,
+        )  # fmt: skip
+    return outcome
+
+
+def _run_handler(run: messages.Run) -> str:
+    try:
+        topic = topics.find_topic(run.topic)
+        if topic is None:
+            raise LookupError(f"no handler for the topic {run.topic!r}")
+        topic.handler(run.payload, run.message_id)
+    except Exception as error:
+        # Whatever broke, the row must say so and be tried again: the worker itself goes on.
+        logger.exception("message %s (%s) failed", run.message_id, run.topic)
+        close_old_connections()  # it may have been the connection that broke
+        messages.put_back(run, error)
+        return "failed"
     return "done"

@@ -1,6 +1,6 @@
 """What may be asked about procedures."""
 
-from django.db.models import QuerySet
+from django.db.models import Count, QuerySet
 
 from labplan.base.errors import NotFound
 from labplan.base.rights import Actor, visible_project_ids
@@ -23,3 +23,9 @@ def get_procedure(*, actor: Actor, code: str) -> Procedure:
     if procedure is None:
         raise NotFound(f"There is no procedure {code}.")
     return procedure
+
+
+def count_by_state(*, actor: Actor) -> dict[str, int]:
+    """How many there are in each state; states in which there is none are left out."""
+    found = list_procedures(actor=actor).select_related(None)
+    return dict(found.values_list("state").annotate(number=Count("id")).order_by())

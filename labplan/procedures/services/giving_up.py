@@ -6,7 +6,7 @@ from labplan.base import clock
 from labplan.base.events import record_event
 from labplan.procedures import life, progress
 from labplan.procedures.models import Procedure
-from labplan.procedures.services.changes import announce_change
+from labplan.procedures.services.changes import announce_change, note_settled
 
 
 def give_up_planning(*, procedure_id: int, reason: str) -> None:
@@ -21,6 +21,7 @@ def give_up_planning(*, procedure_id: int, reason: str) -> None:
     procedure.reasons = json.dumps([{"code": "planning_given_up", "detail": detail}])
     procedure.settled_at = clock.now()
     _move(procedure, "plan", life.FAILED, progress.ENDED, {"reason": reason})
+    note_settled(procedure)
 
 
 def requeue_procedure(*, procedure_id: int) -> None:

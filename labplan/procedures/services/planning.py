@@ -26,7 +26,7 @@ from labplan.planning.values import Charge
 from labplan.procedures import life, progress
 from labplan.procedures.engine import PlannedOn, Scale, Wishes, plan_on_shelf, read_target
 from labplan.procedures.models import Document, Procedure
-from labplan.procedures.services.changes import announce_change
+from labplan.procedures.services.changes import announce_change, note_settled
 
 MAX_BROKEN_OFF = 2
 ENGINE_CRASHED = (
@@ -294,6 +294,7 @@ def _close(
     )  # fmt: skip
     outbox.mark_done(message_id)
     announce_change(procedure)
+    note_settled(procedure)
 
 
 def _locked(procedure_id: int) -> Procedure:
