@@ -92,10 +92,16 @@ class JsonFormatter(_Formatter):
         return json.dumps(entry, ensure_ascii=True, default=str)
 
 
+class OnlyTracebacks(logging.Filter):
+    """Of Django's lines about answers, those that say more than our own."""
+
+    def filter(self, record: logging.LogRecord) -> bool:
+        return bool(record.exc_info)
+
+
 _FORMATTERS = {"plain": PlainFormatter, "json": JsonFormatter}
 # Other people's lines about what we log ourselves, or about every beat of a heart.
 _QUIETER = {
-    "django.request": "ERROR",  # a refusal is in our own line; a 500 brings its traceback here
     "celery.worker.strategy": "WARNING",
     "celery.app.trace": "WARNING",
     "celery.beat": "WARNING",
@@ -108,9 +114,11 @@ def logging_configuration(style: str) -> dict[str, Any]:
         "version": 1,
         "disable_existing_loggers": False,
         "formatters": {"line": {"()": _FORMATTERS[style]}},
+        "filters": {"only_tracebacks": {"()": OnlyTracebacks}},
         "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
         "loggers": {
             **{name: {"level": level} for name, level in _QUIETER.items()},
+            "django.request": {"filters": ["only_tracebacks"]},
             # The framework's own handlers would print a line twice, or mail it.
             "django": {"level": "INFO", "handlers": [], "propagate": True},
         },

@@ -41,8 +41,9 @@ def _note_answer(request: HttpRequest, response: HttpResponse, duration_s: float
     metrics.count_request(route, request.method or "", response.status_code, duration_s)
     is_routine = route in settings.WATCHERS_ROUTES and response.status_code < 400
     actor = getattr(request, "user", None)
+    level = logging.WARNING if response.status_code >= 500 else logging.INFO
     logger.log(
-        logging.DEBUG if is_routine else logging.INFO,
+        logging.DEBUG if is_routine else level,
         "%s %s -> %s in %.0f ms",
         request.method, request.path, response.status_code, duration_s * 1000,
         extra={

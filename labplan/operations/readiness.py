@@ -20,6 +20,7 @@ from labplan.base import append_only, broker, outbox, warming
 logger = logging.getLogger(__name__)
 # The oldest unfinished message is worth a warning when it is older than this.
 WAITED_LONG_S = 300
+NOT_LOOKED_AT = "Not looked at: the database does not answer."
 _noted: frozenset[str] = frozenset()
 
 
@@ -78,12 +79,11 @@ def _find(check: Check, is_database_there: bool) -> Finding:
     started = time.monotonic()
     try:
         if check.needs_database and not is_database_there:
-            raise NotReady("Not looked at: the database does not answer.")
+            raise NotReady(NOT_LOOKED_AT)
         is_ok, detail = True, check.look()
     except NotReady as error:
         is_ok, detail = False, str(error)
     except Exception as error:
-        logger.debug("check %s broke", check.name, exc_info=error)
         is_ok, detail = False, "The check broke off; the log of this process says why."
         _remember_error(check.name, error)
     duration_ms = round((time.monotonic() - started) * 1000, 1)
@@ -100,8 +100,9 @@ def _remember_error(name: str, error: Exception) -> None:
 def _log_changes(findings: list[Finding]) -> None:
     """One line when a check begins to fail or works again, not one with every look."""
     global _noted  # noqa: PLW0603 - what this process has said already
-    failed = frozenset(found.name for found in findings if not found.is_ok)
-    for found in findings:
+    looked = [found for found in findings if found.detail != NOT_LOOKED_AT]
+    failed = frozenset(found.name for found in looked if not found.is_ok)
+    for found in looked:
         if found.name in failed - _noted:
             why = f"{found.detail} {_errors.pop(found.name, '')}".strip()
             logger.warning("check %s fails: %s", found.name, why, extra={"check": found.name})

@@ -19,9 +19,14 @@ def known_time_zone(name: str) -> str:
 
 def whole_seconds(variable: str, default: int) -> int:
     """Return the seconds that an environment variable gives, 1 to 86,400."""
+    return whole_number(variable, default, highest=86_400)
+
+
+def whole_number(variable: str, default: int, *, highest: int) -> int:
+    """Return the whole number that an environment variable gives, from 1 to the highest."""
     given = os.environ.get(variable) or str(default)
-    if not given.isdecimal() or not 1 <= int(given) <= 86_400:
-        raise ImproperlyConfigured(f"{variable}={given!r}: give whole seconds, 1 to 86400.")
+    if not given.isdecimal() or not 1 <= int(given) <= highest:
+        raise ImproperlyConfigured(f"{variable}={given!r}: give a whole number, 1 to {highest}.")
     return int(given)
 
 
