@@ -3,11 +3,12 @@
 The children then share the memory of the parent: about a third of what each would need by itself.
 """
 
+import logging
 import resource
 import signal
 from typing import Any
 
-from celery.signals import setup_logging, worker_init, worker_process_init
+from celery.signals import celeryd_init, setup_logging, worker_init, worker_process_init
 
 from labplan.base import metrics, warming
 from labplan.base.endings import end_with_parent
@@ -16,9 +17,11 @@ from labplan.base.endings import end_with_parent
 CHILD_ADDRESS_SPACE = 4 * 1024**3
 
 
+@celeryd_init.connect
 @setup_logging.connect
 def keep_our_logging(**_: Any) -> None:
     """Being asked is enough: with somebody listening here, Celery adds no handlers of its own."""
+    logging.captureWarnings(True)  # no raw lines among ours
 
 
 @worker_init.connect
