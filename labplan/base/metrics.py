@@ -44,13 +44,20 @@ def _usable_folder() -> Path | None:
 
 FOLDER = _usable_folder()
 
-from prometheus_client import CollectorRegistry, Counter, Histogram, values  # noqa: E402
+from prometheus_client import (  # noqa: E402
+    CollectorRegistry,
+    Counter,
+    Histogram,
+    disable_created_metrics,
+    values,
+)
 from prometheus_client.multiprocess import MultiProcessCollector  # noqa: E402
 
 from labplan.base import metrics_files  # noqa: E402
 
 if FOLDER:
     values.ValueClass = values.MultiProcessValue(metrics_files.name_of_this_process)
+disable_created_metrics()  # the files of several processes have none either
 REGISTRY = CollectorRegistry()
 
 _METHODS = frozenset({"GET", "HEAD", "POST", "PUT", "PATCH", "DELETE", "OPTIONS"})
@@ -128,12 +135,16 @@ def fold_dead() -> None:
 
 @contextmanager
 def all_processes() -> Iterator[CollectorRegistry]:
-    """What has been counted, by every process where that is set up, for as long as it is read."""
+    """What has been counted, by every process where that is set up, for as long as it is read.
+
+    The registry is a new one, to which the reader may add.
+    """
+    registry = CollectorRegistry()
     if not FOLDER or not FOLDER.is_dir():
-        yield REGISTRY
+        registry.register(REGISTRY)
+        yield registry
         return
     fold_dead()
     with metrics_files.locked(FOLDER):
-        registry = CollectorRegistry()
         MultiProcessCollector(registry, str(FOLDER))
         yield registry

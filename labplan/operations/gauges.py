@@ -3,7 +3,7 @@
 import logging
 from collections.abc import Iterator
 
-from prometheus_client.core import GaugeMetricFamily
+from prometheus_client.core import GaugeMetricFamily, InfoMetricFamily, Metric
 from prometheus_client.registry import Collector
 
 from labplan import datafiles
@@ -20,7 +20,7 @@ NOT_DONE = (OutboxMessageState.NEW, OutboxMessageState.SENT, OutboxMessageState.
 class DatabaseGauges(Collector):
     """A database that is away leaves out its own figures and spoils no others."""
 
-    def collect(self) -> Iterator[GaugeMetricFamily]:
+    def collect(self) -> Iterator[Metric]:
         yield _data_info()
         try:
             read = [*_outbox_gauges(), _procedures()]
@@ -35,12 +35,9 @@ def _single(name: str, text: str, value: float) -> GaugeMetricFamily:
     return GaugeMetricFamily(f"labplan_{name}", text, value=float(value))
 
 
-def _data_info() -> GaugeMetricFamily:
-    made = GaugeMetricFamily(
-        "labplan_data_info", "The version of the packaged tables.", labels=["data_version"]
-    )
-    made.add_metric([datafiles.data_version()], 1.0)
-    return made
+def _data_info() -> InfoMetricFamily:
+    version = {"data_version": datafiles.data_version()}
+    return InfoMetricFamily("labplan_data", "The version of the packaged tables.", value=version)
 
 
 def _outbox_gauges() -> Iterator[GaugeMetricFamily]:

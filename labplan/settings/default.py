@@ -9,6 +9,8 @@ LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
 LABPLAN_PLAN_LIMIT_S when a worker that plans one target is killed (default: 30)
 LABPLAN_LEASE_S      how long a message may lie in the broker before it is sent again (default: 120)
 LABPLAN_LOG          plain or json, a line a record on standard error (default: plain)
+PROMETHEUS_MULTIPROC_DIR  folder in which all processes of a machine count, for /metrics (default:
+                     none; each process then counts for itself)
 """
 
 import os

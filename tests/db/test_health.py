@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from django.db import OperationalError, connection
+from django.db import OperationalError, connection, connections
 from django.db.migrations.recorder import MigrationRecorder
 from django.test.utils import CaptureQueriesContext
 
@@ -85,7 +85,7 @@ def test_without_a_database_the_rest_is_still_told(monkeypatch: pytest.MonkeyPat
     def away(self: Any) -> Any:
         raise OperationalError('connection to "db.inside" failed, user lab, password hunter2')
 
-    monkeypatch.setattr(type(connection), "cursor", away)
+    monkeypatch.setattr(type(connections["default"]), "cursor", away)
     with json_log() as log:
         found = failing(503, "not_ready")
     monkeypatch.undo()
@@ -124,7 +124,7 @@ def test_the_trigger_of_an_app_is_missed_too() -> None:
     from tests.db.bench import drop_trigger
 
     assert append_only.missing_triggers() == set()
-    drop_trigger("inventory_movement_carries_on", "inventory_movement")
+    drop_trigger("inventory_movement", "inventory_movement_carries_on")
     try:
         assert append_only.missing_triggers() == {"inventory_movement_carries_on"}
         assert list(failing(503, "not_ready")) == ["triggers"]

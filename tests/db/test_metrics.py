@@ -92,6 +92,15 @@ def test_names_and_labels_follow_the_practice_and_hold_nothing_of_the_laboratory
     assert set(helped) == set(kinds)
 
 
+def test_looking_leaves_nothing_behind(lab: Laboratory) -> None:
+    scrape()
+    first, second = scrape(), scrape()
+    assert set(first) == set(second)
+    text = ApiTestClient(None).get("/metrics").content.decode()
+    shown = re.findall(r"^# TYPE (\S+)", text, re.M)
+    assert len(shown) == len(set(shown))
+
+
 def test_the_newer_format_is_given_to_who_asks_for_it(lab: Laboratory) -> None:
     from prometheus_client.openmetrics.parser import text_string_to_metric_families as read
 
@@ -103,8 +112,9 @@ def test_the_newer_format_is_given_to_who_asks_for_it(lab: Laboratory) -> None:
 
 
 def test_a_planned_procedure_is_counted_as_run_and_as_settled(live_lab: Laboratory) -> None:
-    live_lab.client().post(PROCEDURES, octyl_order())
-    live_lab.client().post(PROCEDURES, octyl_order(product_mass_g="400"))
+    client = live_lab.client()
+    for order in (octyl_order(), octyl_order(product_mass_g="400")):
+        assert client.post(PROCEDURES, order).status_code == 202
     by = grown(live_lab.run_outbox)
     assert by("procedures_settled_total", state="planned") == 1
     assert by("procedures_settled_total", state="short") == 1
