@@ -9,8 +9,7 @@ import logging
 import os
 import tempfile
 import time
-from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from collections.abc import Callable
 from functools import wraps
 from pathlib import Path
 from typing import Any
@@ -48,10 +47,12 @@ from prometheus_client import (  # noqa: E402
     CollectorRegistry,
     Counter,
     Histogram,
+    Metric,
     disable_created_metrics,
     values,
 )
 from prometheus_client.multiprocess import MultiProcessCollector  # noqa: E402
+from prometheus_client.registry import Collector  # noqa: E402
 
 from labplan.base import metrics_files  # noqa: E402
 
@@ -133,18 +134,22 @@ def fold_dead() -> None:
         metrics_files.fold_dead(FOLDER)
 
 
-@contextmanager
-def all_processes() -> Iterator[CollectorRegistry]:
-    """What has been counted, by every process where that is set up, for as long as it is read.
-
-    The registry is a new one, to which the reader may add.
-    """
+def registry_of_all() -> CollectorRegistry:
+    """A new registry of what all processes have counted, to which the reader may add."""
     registry = CollectorRegistry()
-    if not FOLDER or not FOLDER.is_dir():
-        registry.register(REGISTRY)
-        yield registry
-        return
-    fold_dead()
-    with metrics_files.locked(FOLDER):
-        MultiProcessCollector(registry, str(FOLDER))
-        yield registry
+    registry.register(_AllProcesses() if FOLDER else REGISTRY)
+    return registry
+
+
+class _AllProcesses(Collector):
+    """Reads the folder; one that cannot be read is said in the log and shows no counts."""
+
+    def collect(self) -> list[Metric]:
+        assert FOLDER is not None
+        fold_dead()
+        try:
+            with metrics_files.locked(FOLDER):
+                return list(MultiProcessCollector(None, str(FOLDER)).collect())
+        except Exception as error:
+            logger.warning("metrics: no counts: %s: %s", type(error).__name__, error)
+            return []

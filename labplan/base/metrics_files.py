@@ -8,6 +8,7 @@ others, so that no scrape counts a file twice or not at all.
 import fcntl
 import os
 import re
+import struct
 from collections.abc import Iterator
 from contextlib import contextmanager
 from functools import cache
@@ -15,7 +16,6 @@ from pathlib import Path
 
 from prometheus_client.mmap_dict import MmapedDict
 
-LOCK_NAME = "lock"
 _NAMED = re.compile(r"(counter|histogram)_(.+)-(\d+)\.db")
 
 
@@ -34,9 +34,13 @@ def name_of_this_process() -> str:
 
 @contextmanager
 def locked(folder: Path, *, alone: bool = False) -> Iterator[None]:
-    with (folder / LOCK_NAME).open("a") as lock:
+    """Lock the folder itself, for this process alone or together with others that read."""
+    lock = os.open(folder, os.O_RDONLY)
+    try:
         fcntl.flock(lock, fcntl.LOCK_EX if alone else fcntl.LOCK_SH)
         yield
+    finally:
+        os.close(lock)
 
 
 def fold_dead(folder: Path) -> int:
@@ -47,8 +51,7 @@ def fold_dead(folder: Path) -> int:
         dead = _of_the_dead(folder)  # another process may have been faster
         for path in dead:
             kind = path.name.partition("_")[0]
-            if path.stat().st_size:  # it may have died before its first count
-                _add_to(folder / f"{kind}_{_space()}-folded.db", path)
+            _add_to(folder / f"{kind}_{_space()}-folded.db", _values_in(path))
             path.unlink()
     return len(dead)
 
@@ -72,10 +75,20 @@ def _is_alive(pid: int) -> bool:
     return True
 
 
-def _add_to(sums: Path, path: Path) -> None:
+def _values_in(path: Path) -> dict[str, float]:
+    """What a file holds; nothing when its process died while making it, or the disk was full."""
+    try:
+        return {key: value for key, value, _, _ in MmapedDict.read_all_values_from_file(str(path))}
+    except (struct.error, RuntimeError, UnicodeDecodeError):
+        return {}
+
+
+def _add_to(sums: Path, values: dict[str, float]) -> None:
+    if not values:
+        return
     kept = MmapedDict(str(sums))
     try:
-        for key, value, _, _ in MmapedDict.read_all_values_from_file(str(path)):
+        for key, value in values.items():
             before, _ = kept.read_value(key)
             kept.write_value(key, before + value, 0.0)
     finally:

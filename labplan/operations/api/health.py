@@ -48,7 +48,6 @@ class Metrics(OpenView):
 
     def get(self, request: Any) -> HttpResponse:
         encode, content_type = choose_encoder(request.META.get("HTTP_ACCEPT", ""))
-        with metrics.all_processes() as counted:
-            counted.register(DatabaseGauges())
-            text = encode(counted)
-        return HttpResponse(text, content_type=content_type, headers=NEVER_STORED)
+        registry = metrics.registry_of_all()
+        registry.register(DatabaseGauges())
+        return HttpResponse(encode(registry), content_type=content_type, headers=NEVER_STORED)
