@@ -105,6 +105,7 @@ _QUIETER = {
     "celery.worker.strategy": "WARNING",
     "celery.app.trace": "WARNING",
     "celery.beat": "WARNING",
+    "multiprocessing": "WARNING",
 }
 
 

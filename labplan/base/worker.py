@@ -9,6 +9,7 @@ import signal
 from typing import Any
 
 from celery.signals import celeryd_init, setup_logging, worker_init, worker_process_init
+from celery.utils.log import get_multiprocessing_logger
 
 from labplan.base import metrics, warming
 from labplan.base.endings import end_with_parent
@@ -21,7 +22,9 @@ CHILD_ADDRESS_SPACE = 4 * 1024**3
 @setup_logging.connect
 def keep_our_logging(**_: Any) -> None:
     """Being asked is enough: with somebody listening here, Celery adds no handlers of its own."""
-    logging.captureWarnings(True)  # no raw lines among ours
+    # No raw lines among ours: warnings, and what the pool says of children that died.
+    logging.captureWarnings(True)
+    get_multiprocessing_logger().propagate = True
 
 
 @worker_init.connect

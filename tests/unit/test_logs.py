@@ -170,6 +170,8 @@ assert {type(handler) for handler in handlers} <= {logging.NullHandler}, handler
 logging.getLogger("celery.worker").info("from\\ncelery")
 logging.getLogger("celery.app.trace").info("a line for each task")
 warnings.warn("a warning")
+from billiard.util import get_logger
+get_logger().error("a child died")
 """
 
 
@@ -180,7 +182,9 @@ def test_celery_writes_lines_like_everybody_else(tmp_path: Path) -> None:
     )  # fmt: skip
     assert ended.returncode == 0, ended.stderr
     lines = [json.loads(line) for line in ended.stderr.splitlines()]
-    assert [line["logger"] for line in lines] == ["celery.worker", "py.warnings"]
+    assert [line["logger"] for line in lines] == [
+        "celery.worker", "py.warnings", "multiprocessing",
+    ]  # fmt: skip
     assert lines[0]["message"] == "from\ncelery"
     assert "a warning" in lines[1]["message"]
 
