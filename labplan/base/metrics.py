@@ -149,7 +149,7 @@ class _AllProcesses(Collector):
         fold_dead()
         try:
             with metrics_files.locked(FOLDER):
-                return list(MultiProcessCollector(None, str(FOLDER)).collect())
+                return list(MultiProcessCollector.merge(metrics_files.begun(FOLDER)))
         except Exception as error:
             logger.warning("metrics: no counts: %s: %s", type(error).__name__, error)
             return []

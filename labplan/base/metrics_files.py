@@ -43,6 +43,11 @@ def locked(folder: Path, *, alone: bool = False) -> Iterator[None]:
         os.close(lock)
 
 
+def begun(folder: Path) -> list[str]:
+    """The files that hold something: a process makes its file first and then writes in it."""
+    return sorted(str(path) for path in folder.glob("*.db") if path.stat().st_size)
+
+
 def fold_dead(folder: Path) -> int:
     """Add what dead processes counted to one file a kind; return how many files went."""
     if not _of_the_dead(folder):

@@ -181,6 +181,13 @@ def test_a_folder_that_vanishes_stops_no_work(tmp_path: Path) -> None:
     assert said.count("no counts") == 2
 
 
+def test_a_process_that_is_just_making_its_file_spoils_no_scrape(tmp_path: Path) -> None:
+    kill(counting(2, tmp_path))
+    space = metrics_files.name_of_this_process()
+    (tmp_path / f"counter_{space}.db").touch()
+    assert shown(tmp_path)[REQUESTS] == 2
+
+
 def test_a_file_that_cannot_be_read_spoils_no_scrape(tmp_path: Path) -> None:
     kill(counting(1, tmp_path))
     (tmp_path / "counter_ns1-1.db").write_bytes(b"\xff\xff\x00\x00 no such file was ever written")
@@ -188,3 +195,38 @@ def test_a_file_that_cannot_be_read_spoils_no_scrape(tmp_path: Path) -> None:
     assert text.strip() == ""
     assert trouble.startswith("metrics: no counts: ")
     assert "Traceback" not in trouble
+
+
+# Children count and die, no more than three at a time, while the parent looks again and again.
+DYING = """
+import os, signal
+from labplan.base import metrics
+
+def total():
+    families = metrics.registry_of_all().collect()
+    samples = [sample for family in families for sample in family.samples]
+    return sum(s.value for s in samples if s.name == "labplan_http_requests_total")
+
+def count_and_die(times):
+    for _ in range(times):
+        metrics.count_request("a", "GET", 200, 0.1)
+    os.kill(os.getpid(), signal.SIGKILL)
+
+seen, begun, alive = [0.0], 0, set()
+while begun < 40 or alive:
+    while begun < 40 and len(alive) < 3:
+        begun += 1
+        child = os.fork()
+        if not child:
+            count_and_die(begun)
+        alive.add(child)
+    seen.append(total())
+    ended, _ = os.waitpid(-1, os.WNOHANG)
+    alive.discard(ended)
+print(seen == sorted(seen), int(total()), len(os.listdir(metrics.FOLDER)))
+"""
+
+
+def test_no_look_sees_the_sums_fall_while_processes_die(tmp_path: Path) -> None:
+    text, trouble = run(DYING, folder=tmp_path).communicate(timeout=60)
+    assert (text, trouble) == (f"True {sum(range(41))} 2\n", "")
