@@ -110,7 +110,7 @@ def test_filters_pages_and_headers_are_described(document: dict[str, Any]) -> No
     }  # fmt: skip
     assert parameters(PROCEDURES, "post") == {"Idempotency-Key": True}
     assert parameters(CANCEL, "post") == {"Idempotency-Key": True, "If-Match": True}
-    assert parameters(DETAIL) == {"If-None-Match": False}
+    assert parameters(DETAIL) == {"If-None-Match": False, "Prefer": False}
     accepted = document["paths"][PROCEDURES]["post"]["responses"]["202"]["headers"]
     assert set(accepted) == {"ETag", "Location", "Retry-After", "Idempotency-Replayed"}
 
