@@ -10,10 +10,10 @@ from functools import cache
 import redis
 from django.conf import settings
 
+from labplan.base.channels import NUDGE_CHANNEL, client_address
+
 logger = logging.getLogger(__name__)
 
-NUDGE_CHANNEL = "labplan:nudge"
-CHANGED_CHANNEL = "labplan:changed"
 # A broker that is away must not slow requests down: short waits, and a rest after a failure.
 _PATIENCE_S = 0.25
 _REST_S = 1.0
@@ -30,11 +30,6 @@ def client(url: str | None = None, *, patience_s: float | None = _PATIENCE_S) ->
         client_address(address),
         socket_timeout=patience_s, socket_connect_timeout=patience_s, decode_responses=True,
     )  # fmt: skip
-
-
-def client_address(address: str) -> str:
-    """The address as the redis client reads it: Celery writes sockets as redis+socket://."""
-    return address.replace("redis+socket://", "unix://", 1)
 
 
 def say(channel: str, text: str = "") -> None:

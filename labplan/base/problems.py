@@ -12,22 +12,9 @@ from rest_framework.views import set_rollback
 
 from labplan.base import errors as domain
 from labplan.base import tracing
+from labplan.base.problem_form import CONTENT_TYPE, TYPE_PREFIX, problem_body
 
 logger = logging.getLogger(__name__)
-CONTENT_TYPE = "application/problem+json"
-TYPE_PREFIX = "urn:labplan:problem:"
-
-
-def problem_body(error: domain.DomainError) -> dict[str, Any]:
-    return {
-        "type": TYPE_PREFIX + error.code,
-        "title": error.title,
-        "status": error.status,
-        "code": error.code,
-        "detail": error.detail,
-        "errors": [line.as_dict() for line in error.errors],
-        **error.extra,
-    }
 
 
 def problem_response(exception: Exception, context: dict[str, Any]) -> Response | None:

@@ -6,6 +6,7 @@ import logging
 from django.db import transaction
 
 from labplan.base import broker, metrics
+from labplan.base.channels import CHANGED_CHANNEL
 from labplan.procedures.models import Procedure
 
 logger = logging.getLogger(__name__)
@@ -15,7 +16,7 @@ _settled = metrics.counter("procedures_settled", "Procedures settled, by state."
 def announce_change(procedure: Procedure) -> None:
     """Once the caller's transaction is committed; a hint that may be lost."""
     code = procedure.code
-    transaction.on_commit(lambda: broker.say(broker.CHANGED_CHANNEL, code), robust=True)
+    transaction.on_commit(lambda: broker.say(CHANGED_CHANNEL, code), robust=True)
 
 
 def note_settled(procedure: Procedure) -> None:

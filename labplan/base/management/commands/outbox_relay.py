@@ -10,6 +10,7 @@ from django.db import DatabaseError, close_old_connections
 from kombu.exceptions import OperationalError as BrokerError
 
 from labplan.base import broker, outbox
+from labplan.base.channels import NUDGE_CHANNEL
 from labplan.base.commands import LabCommand
 from labplan.base.tasks import send_to_workers
 
@@ -62,7 +63,7 @@ class _Relay:
     def _wait(self, seconds: float) -> None:
         """Until a nudge or the time is up; all nudges that have come by then count as one."""
         if not self._ear.subscribed:
-            self._ear.subscribe(broker.NUDGE_CHANNEL)
+            self._ear.subscribe(NUDGE_CHANNEL)
         if self._ear.get_message(timeout=seconds) is not None:
             while self._ear.get_message(timeout=0) is not None:
                 pass

@@ -1,0 +1,145 @@
+"""Listen, bound what a client may take, end in order."""
+
+import asyncio
+import json
+import logging
+import os
+import signal
+from contextlib import suppress
+from dataclasses import dataclass
+from typing import Any
+
+from aiohttp import web
+from aiohttp.http_exceptions import BadHttpMethod, HttpProcessingError
+
+from labplan.base.errors import DomainError, MalformedRequest
+from labplan.base.problem_form import CONTENT_TYPE, problem_body
+from labplan.operations.waiting.errors import BrokenHere, MethodUnknown, WebAway
+from labplan.operations.waiting.front import MOST_WAITING, FrontDoor
+from labplan.operations.waiting.hints import Hints, follow_broker
+from labplan.operations.waiting.passing import problem
+from labplan.operations.waiting.upstream import WebService
+
+logger = logging.getLogger(__name__)
+MOST_CONNECTIONS = 800  # under the usual limit of 1,024 open files
+ENDING_S = 0.8  # for the answers under way; then their connections are cut
+LIMITS: dict[str, Any] = {
+    # A connection without a whole head in this time is closed, the first and every later one.
+    "keepalive_timeout": 30.0,
+    "lingering_time": 5.0,  # how long the rest of a refused body is read
+    "max_line_size": 8190,
+    "max_field_size": 8190,
+    "max_headers": 100,
+    "auto_decompress": False,
+    "access_log": None,
+}
+
+
+@dataclass(frozen=True)
+class Options:
+    """What the command line says."""
+
+    listen: str  # host:port or unix:/path
+    web: str  # unix:/path or http://host:port
+    broker: str = ""
+    most_waiting: int = MOST_WAITING
+
+
+class _Conversation(web.RequestHandler):
+    """One connection; what cannot be read or broke is answered in the form of the house."""
+
+    def handle_error(
+        self, request: web.BaseRequest, status: int = 500, exc: BaseException | None = None,
+        message: str | None = None,
+    ) -> web.StreamResponse:  # fmt: skip
+        if request.writer.output_size > 0:
+            raise ConnectionResetError("the answer has begun; only hanging up is left") from exc
+        if isinstance(exc, BadHttpMethod):
+            response = problem(MethodUnknown("Use a registered method of HTTP."))
+        elif isinstance(exc, HttpProcessingError):
+            response = problem(
+                MalformedRequest("The head of the request is no HTTP, or too large.")
+            )
+        else:
+            logger.error("unforeseen error", exc_info=exc)
+            response = problem(BrokenHere("Something broke at the front door. Tell the operator."))
+        response.force_close()
+        return response
+
+
+class _TurnedAway(asyncio.Protocol):
+    """A connection over the limit."""
+
+    def connection_made(self, transport: asyncio.BaseTransport) -> None:
+        assert isinstance(transport, asyncio.Transport)
+        transport.write(_FULL)
+        transport.close()
+
+
+def _bare_answer(error: DomainError) -> bytes:
+    body = json.dumps(problem_body(error)).encode()
+    head = (
+        f"HTTP/1.1 {error.status} Service Unavailable\r\nContent-Type: {CONTENT_TYPE}\r\n"
+        f"Content-Length: {len(body)}\r\nRetry-After: 1\r\nConnection: close\r\n\r\n"
+    )
+    return head.encode() + body
+
+
+_FULL = _bare_answer(WebAway("Too many connections are open. Send the request again in a moment."))
+
+
+class _Server(web.Server):
+    def __call__(self) -> web.RequestHandler:
+        if len(self.connections) >= MOST_CONNECTIONS:
+            return _TurnedAway()  # type: ignore[return-value]
+        return _Conversation(self, loop=asyncio.get_running_loop(), **LIMITS)
+
+
+async def serve(options: Options, stop: asyncio.Event) -> None:
+    """Serve until `stop` is set; those who wait get what is known then. Raises OSError."""
+    hints = Hints()
+    web_service = WebService(options.web)
+    door = FrontDoor(web_service, hints, most_waiting=options.most_waiting)
+    runner = web.ServerRunner(
+        _Server(door.answer, handler_cancellation=True), shutdown_timeout=ENDING_S
+    )
+    await runner.setup()
+    listening = None
+    try:
+        address = await _listen(runner, options.listen)
+        if options.broker:
+            listening = asyncio.create_task(follow_broker(options.broker, hints))
+        logger.info("waiting service: listening on %s", address)
+        await stop.wait()
+        door.let_go()
+    finally:
+        if listening is not None:
+            listening.cancel()
+        await runner.cleanup()
+        await web_service.close()
+        if path := _socket_path(options.listen):
+            with suppress(FileNotFoundError):
+                os.unlink(path)
+    logger.info("waiting service: ended")
+
+
+async def _listen(runner: web.ServerRunner, listen: str) -> str:
+    if path := _socket_path(listen):
+        await web.UnixSite(runner, path, backlog=512).start()
+        return listen
+    host, _, port = listen.rpartition(":")
+    await web.TCPSite(runner, host.strip("[]"), int(port), backlog=512).start()
+    host_bound, port_bound = runner.addresses[0][:2]
+    return f"http://{f'[{host_bound}]' if ':' in host_bound else host_bound}:{port_bound}"
+
+
+def _socket_path(listen: str) -> str:
+    return listen.removeprefix("unix:") if listen.startswith("unix:") else ""
+
+
+async def serve_until_told(options: Options) -> None:
+    """Serve until SIGTERM or SIGINT."""
+    stop = asyncio.Event()
+    for number in (signal.SIGTERM, signal.SIGINT):
+        asyncio.get_running_loop().add_signal_handler(number, stop.set)
+    await serve(options, stop)
