@@ -4,6 +4,7 @@ import re
 from collections.abc import Iterable, Mapping
 from urllib.parse import quote
 
+from aiohttp import ClientResponse
 from aiohttp.web import BaseRequest
 from multidict import CIMultiDict, MultiMapping
 from yarl import URL
@@ -20,16 +21,20 @@ _PRINTABLE = "".join(map(chr, range(0x21, 0x7F)))
 _PROCEDURE = re.compile(r"/procedures/([^/?#]+)/")
 
 
-def end_to_end(headers: MultiMapping[str]) -> CIMultiDict[str]:
-    """All headers but those between two neighbours, in their order, repeated ones too."""
-    named = ",".join(headers.getall("Connection", ())).lower().split(",")
-    dropped = _HOP_BY_HOP.union(name.strip() for name in named)
-    return CIMultiDict((k, v) for k, v in headers.items() if k.lower() not in dropped)
+def end_to_end(message: BaseRequest | ClientResponse) -> CIMultiDict[str]:
+    """All headers but those between two neighbours, as they were written, repeated ones too."""
+    dropped = _HOP_BY_HOP | _listed(message.headers, "Connection")
+    written = ((_text(name), _text(value)) for name, value in message.raw_headers)
+    return CIMultiDict((name, value) for name, value in written if name.lower() not in dropped)
+
+
+def _text(written: bytes) -> str:
+    return written.decode("utf-8", "surrogateescape")
 
 
 def to_web_service(request: BaseRequest, *, is_waiting: bool) -> CIMultiDict[str]:
     """The headers of a request as the web service gets them. Raises MalformedRequest."""
-    headers = end_to_end(request.headers)
+    headers = end_to_end(request)
     _require_text(headers.values())
     if is_waiting:
         lines = list(without_wait(headers.popall("Prefer")))

@@ -37,7 +37,7 @@ class Kept:
             body = await answer.read()
         except (aiohttp.ClientError, TimeoutError) as error:
             raise refusal_for(error) from error
-        return cls(answer.status, answer.reason, end_to_end(answer.headers), body)
+        return cls(answer.status, answer.reason, end_to_end(answer), body)
 
 
 Answer = aiohttp.ClientResponse | Kept
@@ -92,7 +92,7 @@ async def pass_on(
     Raises ConnectionError when either side breaks off: the client's connection is closed then,
     which is the only way left to say that the answer is not whole.
     """
-    headers = end_to_end(answer.headers)
+    headers = end_to_end(answer)
     add_marks(headers, marks)
     response = web.StreamResponse(status=answer.status, reason=answer.reason, headers=headers)
     await response.prepare(request)

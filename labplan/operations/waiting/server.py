@@ -95,32 +95,40 @@ class _Server(web.Server):
         return _Conversation(self, loop=asyncio.get_running_loop(), **LIMITS)
 
 
-async def serve(options: Options, stop: asyncio.Event) -> None:
-    """Serve until `stop` is set; those who wait get what is known then. Raises OSError."""
-    hints = Hints()
-    web_service = WebService(options.web)
-    door = FrontDoor(web_service, hints, most_waiting=options.most_waiting)
-    runner = web.ServerRunner(
-        _Server(door.answer, handler_cancellation=True), shutdown_timeout=ENDING_S
-    )
-    await runner.setup()
-    listening = None
-    try:
-        address = await _listen(runner, options.listen)
-        if options.broker:
-            listening = asyncio.create_task(follow_broker(options.broker, hints))
+class Service:
+    """The service from its first connection to its last."""
+
+    def __init__(self, options: Options) -> None:
+        """Needs a running event loop."""
+        self._options = options
+        self._hints = Hints()
+        self._web_service = WebService(options.web)
+        self.door = FrontDoor(self._web_service, self._hints, most_waiting=options.most_waiting)
+        self._runner = web.ServerRunner(
+            _Server(self.door.answer, handler_cancellation=True), shutdown_timeout=ENDING_S
+        )
+        self._ear: asyncio.Task[None] | None = None
+
+    async def start(self) -> str:
+        """Listen; return the address. Raises OSError."""
+        await self._runner.setup()
+        address = await _listen(self._runner, self._options.listen)
+        if self._options.broker:
+            self._ear = asyncio.create_task(follow_broker(self._options.broker, self._hints))
         logger.info("waiting service: listening on %s", address)
-        await stop.wait()
-        door.let_go()
-    finally:
-        if listening is not None:
-            listening.cancel()
-        await runner.cleanup()
-        await web_service.close()
-        if path := _socket_path(options.listen):
+        return address
+
+    async def end(self) -> None:
+        """Give those who wait what is known now, let answers under way end, cut the others."""
+        self.door.let_go()
+        if self._ear is not None:
+            self._ear.cancel()
+        await self._runner.cleanup()
+        await self._web_service.close()
+        if path := _socket_path(self._options.listen):
             with suppress(FileNotFoundError):
                 os.unlink(path)
-    logger.info("waiting service: ended")
+        logger.info("waiting service: ended")
 
 
 async def _listen(runner: web.ServerRunner, listen: str) -> str:
@@ -129,8 +137,8 @@ async def _listen(runner: web.ServerRunner, listen: str) -> str:
         return listen
     host, _, port = listen.rpartition(":")
     await web.TCPSite(runner, host.strip("[]"), int(port), backlog=512).start()
-    host_bound, port_bound = runner.addresses[0][:2]
-    return f"http://{f'[{host_bound}]' if ':' in host_bound else host_bound}:{port_bound}"
+    bound_host, bound_port = runner.addresses[0][:2]
+    return f"http://{f'[{bound_host}]' if ':' in bound_host else bound_host}:{bound_port}"
 
 
 def _socket_path(listen: str) -> str:
@@ -138,8 +146,13 @@ def _socket_path(listen: str) -> str:
 
 
 async def serve_until_told(options: Options) -> None:
-    """Serve until SIGTERM or SIGINT."""
+    """Serve until SIGTERM or SIGINT. Raises OSError when the address cannot be listened on."""
     stop = asyncio.Event()
     for number in (signal.SIGTERM, signal.SIGINT):
         asyncio.get_running_loop().add_signal_handler(number, stop.set)
-    await serve(options, stop)
+    service = Service(options)
+    try:
+        await service.start()
+        await stop.wait()
+    finally:
+        await service.end()
