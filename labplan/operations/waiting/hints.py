@@ -27,6 +27,7 @@ class Hints:
 
     def __init__(self) -> None:
         self._bells: defaultdict[str, set[asyncio.Event]] = defaultdict(set)
+        self.are_coming = False  # as far as is known
 
     @contextmanager
     def listening(self, code: str) -> Iterator[asyncio.Event]:
@@ -60,12 +61,14 @@ async def follow_broker(address: str, hints: Hints) -> None:
             async for code in _codes(address):
                 rest_s = FIRST_REST_S
                 if code is None:
-                    logger.info("the broker is there: answers are held until it gives a hint")
+                    logger.info("listening to the hints of the broker")
+                    hints.are_coming = True
                     hints.ring_all()  # what changed while it was away
                 else:
                     hints.ring(code)
         except Exception as error:  # whatever the broker does, this service goes on
             logger.warning("no hints from the broker: %s", error)
+        hints.are_coming = False
         await asyncio.sleep(rest_s)
         rest_s = min(2 * rest_s, LONGEST_REST_S)
 

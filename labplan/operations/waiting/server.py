@@ -101,9 +101,9 @@ class Service:
     def __init__(self, options: Options) -> None:
         """Needs a running event loop."""
         self._options = options
-        self._hints = Hints()
+        self.hints = Hints()
         self._web_service = WebService(options.web)
-        self.door = FrontDoor(self._web_service, self._hints, most_waiting=options.most_waiting)
+        self.door = FrontDoor(self._web_service, self.hints, most_waiting=options.most_waiting)
         self._runner = web.ServerRunner(
             _Server(self.door.answer, handler_cancellation=True), shutdown_timeout=ENDING_S
         )
@@ -114,7 +114,7 @@ class Service:
         await self._runner.setup()
         address = await _listen(self._runner, self._options.listen)
         if self._options.broker:
-            self._ear = asyncio.create_task(follow_broker(self._options.broker, self._hints))
+            self._ear = asyncio.create_task(follow_broker(self._options.broker, self.hints))
         logger.info("waiting service: listening on %s", address)
         return address
 
