@@ -123,6 +123,7 @@ class Service:
         self.door.let_go()
         if self._ear is not None:
             self._ear.cancel()
+            await asyncio.wait([self._ear], timeout=0.2)
         await self._runner.cleanup()
         await self._web_service.close()
         if path := _socket_path(self._options.listen):
