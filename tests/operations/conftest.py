@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.operations.servers import BrokerServer, running_broker
+from labplan.operations.broker_server import BrokerServer, running_broker
 
 
 @pytest.fixture

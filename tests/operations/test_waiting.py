@@ -10,11 +10,11 @@ import pytest
 from django.core.signals import request_started
 
 from labplan.base import broker as base_broker
+from labplan.operations.broker_server import BrokerServer
 from labplan.operations.waiting import front, prefer
 from labplan.procedures.demo.live import running_server
 from tests.laboratory import PROCEDURES, Laboratory, octyl_order
 from tests.operations.servers import (
-    BrokerServer,
     Client,
     Later,
     Running,

@@ -2,11 +2,13 @@
 
 import argparse
 import asyncio
-import logging
+import logging.config
+import os
 import re
 import sys
 from collections.abc import Callable, Sequence
 
+from labplan.base.logs import STYLES, logging_configuration
 from labplan.operations.waiting.front import MOST_WAITING
 from labplan.operations.waiting.server import Options, serve_until_told
 
@@ -17,7 +19,8 @@ _BROKER = re.compile(r"(redis|rediss|redis\+socket|unix)://\S+")
 
 def main(arguments: Sequence[str] | None = None) -> int:
     options = _read(arguments)
-    logging.basicConfig(level=logging.INFO, format="%(asctime)s %(levelname)s %(name)s %(message)s")
+    style = os.environ.get("LABPLAN_LOG") or "plain"
+    logging.config.dictConfig(logging_configuration(style if style in STYLES else "plain"))
     try:
         asyncio.run(serve_until_told(options))
     except OSError as error:

@@ -65,16 +65,16 @@ class Command(LabCommand):
                 ]
             )
             with asked_to_stop_by_signals(supervisor.stop_asked), supervisor.running():
-                if self._wait_until_ready(supervisor, listen):
+                if self._wait_until_ready(supervisor, listen, web_socket):
                     self._say_where(listen, options)
                     supervisor.watch()
                 self.stdout.write("Stopping ...")
 
-    def _wait_until_ready(self, supervisor: Supervisor, listen: str) -> bool:
+    def _wait_until_ready(self, supervisor: Supervisor, listen: str, web_socket: Path) -> bool:
         """False when it was stopped before; CommandError when it never gets ready."""
         give_up = time.monotonic() + READY_LIMIT_S
         while not supervisor.stop_asked.wait(0.1):
-            if _is_ready(listen):
+            if web_socket.exists() and _is_ready(listen):
                 return True
             supervisor.look()
             if time.monotonic() > give_up:
@@ -99,7 +99,7 @@ class Command(LabCommand):
     def _say_where(self, listen: str, options: dict[str, Any]) -> None:
         broker = "the broker of REDIS_URL" if settings.BROKER_URL else "a broker of its own"
         self.stdout.write(
-            f"\nlabplan serves at http://{listen}/api/v1/ until Ctrl-C "
+            f"\nlabplan serves at http://{listen}/api/v1/ until Ctrl-C\n"
             f"({options['workers']} planning processes, {broker}).\n"
             f"To read about it: http://{listen}/api/v1/docs/\n"
         )
