@@ -20,6 +20,7 @@ from labplan.base.outbox.messages import (
     limit_s,
     list_dead,
     mark_done,
+    recall_sent,
     send_again,
 )
 from labplan.base.outbox.switch import find_pause, is_paused, pause, resume
@@ -57,6 +58,7 @@ __all__ = [
     "outbox_figures",
     "pause",
     "publish_waiting",
+    "recall_sent",
     "resume",
     "run_message",
     "send_again",

@@ -111,6 +111,14 @@ def hand_back(rows: list[OutboxMessage]) -> None:
         _of_send(row.pk, row.sends).update(state=State.NEW, lease_until=None)
 
 
+def recall_sent() -> int:
+    """Make everything that is sent new again, after a restore; return how many were.
+
+    Whoever was at work on it worked on another database.
+    """
+    return OutboxMessage.objects.filter(state=State.SENT).update(state=State.NEW, lease_until=None)
+
+
 def begin_run(message_id: int, send: int) -> Run | None:
     """Count and commit a run; None when the message is done, or was sent again since."""
     with transaction.atomic(durable=True):

@@ -10,8 +10,15 @@ from labplan.procedures.services.request import (
     request_procedure,
     require_may_request,
 )
+from labplan.procedures.services.verify_documents import (
+    DocumentFault,
+    DocumentsReport,
+    verify_documents,
+)
 
 __all__ = [
+    "DocumentFault",
+    "DocumentsReport",
     "ProcedureOrder",
     "cancel_procedure",
     "give_up_planning",
@@ -22,4 +29,5 @@ __all__ = [
     "requeue_procedure",
     "require_may_cancel",
     "require_may_request",
+    "verify_documents",
 ]
