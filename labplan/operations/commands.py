@@ -8,6 +8,7 @@ from django.db import DatabaseError
 from rich.console import Console
 from rich.progress import Progress
 
+from labplan.base.commands import has_no_tables
 from labplan.base.errors import DomainError
 from labplan.operations.sqlite_file import Progress as Report
 
@@ -29,4 +30,6 @@ def refusals_told() -> Iterator[None]:
     except DomainError as error:
         raise CommandError(error.detail) from error
     except DatabaseError as error:
+        if has_no_tables(error):
+            raise
         raise CommandError(f"The database refused: {str(error).strip()}") from error

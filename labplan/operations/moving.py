@@ -50,6 +50,7 @@ class Moved:
     tables: tuple[MovedTable, ...]
     counts: Counts
     address: str  # without the password
+    is_paused: bool  # because the source was
 
 
 def move_up(url: str, *, progress: Progress) -> Moved:
@@ -64,14 +65,14 @@ def move_up(url: str, *, progress: Progress) -> Moved:
         address = address_of(target)
         _prepare(target, address)
         with transaction.atomic(using=SOURCE, durable=True):
-            health = _require_healthy("This database")
+            health, was_paused = _require_healthy("This database"), outbox.is_paused()
             with transaction.atomic(using=TARGET, durable=True):
                 _keep_others_out(target, address)
                 tables = _copy_all(target, progress)
                 _require_the_same(target, health)
             # The laptop must not go on by mistake; should this fail, the source only goes on.
             outbox.pause(f"moved to {address}"[:160])
-    return Moved(tuple(tables), health.counts, address)
+    return Moved(tuple(tables), health.counts, address, was_paused)
 
 
 def _require_from_sqlite_to_postgresql(url: str) -> None:
@@ -112,7 +113,7 @@ def _prepare(target: BaseDatabaseWrapper, address: str) -> None:
         )
     _require_no_rows(target, address)
     with standing_in(target):
-        if connection.introspection.table_names():
+        if "django_migrations" in connection.introspection.table_names():
             with connection.cursor() as cursor:
                 cursor.execute("SELECT app, name FROM django_migrations")
                 require_known_migrations(cursor.fetchall(), what=f"The target ({address})")
@@ -168,12 +169,15 @@ def _copy_table(table: Table, target: BaseDatabaseWrapper, digest: Digest) -> It
     columns = ", ".join(quote(field.column) for field in table.fields)
     command = f"COPY {quote(table.name)} ({columns}) FROM STDIN"
     try:
-        with target.cursor() as cursor, target.wrap_database_errors:
-            with cursor.cursor.copy(command) as copy:
-                for row in table.rows(SOURCE):
-                    digest.add(row)
-                    copy.write_row(_for_target(table, row, target))
-                    yield
+        with (
+            target.wrap_database_errors,
+            target.cursor() as cursor,
+            cursor.cursor.copy(command) as copy,
+        ):
+            for row in table.rows(SOURCE):
+                digest.add(row)
+                copy.write_row(_for_target(table, row, target))
+                yield
     except (DatabaseError, ValueError) as error:
         raise OperationRefused(
             f"{table.name}, row {digest.rows}: {str(error).strip()}\nNothing was written to the "

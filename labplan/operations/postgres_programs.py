@@ -11,17 +11,20 @@ from django.db.backends.base.base import BaseDatabaseWrapper
 from psycopg.conninfo import make_conninfo
 
 from labplan.operations.errors import OperationRefused, ProgramMissing
+from labplan.settings.database import POSTGRESQL_PATIENCE
 
 FOLDER_VARIABLE = "LABPLAN_PG_BIN"
 ERROR_LINES = 12
 
 
 def address_of(database: BaseDatabaseWrapper) -> str:
-    """The connection string of the database, without the password."""
+    """The connection string of the database as it was given, without the password."""
     settings = database.settings_dict
+    options = settings["OPTIONS"].get("options", "").removesuffix(POSTGRESQL_PATIENCE).strip()
     parts = {
         "dbname": settings["NAME"], "user": settings["USER"],
         "host": settings["HOST"], "port": settings["PORT"], **settings["OPTIONS"],
+        "options": options,
     }  # fmt: skip
     return make_conninfo(**{name: value for name, value in parts.items() if value})
 

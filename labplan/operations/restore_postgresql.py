@@ -10,7 +10,7 @@ from django.db import connection
 
 from labplan.operations.errors import OperationRefused
 from labplan.operations.postgres_programs import address_of, run_program
-from labplan.operations.state import Migration, require_known_migrations, table_of
+from labplan.operations.state import Migration, require_labplans, table_of
 
 HEADER = b"PGDMP"
 OPTIONS = ["--no-owner", "--no-privileges", "--exit-on-error", "--single-transaction"]
@@ -25,13 +25,18 @@ def load(path: Path, *, pause: Callable[[], None]) -> None:
     _require_dump(path)
     _require_empty_and_unused()
     entries = run_program("pg_restore", ["--list", str(path)], connection).splitlines()
-    require_known_migrations(_migrations_in(path), what=str(path))
+    require_labplans(_migrations_in(path), what=str(path))
     table = table_of("base.OutboxPause")
     of_pause = [line for line in entries if table in line]
     if of_pause:
         _restore(path, [line for line in of_pause if " TABLE DATA " not in line])
         pause()
-    _restore(path, [line for line in entries if line not in of_pause])
+    try:
+        _restore(path, [line for line in entries if line not in of_pause])
+    except OperationRefused as error:
+        raise OperationRefused(
+            f"{error.detail}\nThe database is not empty any more: drop it and make it anew."
+        ) from error
 
 
 def _restore(path: Path, entries: list[str]) -> None:

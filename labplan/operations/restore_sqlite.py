@@ -14,7 +14,7 @@ from labplan.operations import sqlite_file
 from labplan.operations.elsewhere import sqlite_url, working_on
 from labplan.operations.errors import OperationRefused
 from labplan.operations.sqlite_file import Progress
-from labplan.operations.state import require_known_migrations, tables_with_rows
+from labplan.operations.state import require_labplans, tables_with_rows
 
 
 @contextlib.contextmanager
@@ -35,7 +35,7 @@ def draft_of(path: Path, *, replace: bool, progress: Progress) -> Iterator[Path]
         except sqlite3.DatabaseError as error:
             raise OperationRefused(f"{path} is damaged or in use: {error}.") from error
         sqlite_file.require_sound(draft, what=str(path))
-        require_known_migrations(sqlite_file.applied_migrations(draft), what=str(path))
+        require_labplans(sqlite_file.applied_migrations(draft), what=str(path))
         yield draft
 
 

@@ -85,7 +85,9 @@ def require_sound(path: Path, *, what: str) -> None:
             strays = connection.execute("PRAGMA foreign_key_check").fetchmany(MOST_FAULTS_SHOWN)
     except sqlite3.DatabaseError as error:
         raise OperationRefused(f"{what} is damaged: {error}.") from error
-    faults += [f"row {row} of {table} points to a {to} that is not there" for table, row, to, _ in strays]
+    faults += [
+        f"row {row} of {table} points to a {to} that is not there" for table, row, to, _ in strays
+    ]
     if faults:
         raise OperationRefused(f"{what} is damaged: {'; '.join(faults)}.")
 

@@ -70,17 +70,22 @@ def foreign_tables(database: BaseDatabaseWrapper) -> list[str]:
 
 
 def require_known_migrations(applied: Iterable[Migration], *, what: str) -> None:
-    """Refuse what is not labplan's, and what a newer labplan has made."""
-    found = set(applied)
-    if not found >= FIRST_MIGRATIONS:
-        raise OperationRefused(f"{what} is no database of labplan: its tables are not there.")
-    unknown = sorted(found - set(MigrationLoader(None).disk_migrations))
+    """Refuse what a newer labplan has made."""
+    unknown = sorted(set(applied) - set(MigrationLoader(None).disk_migrations))
     if unknown:
         names = ", ".join(f"{app}.{name}" for app, name in unknown)
         raise OperationRefused(
             f"{what} was made by a newer labplan: this one does not know {names}. Upgrade labplan "
             "first, then try again."
         )
+
+
+def require_labplans(applied: Iterable[Migration], *, what: str) -> None:
+    """Refuse what is not labplan's, and what a newer labplan has made."""
+    applied = list(applied)
+    if not FIRST_MIGRATIONS.issubset(applied):
+        raise OperationRefused(f"{what} is no database of labplan: its tables are not there.")
+    require_known_migrations(applied, what=what)
 
 
 def has_tables_to_make() -> bool:

@@ -34,7 +34,7 @@ class Table:
         return self.model._meta.db_table
 
     @property
-    def fields(self) -> list[models.Field[Any, Any]]:
+    def fields(self) -> list[Any]:
         return [field for field in self.model._meta.local_concrete_fields if not field.generated]
 
     def count(self, alias: str) -> int:

@@ -45,3 +45,8 @@ class Command(LabCommand):
             "every machine that serves it. The outbox of this SQLite database is paused: keep the "
             "file, do not use it."
         )
+        if moved.is_paused:
+            self.stdout.write(
+                "It was paused before, so the outbox of the target is paused too: 'manage.py "
+                "outbox resume' there."
+            )
