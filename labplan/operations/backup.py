@@ -1,6 +1,5 @@
 """Keep a copy of the database in one file."""
 
-import hashlib
 import os
 import sqlite3
 from dataclasses import dataclass
@@ -8,9 +7,9 @@ from pathlib import Path
 
 from django.db import connection, transaction
 
-from labplan.operations import postgres_programs, sqlite_file
+from labplan.operations import files, postgres_programs, sqlite_file
 from labplan.operations.errors import OperationRefused
-from labplan.operations.sqlite_file import Progress
+from labplan.operations.files import Progress
 from labplan.operations.state import Counts, count_all
 
 
@@ -33,13 +32,13 @@ def make_backup(path: Path, *, force: bool = False, progress: Progress) -> Backu
     _require_free(path, force=force)
     if connection.vendor == "postgresql":
         _require_pg_dump(path)
-    with sqlite_file.draft_beside(path) as draft:
+    with files.draft_beside(path) as draft:
         try:
             copy = _copy_sqlite if connection.vendor == "sqlite" else _copy_postgresql
             counts = copy(draft, progress)
-            size, digest = draft.stat().st_size, hash_file(draft)
+            size, digest = draft.stat().st_size, files.hash_file(draft)
             _require_free(path, force=force)
-            sqlite_file.put_in_place(draft, path)
+            files.put_in_place(draft, path)
         except (OSError, sqlite3.Error) as error:
             raise OperationRefused(f"{path} could not be written: {error}.") from error
     return Backup(path, size, digest, counts)
@@ -90,8 +89,3 @@ def _copy_postgresql(draft: Path, progress: Progress) -> Counts:
         command = postgres_programs.dump_command(address, draft, snapshot=snapshot)
         postgres_programs.run_program("pg_dump", command, connection)
     return counts
-
-
-def hash_file(path: Path) -> str:
-    with path.open("rb") as file:
-        return hashlib.file_digest(file, "sha256").hexdigest()

@@ -10,7 +10,7 @@ from rich.progress import Progress
 
 from labplan.base.commands import has_no_tables
 from labplan.base.errors import DomainError
-from labplan.operations.sqlite_file import Progress as Report
+from labplan.operations.files import Progress as Report
 
 
 @contextmanager

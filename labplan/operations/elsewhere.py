@@ -36,7 +36,7 @@ def standing_in(
     database: BaseDatabaseWrapper, *, alias: str = DEFAULT_DB_ALIAS
 ) -> Iterator[BaseDatabaseWrapper]:
     """Give `database` the place of `alias`; what had the place is back at the end, untouched."""
-    before = getattr(connections._connections, alias, None)
+    before = connections[alias] if alias in connections.settings else None
     connections[alias] = database
     try:
         yield database

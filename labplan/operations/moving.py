@@ -180,8 +180,12 @@ def _copy_table(table: Table, target: BaseDatabaseWrapper, digest: Digest) -> It
                 yield
     except (DatabaseError, ValueError) as error:
         raise OperationRefused(
-            f"{table.name}, row {digest.rows}: {str(error).strip()}\nNothing was written to the "
-            "target."
+            f"{table.name}: {str(error).strip()}\nNothing was written to the target."
+        ) from error
+    except ArithmeticError as error:
+        raise OperationRefused(
+            f"{table.name}, row {digest.rows + 1}: a number has more digits than its column. "
+            "Nothing was written to the target."
         ) from error
 
 

@@ -12,7 +12,7 @@ from django.db import connection
 from labplan.base import clock, outbox
 from labplan.operations import restore_postgresql, restore_sqlite
 from labplan.operations.errors import OperationRefused
-from labplan.operations.sqlite_file import Progress
+from labplan.operations.files import Progress
 from labplan.operations.state import Health, check_health, make_tables
 
 

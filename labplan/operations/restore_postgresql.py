@@ -9,6 +9,7 @@ from pathlib import Path
 from django.db import connection
 
 from labplan.operations.errors import OperationRefused
+from labplan.operations.files import read_start
 from labplan.operations.postgres_programs import address_of, run_program
 from labplan.operations.state import Migration, require_labplans, table_of
 
@@ -55,12 +56,7 @@ def _list_file(entries: list[str]) -> Iterator[Path]:
 
 
 def _require_dump(path: Path) -> None:
-    try:
-        with path.open("rb") as file:
-            start = file.read(len(HEADER))
-    except OSError as error:
-        raise OperationRefused(f"{path} cannot be read: {error.strerror}.") from error
-    if start != HEADER:
+    if read_start(path, len(HEADER)) != HEADER:
         raise OperationRefused(
             f"{path} is no dump of pg_dump in the custom format. A backup of SQLite is restored on "
             "SQLite and then moved with 'manage.py move_up'."

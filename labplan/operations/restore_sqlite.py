@@ -10,10 +10,10 @@ from pathlib import Path
 from django.db import connection
 
 from labplan.base import clock
-from labplan.operations import sqlite_file
+from labplan.operations import files, sqlite_file
 from labplan.operations.elsewhere import sqlite_url, working_on
 from labplan.operations.errors import OperationRefused
-from labplan.operations.sqlite_file import Progress
+from labplan.operations.files import Progress
 from labplan.operations.state import require_labplans, tables_with_rows
 
 
@@ -29,7 +29,7 @@ def draft_of(path: Path, *, replace: bool, progress: Progress) -> Iterator[Path]
         raise OperationRefused(f"{path} is the database itself; name a backup.")
     _require_replaceable(place, replace=replace)
     place.parent.mkdir(parents=True, exist_ok=True)
-    with sqlite_file.draft_beside(place) as draft:
+    with files.draft_beside(place) as draft:
         try:
             sqlite_file.copy_state(path, draft, progress)
         except sqlite3.DatabaseError as error:
@@ -57,7 +57,7 @@ def install(draft: Path) -> Path | None:
     _give_owner_of(place if place.exists() else place.parent, draft)
     if place.exists():
         shutil.copymode(place, draft)
-    sqlite_file.put_in_place(draft, place, keep_as=kept_as)
+    files.put_in_place(draft, place, keep_as=kept_as)
     return kept_as
 
 
@@ -67,6 +67,7 @@ def _place() -> Path:
 
 def _require_replaceable(place: Path, *, replace: bool) -> None:
     if not place.exists():
+        _require_no_log_of(place)
         return
     held = tables_with_rows(connection)
     connection.close()  # or this process itself would keep the file in use
@@ -76,6 +77,14 @@ def _require_replaceable(place: Path, *, replace: bool) -> None:
             "in its place; the present file is kept beside it under a dated name."
         )
     sqlite_file.require_alone(place)
+
+
+def _require_no_log_of(place: Path) -> None:
+    """SQLite would read a log that another database has left as one of the restored file's."""
+    for suffix in ("-wal", "-journal"):
+        log = place.with_name(place.name + suffix)
+        if log.exists():
+            raise OperationRefused(f"{log} is there without its database: move it away first.")
 
 
 def _dated_name(place: Path) -> Path:

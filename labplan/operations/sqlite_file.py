@@ -1,17 +1,14 @@
-"""SQLite databases as files: copied while in use, checked, put in place whole."""
+"""SQLite databases as files: copied while in use, and checked."""
 
 import contextlib
-import os
 import sqlite3
-import tempfile
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from pathlib import Path
 from urllib.parse import quote
 
 from labplan.operations.errors import OperationRefused
+from labplan.operations.files import Progress, read_start
 from labplan.operations.state import Migration
-
-Progress = Callable[[int, int], None]
 
 HEADER = b"SQLite format 3\0"
 PAGES_A_STEP = 1000
@@ -33,26 +30,9 @@ def opened(path: Path) -> Iterator[sqlite3.Connection]:
         connection.close()
 
 
-@contextlib.contextmanager
-def draft_beside(place: Path) -> Iterator[Path]:
-    """A new file in the folder of `place`, readable by its owner only; gone at the end."""
-    handle, name = tempfile.mkstemp(dir=place.parent, prefix=f".{place.name}.", suffix=".part")
-    os.close(handle)
-    try:
-        yield Path(name)
-    finally:
-        for suffix in ("", "-wal", "-shm", "-journal"):
-            Path(name + suffix).unlink(missing_ok=True)
-
-
 def require_sqlite(path: Path) -> None:
     """Refuse a file that is not there, or is not SQLite's."""
-    try:
-        with path.open("rb") as file:
-            start = file.read(len(HEADER))
-    except OSError as error:
-        raise OperationRefused(f"{path} cannot be read: {error.strerror}.") from error
-    if start != HEADER:
+    if read_start(path, len(HEADER)) != HEADER:
         raise OperationRefused(f"{path} is not an SQLite database.")
 
 
@@ -86,7 +66,7 @@ def require_sound(path: Path, *, what: str) -> None:
     except sqlite3.DatabaseError as error:
         raise OperationRefused(f"{what} is damaged: {error}.") from error
     faults += [
-        f"row {row} of {table} points to a {to} that is not there" for table, row, to, _ in strays
+        f"row {row} of {table} points to a row of {to} that is not there" for table, row, to, _ in strays
     ]
     if faults:
         raise OperationRefused(f"{what} is damaged: {'; '.join(faults)}.")
@@ -117,24 +97,3 @@ def require_alone(path: Path) -> None:
         raise OperationRefused(
             f"{path} is in use: stop labplan (web, workers, relay) first, then try again."
         ) from error
-
-
-def put_in_place(draft: Path, place: Path, *, keep_as: Path | None = None) -> None:
-    """Flush `draft` and give it the name `place`, at once; keep what was there as `keep_as`."""
-    flush(draft)
-    if keep_as is not None:
-        try:
-            os.link(place, keep_as)  # so that there is a database at every moment
-        except OSError:
-            os.rename(place, keep_as)  # a file system without links
-    os.replace(draft, place)
-    flush(place.parent)
-
-
-def flush(path: Path) -> None:
-    """See that a file's bytes, or a folder's names, are on the disk."""
-    handle = os.open(path, os.O_RDONLY)
-    try:
-        os.fsync(handle)
-    finally:
-        os.close(handle)

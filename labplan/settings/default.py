@@ -8,6 +8,7 @@ LABPLAN_HOSTS        host names served, separated by commas (default: this machi
 LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
 LABPLAN_PLAN_LIMIT_S when a worker that plans one target is killed (default: 30)
 LABPLAN_LEASE_S      how long a message may lie in the broker before it is sent again (default: 120)
+LABPLAN_PG_BIN       the folder of pg_dump and pg_restore (default: where PATH finds them)
 LABPLAN_LOG          plain or json, a line a record on standard error (default: plain)
 PROMETHEUS_MULTIPROC_DIR  folder in which all processes of a machine count, for /metrics (default:
                      none; each process then counts for itself)

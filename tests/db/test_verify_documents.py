@@ -30,7 +30,9 @@ def _change(document: Document, **values: object) -> None:
         run_sql("SET CONSTRAINTS ALL IMMEDIATE")
     with append_only.lifted(connection):
         for name, value in values.items():
-            run_sql(f"UPDATE procedures_document SET {name} = %s WHERE id = %s", [value, document.pk])
+            run_sql(
+                f"UPDATE procedures_document SET {name} = %s WHERE id = %s", [value, document.pk]
+            )
 
 
 def test_untouched_documents_have_no_faults(planned: list[Procedure]) -> None:
@@ -53,8 +55,8 @@ def test_one_changed_byte_is_found_and_fails_the_command(planned: list[Procedure
     assert (str(failed.value), failed.value.returncode) == ("2 documents: 1 fault(s).", 1)
     assert said.getvalue() == ""
     assert complained.getvalue() == (
-        f"{planned[1].code}, document of attempt 1: its SHA-256 is {sha256_hex(changed)}, stored is "
-        f"{document.sha256}\n"
+        f"{planned[1].code}, document of attempt 1: its SHA-256 is {sha256_hex(changed)}, "
+        f"stored is {document.sha256}\n"
     )
 
 
@@ -76,9 +78,7 @@ def test_bytes_that_are_not_canonical_are_found_under_a_matching_hash(
     changed = spoil(bytes(document.body))  # type: ignore[operator]
     _change(document, body=changed, sha256=sha256_hex(changed))
     assert verify_documents().faults == (
-        DocumentFault(
-            planned[0].code, "document of attempt 1", "its bytes are not canonical JSON"
-        ),
+        DocumentFault(planned[0].code, "document of attempt 1", "its bytes are not canonical JSON"),
     )
 
 

@@ -55,17 +55,13 @@ def build(db: None, tmp_path: Path) -> Iterator[Builder]:
 
 
 @pytest.fixture
-def house(
-    build: Builder, filled_by_kind: dict[str, House], _builder_of_session: Builder
-) -> House:
+def house(build: Builder, filled_by_kind: dict[str, House], _builder_of_session: Builder) -> House:
     """A filled database of the pass's kind."""
     return build.copy_of(_filled(filled_by_kind, "pass", _builder_of_session))
 
 
 @pytest.fixture
-def laptop(
-    build: Builder, filled_by_kind: dict[str, House], _builder_of_session: Builder
-) -> House:
+def laptop(build: Builder, filled_by_kind: dict[str, House], _builder_of_session: Builder) -> House:
     """A filled SQLite database, whatever the pass."""
     kind = "sqlite" if ON_POSTGRESQL else "pass"
     return build.sqlite(copy=_filled(filled_by_kind, kind, _builder_of_session))

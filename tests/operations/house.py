@@ -129,7 +129,9 @@ class Builder:
 
     def postgresql(self, template: str = "") -> House:
         name = f"labplan_test_{secrets.token_hex(6)}"
-        of = f" TEMPLATE {psycopg.conninfo.conninfo_to_dict(template)['dbname']}" if template else ""
+        of = (
+            f" TEMPLATE {psycopg.conninfo.conninfo_to_dict(template)['dbname']}" if template else ""
+        )
         self._administer(f"CREATE DATABASE {name}{of}")
         self._made.append(name)
         return House(_named(name))
