@@ -39,8 +39,10 @@ def make_backup(path: Path, *, force: bool = False, progress: Progress) -> Backu
             size, digest = draft.stat().st_size, files.hash_file(draft)
             _require_free(path, force=force)
             files.put_in_place(draft, path)
-        except (OSError, sqlite3.Error) as error:
+        except (OSError, sqlite3.OperationalError) as error:
             raise OperationRefused(f"{path} could not be written: {error}.") from error
+        except sqlite3.DatabaseError as error:
+            raise OperationRefused(f"The database is damaged: {error}.") from error
     return Backup(path, size, digest, counts)
 
 

@@ -66,7 +66,8 @@ def require_sound(path: Path, *, what: str) -> None:
     except sqlite3.DatabaseError as error:
         raise OperationRefused(f"{what} is damaged: {error}.") from error
     faults += [
-        f"row {row} of {table} points to a row of {to} that is not there" for table, row, to, _ in strays
+        f"row {row} of {table} points to a row of {to} that is not there"
+        for table, row, to, _ in strays
     ]
     if faults:
         raise OperationRefused(f"{what} is damaged: {'; '.join(faults)}.")
