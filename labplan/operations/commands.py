@@ -1,5 +1,6 @@
 """What the commands of this app share: a bar, and refusals in plain words."""
 
+import sqlite3
 from collections.abc import Iterator
 from contextlib import contextmanager
 
@@ -29,7 +30,9 @@ def refusals_told() -> Iterator[None]:
         yield
     except DomainError as error:
         raise CommandError(error.detail) from error
-    except DatabaseError as error:
+    except (DatabaseError, sqlite3.Error) as error:
         if has_no_tables(error):
             raise
         raise CommandError(f"The database refused: {str(error).strip()}") from error
+    except OSError as error:
+        raise CommandError(f"{error.filename}: {error.strerror}.") from error

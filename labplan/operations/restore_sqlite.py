@@ -7,7 +7,7 @@ import sqlite3
 from collections.abc import Iterator
 from pathlib import Path
 
-from django.db import connection
+from django.db import DatabaseError, connection
 
 from labplan.base import clock
 from labplan.operations import files, sqlite_file
@@ -15,6 +15,9 @@ from labplan.operations.elsewhere import sqlite_url, working_on
 from labplan.operations.errors import OperationRefused
 from labplan.operations.files import Progress
 from labplan.operations.state import require_labplans, tables_with_rows
+
+# what SQLite keeps beside a database that was not closed in order
+LOGS = ("-wal", "-journal")
 
 
 @contextlib.contextmanager
@@ -57,6 +60,8 @@ def install(draft: Path) -> Path | None:
     _give_owner_of(place if place.exists() else place.parent, draft)
     if place.exists():
         shutil.copymode(place, draft)
+    if kept_as is not None:
+        _move_logs(place, kept_as)
     files.put_in_place(draft, place, keep_as=kept_as)
     return kept_as
 
@@ -69,22 +74,41 @@ def _require_replaceable(place: Path, *, replace: bool) -> None:
     if not place.exists():
         _require_no_log_of(place)
         return
-    held = tables_with_rows(connection)
-    connection.close()  # or this process itself would keep the file in use
+    held = _what_is_held()
     if held and not replace:
         raise OperationRefused(
-            f"{place} holds data ({len(held)} tables with rows). Give --replace to put the backup "
-            "in its place; the present file is kept beside it under a dated name."
+            f"{place} {held}. Give --replace to put the backup in its place; the present file is "
+            "kept beside it under a dated name."
         )
     sqlite_file.require_alone(place)
 
 
+def _what_is_held() -> str:
+    """In words, what would be lost; empty when nothing would."""
+    try:
+        held = len(tables_with_rows(connection))
+    except DatabaseError as error:
+        return f"cannot be read ({error})"  # perhaps the reason for the restore
+    finally:
+        connection.close()  # or this process itself would keep the file in use
+    return f"holds data ({held} tables with rows)" if held else ""
+
+
 def _require_no_log_of(place: Path) -> None:
     """SQLite would read a log that another database has left as one of the restored file's."""
-    for suffix in ("-wal", "-journal"):
+    for suffix in LOGS:
         log = place.with_name(place.name + suffix)
         if log.exists():
             raise OperationRefused(f"{log} is there without its database: move it away first.")
+
+
+def _move_logs(place: Path, kept_as: Path) -> None:
+    """A damaged database keeps its logs; a sound one has none by now."""
+    for suffix in LOGS:
+        log = place.with_name(place.name + suffix)
+        if log.exists():
+            os.rename(log, kept_as.with_name(kept_as.name + suffix))
+    place.with_name(place.name + "-shm").unlink(missing_ok=True)
 
 
 def _dated_name(place: Path) -> Path:

@@ -85,7 +85,8 @@ def applied_migrations(path: Path) -> list[Migration]:
 def require_alone(path: Path) -> None:
     """Refuse while another process has the database open.
 
-    To leave the write-ahead log SQLite needs the file for itself; afterwards it is one file.
+    To leave the write-ahead log SQLite needs the file for itself; afterwards it is one file. A
+    damaged file cannot be asked and passes.
     """
     try:
         with opened(path) as connection:
@@ -98,3 +99,5 @@ def require_alone(path: Path) -> None:
         raise OperationRefused(
             f"{path} is in use: stop labplan (web, workers, relay) first, then try again."
         ) from error
+    except sqlite3.DatabaseError:
+        return

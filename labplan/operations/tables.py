@@ -17,7 +17,8 @@ from django.db import models
 
 from labplan.operations.state import stored_models
 
-CHUNK = 2000
+# a row may hold a document of 100 kB
+CHUNK = 200
 # A book is written in its order, or its trigger refuses; all else goes by its key.
 ROW_ORDER = {"inventory.Movement": ("bottle_id", "seq")}
 Row = tuple[Any, ...]

@@ -290,6 +290,31 @@ def test_a_damaged_database_gives_no_backup(laptop: House, tmp_path: Path) -> No
     assert not (tmp_path / "b").exists()
 
 
+@pytest.mark.parametrize("garbage", [b"no database at all", None])
+def test_a_damaged_database_is_replaced_and_kept_with_its_log(
+    laptop: House, tmp_path: Path, garbage: bytes | None
+) -> None:
+    _backup(laptop, tmp_path / "b")
+    expected, place = laptop.state(), file_of(laptop)
+    if garbage:
+        place.write_bytes(garbage)
+    else:
+        _spoil_pages(place)
+    spoilt = place.read_bytes()
+    log = place.with_name("labplan.sqlite3-wal")
+    log.write_bytes(b"half a log")
+    with pytest.raises(CommandError, match=r"(cannot be read|holds data).*--replace"):
+        laptop.run("restore", tmp_path / "b")
+    assert place.read_bytes() == spoilt
+    laptop.run("restore", tmp_path / "b", replace=True)
+    assert not log.exists()
+    after = laptop.state()
+    changed = {name for name in after if after[name] != expected[name]}
+    assert changed == {"base_outboxmessage", "base_outboxpause"}
+    [kept] = place.parent.glob("*.before-restore-*Z")
+    assert kept.read_bytes() == spoilt
+
+
 def _spoil_pages(path: Path) -> None:
     content = bytearray(path.read_bytes())
     for page in range(10, 40):
