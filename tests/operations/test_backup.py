@@ -10,6 +10,7 @@ import sys
 from pathlib import Path
 from typing import Any
 
+import psycopg
 import pytest
 from django.core.management import CommandError, call_command
 from django.db import connection
@@ -18,7 +19,12 @@ from inventory.models import Movement
 from inventory.services.verify import verify_ledger
 from labplan.base import outbox
 from labplan.base.models import OutboxMessage
-from labplan.operations import postgres_programs, sqlite_file
+from labplan.operations import (
+    postgres_programs,
+    restore_postgresql,
+    restore_sqlite,
+    sqlite_file,
+)
 from labplan.operations.backup import Backup, make_backup
 from labplan.operations.elsewhere import open_database
 from labplan.operations.errors import OperationRefused
@@ -441,3 +447,39 @@ def test_the_password_is_given_to_the_program_and_not_shown(
     with pytest.raises(OperationRefused) as refused:
         postgres_programs.run_program("pg_dump", ["3", address], database)
     assert refused.value.detail == "pg_dump failed:\nno such host"
+
+
+def test_the_pause_is_there_before_the_first_message_can_be_seen(
+    house: House, build: Builder, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    _backup(house, tmp_path / "b")
+    place = build.empty()
+    seen: list[int] = []
+
+    def look(session: Any) -> None:
+        seen.append(session.execute("SELECT count(*) FROM base_outboxpause").fetchone()[0])
+
+    if ON_POSTGRESQL:
+        plain = restore_postgresql._restore
+
+        def restore(path: Path, entries: list[str]) -> None:
+            if any("base_outboxmessage" in entry for entry in entries):
+                with psycopg.connect(place.url) as session:
+                    look(session)
+            plain(path, entries)
+
+        monkeypatch.setattr(restore_postgresql, "_restore", restore)
+        place.run("restore", tmp_path / "b")
+        assert seen == [1]
+        return
+    install = restore_sqlite.install
+
+    def look_and_install(draft: Path) -> Any:
+        assert not file_of(place).exists()
+        with sqlite_file.opened(draft) as session:
+            look(session)
+        return install(draft)
+
+    monkeypatch.setattr(restore_sqlite, "install", look_and_install)
+    place.run("restore", tmp_path / "b")
+    assert seen == [1]

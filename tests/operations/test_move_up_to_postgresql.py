@@ -351,3 +351,13 @@ def test_what_was_planned_keeps_its_document(laptop: House, server: House) -> No
     laptop.run("move_up", server.url)
     with server.entered():
         assert dict(Procedure.objects.values_list("code", "document__sha256")) == planned
+
+
+def test_nothing_is_lost_where_one_batch_ends_and_the_next_begins(
+    laptop: House, server: House, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    before = _rows(laptop)
+    monkeypatch.setattr(moving, "FIRST_BATCH", 1)
+    monkeypatch.setattr(moving, "LARGEST_BATCH", 22)  # 66 bottles: the last batch is full
+    laptop.run("move_up", server.url)
+    assert _rows(server) == before
