@@ -395,6 +395,30 @@ def test_a_body_that_does_not_come_is_refused_and_takes_no_worker(
     assert recorder.heads == []
 
 
+@pytest.mark.parametrize("begun", [b"", b"x" * passing.SENT_WHOLE_BYTES])
+def test_a_body_that_turns_out_malformed_goes_no_further(
+    begun: bytes, running: Running, recorder: Recorder, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """It is noticed as one of which nothing more comes."""
+    monkeypatch.setattr(passing, "CLIENT_SLOW_S", 0.2)
+    monkeypatch.setitem(server.LIMITS, "lingering_time", 0.2)
+    host, port = running.address.removeprefix("http://").split(":")
+    with socket.create_connection((host, int(port)), timeout=CEILING_S) as connection:
+        connection.sendall(
+            b"POST / HTTP/1.1\r\nHost: x\r\nTransfer-Encoding: chunked\r\n"
+            b"Expect: 100-continue\r\n\r\n"
+        )
+        assert connection.recv(25) == b"HTTP/1.1 100 Continue\r\n\r\n"
+        if begun:
+            connection.sendall(b"%x\r\n%s\r\n" % (len(begun), begun))
+        connection.sendall(b"no number\r\n")
+        answered = b""
+        while piece := connection.recv(65536):
+            answered += piece
+    assert answered.startswith(b"HTTP/1.1 408 ")
+    assert recorder.heads == []
+
+
 def test_a_client_that_does_not_read_is_let_go(
     short_folder: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
