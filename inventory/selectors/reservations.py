@@ -1,6 +1,7 @@
 """Reservations and their holds, as far as the actor's projects reach."""
 
 import uuid
+from datetime import date
 
 from django.db.models import QuerySet
 
@@ -17,3 +18,9 @@ def visible_reservations(*, actor: Actor) -> QuerySet[Reservation]:
 def held_lines(*, code: uuid.UUID) -> QuerySet[Hold]:
     """The holds of one reservation, for the app that made it."""
     return Hold.objects.filter(reservation__code=code).select_related("bottle").order_by("line")
+
+
+def overdue_codes(*, today: date) -> list[uuid.UUID]:
+    """The reservations that still hold something after their last day, oldest first."""
+    found = Reservation.objects.filter(state=Reservation.State.OPEN, expires_on__lt=today)
+    return list(found.order_by("expires_on", "pk").values_list("code", flat=True))

@@ -14,7 +14,7 @@ from inventory.models import Bottle, Hold, Reservation
 from inventory.services.book import BookLine, write_lines
 from labplan.base import clock
 from labplan.base.errors import NotFound, StateForbids
-from labplan.base.rights import Actor, require
+from labplan.base.rights import LABPLAN, Actor, require
 
 # how a bottle is measured -> (the unit people write, base units in one)
 _WRITTEN_UNITS = {"mass": ("mg", 1_000), "volume": ("mL", 1_000_000), "count": ("pieces", 1)}
@@ -76,15 +76,33 @@ def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
     require(actor, "reservation.release", project_id=reservation.project_id)
     if reservation.state != Reservation.State.OPEN:
         raise StateForbids("This reservation is closed; it holds nothing any more.")
+    _give_all_back(reservation, actor=actor, reason=reason, kind="release", end=Hold.State.RELEASED)
+
+
+def lapse_reservation(*, code: uuid.UUID, reason: str) -> bool:
+    """Give back what a reservation still holds when its last day is over, in the caller's open
+    transaction; False, and nothing changed, when it is closed or was extended meanwhile.
+    """
+    locks.require_transaction()
+    reservation = Reservation.objects.select_for_update(no_key=True).get(code=code)
+    if not reservation.is_overdue(clock.today()):
+        return False
+    _give_all_back(reservation, actor=LABPLAN, reason=reason, kind="lapse", end=Hold.State.LAPSED)
+    return True
+
+
+def _give_all_back(
+    reservation: Reservation, *, actor: Actor, reason: str, kind: str, end: str
+) -> None:
     open_holds = reservation.holds.filter(state=Hold.State.OPEN)
-    holds = list(open_holds.select_related("bottle").order_by("line"))
     write_lines(
-        [_give_back_line(hold) for hold in holds],
+        [
+            _give_back_line(hold, kind)
+            for hold in open_holds.select_related("bottle").order_by("line")
+        ],
         actor=actor, project_id=reservation.project_id, reason=reason,
     )  # fmt: skip
-    reservation.holds.filter(state=Hold.State.OPEN).update(
-        given_back=F("amount") - F("used"), state=Hold.State.RELEASED
-    )
+    open_holds.update(given_back=F("amount") - F("used"), state=end)
     reservation.state = Reservation.State.CLOSED
     reservation.version += 1
     reservation.save(update_fields=["state", "version"])
@@ -127,10 +145,10 @@ def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLi
     )  # fmt: skip
 
 
-def _give_back_line(hold: Hold) -> BookLine:
+def _give_back_line(hold: Hold, kind: str) -> BookLine:
     left = hold.amount - hold.used
     unit, factor = _WRITTEN_UNITS[hold.bottle.measured_by]
     return BookLine(
-        bottle_id=hold.bottle_id, kind="release", held_change=-left, hold_id=hold.pk,
+        bottle_id=hold.bottle_id, kind=kind, held_change=-left, hold_id=hold.pk,
         entered_amount=f"{(Decimal(left) / factor).normalize():f}", entered_unit=unit,
     )  # fmt: skip

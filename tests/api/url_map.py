@@ -31,6 +31,10 @@ class Expected:
     post_only_looks: bool = False
     # concerns only who asks, so that no role is needed
     is_own: bool = False
+    # public, but told anew each time: durations, counts
+    changes_by_itself: bool = False
+    # lies at the root and not under api/v1/; what lies at both is described under the prefix
+    only_at_root: bool = False
 
 
 # A route that is not in here fails test_rights_walk: say who may see it before it is served.
@@ -40,6 +44,9 @@ EXPECTED: dict[str, Expected] = {
     "login": Expected("door", (), ("POST", "OPTIONS"), 422, is_own=True),
     "token-list": Expected("own", (), (*READS, "POST"), 422, is_own=True),
     "token-revoke": Expected("hidden", ("token",), ("POST", "OPTIONS"), 404, is_own=True),
+    "health-live": Expected("public"),
+    "health-ready": Expected("public", changes_by_itself=True),
+    "metrics": Expected("public", changes_by_itself=True, only_at_root=True),
     "project-list": Expected("nothing"),
     "project-detail": Expected("hidden", ("project",)),
     "substance-list": Expected("stock"),
@@ -58,6 +65,11 @@ EXPECTED: dict[str, Expected] = {
     "procedure-sheet-pdf": Expected("hidden", ("procedure",)),
     "procedure-cancel": Expected("hidden", ("procedure",), ("POST", "OPTIONS"), 404),
 }
+
+
+# Served at the root as well, for load balancers and Prometheus beside the proxy.
+AT_ROOT = {"health/live/", "health/ready/", "metrics"}
+DESCRIBED = {name: expected for name, expected in EXPECTED.items() if not expected.only_at_root}
 
 
 def served_patterns() -> Iterator[tuple[str, URLPattern]]:

@@ -1,11 +1,12 @@
-"""Run the quick measurements and print one table; the long ones when they are asked for.
+"""Run the measurements and print a table each: all of them, or those that are named.
 
-make bench ARGS="--ledger 1000000"                sealing and checking a large ledger
-make bench ARGS="--ledger 1000000 --postgresql"   the same on PostgreSQL
+python -m tests.bench [engine] [workers] [ledger[:MOVEMENTS]] [ledger-postgresql[:MOVEMENTS]]
+
+The last two seal and check a large ledger; they are run only when they are named.
 """
 
-import argparse
 import gc
+import json
 import statistics
 import subprocess
 import sys
@@ -25,7 +26,7 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.bench import ledger, paper
+from tests.bench import ledger, paper, workers
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import PENTENYL_LACTOSIDE
 
@@ -89,14 +90,8 @@ def memory_mb(kind: str) -> str:
     return f"{ended.stdout.strip()} MB"
 
 
-def main() -> None:
-    parser = argparse.ArgumentParser(prog="make bench")
-    parser.add_argument("--ledger", type=int, metavar="MOVEMENTS", help="measure a large ledger")
-    parser.add_argument("--postgresql", action="store_true", help="that on PostgreSQL")
-    options = parser.parse_args()
-    if options.ledger:
-        Console(width=110).print(ledger.measure(options.ledger, on_postgresql=options.postgresql))
-        return
+def engine() -> Table:
+    """Planning, documents, paper and memory."""
     table = Table("measured", "median", "beside it", "median", "ratio")
     bare = median_ms(bare_rdkit)
     for name, work in (
@@ -115,8 +110,54 @@ def main() -> None:
         )
     for kind in ("web", "worker"):
         table.add_row(f"{kind} process after 50 plans (PSS)", memory_mb(kind), "", "", "")
-    Console(width=110).print(table)
+    return table
+
+
+def real_workers() -> Table:
+    """Queued requests planned by one worker and by two; one request on an idle house."""
+    ended = subprocess.run(
+        [sys.executable, "-m", "tests.bench.workers"],
+        stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, text=True, check=True,
+    )  # fmt: skip
+    found = json.loads(ended.stdout.splitlines()[-1])
+    one, two = statistics.median(found["one_s"]), statistics.median(found["two_s"])
+    table = Table("measured (PostgreSQL)", "median", "beside it", "median", "ratio")
+    table.add_row(
+        f"{workers.REQUESTS} queued requests, one worker", f"{one:.2f} s",
+        "two workers", f"{two:.2f} s", f"{found['ratio']:.2f} (median of {workers.RUNS} pairs)",
+    )  # fmt: skip
+    table.add_row(
+        "request to planned, nothing else to do",
+        f"{found['latency_ms']:.0f} ms (90 %: {found['latency_p90_ms']:.0f})",
+        "planning and settling alone", f"{found['bare_ms']:.0f} ms",
+        f"+{found['latency_ms'] - found['bare_ms']:.0f} ms",
+    )  # fmt: skip
+    idle_ms = found["longest_idle_in_transaction_ms"]
+    table.add_row("idle in transaction over 50 ms", f"{idle_ms:.0f} ms" if idle_ms else "never",
+                  "", "", "")  # fmt: skip
+    return table
+
+
+SECTIONS: dict[str, Callable[[], Table]] = {"engine": engine, "workers": real_workers}
+
+
+LONG = {"ledger": False, "ledger-postgresql": True}  # whether on PostgreSQL
+MOVEMENTS = 1_000_000
+
+
+def section(name: str) -> Table:
+    kind, _, movements = name.partition(":")
+    if kind in LONG:
+        return ledger.measure(int(movements or MOVEMENTS), on_postgresql=LONG[kind])
+    return SECTIONS[kind]()
+
+
+def main(wanted: list[str]) -> None:
+    if unknown := {name.partition(":")[0] for name in wanted} - {*SECTIONS, *LONG}:
+        sys.exit(f"no measurement {', '.join(unknown)}; there are: {', '.join([*SECTIONS, *LONG])}")
+    for name in wanted or SECTIONS:
+        Console(width=120).print(section(name))
 
 
 if __name__ == "__main__":
-    main()
+    main(sys.argv[1:])

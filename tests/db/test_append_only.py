@@ -295,8 +295,6 @@ def test_a_second_seal_of_one_number_is_refused() -> None:
 @pytest.mark.parametrize(
     ("changes", "words"),
     [
-        ({"seal_id": 1, "first": 9, "last": 9}, "belongs to no new seal"),
-        ({"seal_id": 3, "first": 9, "last": 9}, "belongs to no new seal"),
         ({"first": 1, "last": 1}, "covers what is sealed"),
         ({"first": 2, "last": 3}, "covers what is sealed"),
         ({"first": 1, "last": 9}, "covers what is sealed"),

@@ -86,8 +86,8 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
         "headers": "{}", "body": "", "created_at": NOON,
     },
     "base_outboxmessage": lambda code: {
-        "topic": "t", "payload": "{}", "state": "new", "attempts": 0, "created_at": NOON,
-        "available_at": NOON, "last_error": "",
+        "topic": "t", "queue": "q", "payload": "{}", "request_id": "", "state": "new", "sends": 0,
+        "attempts": 0, "created_at": NOON, "available_at": NOON, "last_error": "",
     },
     "base_seal": lambda code: {
         "number": 2, "sealed_at": NOON, "key_print": "p", "before": "0" * 64, "runs": 3, "rows": 3,
@@ -97,6 +97,7 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
         "seal_id": 1, "book": code, "subject": 0, "first": 5, "last": 6, "marks": "m" * 16,
         "digest": "1" * 64,
     },
+    "base_outboxpause": lambda code: {"id": 1, "since": NOON, "reason": "r"},
     "inventory_place": lambda code: {"code": code, "name": "n", "is_locked": False},
     "inventory_substance": lambda code: {
         "code": code, "kind": "defined", "name": "n", "search_key": "n", "cas": "",
@@ -129,7 +130,7 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "procedures_procedure": lambda code: {
         "code": code, "project_id": _key(Project), "requested_by": "LEAD", "target_smiles": "C",
         "product_mass_mg": 1, "promoter": "", "solvent": "", "state": "queued", "reasons": "[]",
-        "attempt": 0, "version": 1, "created_at": NOON,
+        "attempt": 0, "broken_off": 0, "phase": "waiting", "version": 1, "created_at": NOON,
     },
     "procedures_document": lambda code: {
         "procedure_id": _key(Procedure), "attempt": 2, "body": b"{}", "sha256": "0" * 64,
@@ -195,6 +196,7 @@ CHECKS = [
     ),
     Attack("seal_run_digest_long", "base_sealrun", {"digest": "1" * 63}),
     *[Attack("seal_run_row_marked", "base_sealrun", {"marks": "m" * n}) for n in (0, 15, 17, 24)],
+    Attack("outbox_pause_is_one", "base_outboxpause", {"id": 2}),
     Attack("substance_kind_known", "inventory_substance", {"kind": "wish"}),
     Attack("substance_defined_has_structure", "inventory_substance", {"inchikey": None}),
     Attack("substance_defined_has_structure", "inventory_substance", {"smiles": ""}),
@@ -293,6 +295,7 @@ CHECKS = [
     *[Attack("movement_hold_fits_kind", MOVEMENT, _held(k, 1, 1, 1)) for k in KINDS_UP],
     Attack("movement_hold_fits_kind", MOVEMENT, _held("transfer", 0, 1, 1)),
     Attack("procedure_state_known", PROCEDURE, {"state": "lost"}),
+    Attack("procedure_phase_known", PROCEDURE, {"phase": "dreaming"}),
     Attack("procedure_has_one_scale", PROCEDURE, {"acceptor_amount_mmol": 1}),
     Attack("procedure_has_one_scale", PROCEDURE, {"product_mass_mg": None}),
     Attack("procedure_has_one_scale", PROCEDURE, {"product_mass_mg": 0}),
@@ -310,6 +313,7 @@ CHECKS = [
         Attack(f"{table}.{column} not negative", table, {column: -1})
         for table, column in [
             ("base_rememberedanswer", "status"), ("base_outboxmessage", "attempts"),
+            ("base_outboxmessage", "sends"), (PROCEDURE, "broken_off"),
             ("inventory_reservation", "version"), ("inventory_hold", "line"),
             (PROCEDURE, "attempt"), (PROCEDURE, "version"), ("procedures_document", "attempt"),
         ]
