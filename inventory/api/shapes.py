@@ -4,10 +4,10 @@ from decimal import Decimal
 from typing import Any
 
 from inventory.models import Bottle, Hold, Movement, Place, Reservation, Substance
+from inventory.quantities import AMOUNT_FIELDS
 
 # how a bottle is measured -> (name of the amount, base units in one)
-AMOUNT_NAMES = {"mass": ("mass_mg", 1_000), "volume": ("volume_ml", 1_000_000),
-                "count": ("pieces", 1)}  # fmt: skip
+AMOUNT_NAMES = {kind: (name, factor) for name, (kind, _, factor) in AMOUNT_FIELDS.items()}
 
 
 def amount(measured_by: str, base_units: int, prefix: str = "") -> dict[str, str]:
