@@ -17,7 +17,7 @@ from inventory.services.importing import MOST_ERRORS_SHOWN
 from inventory.services.once import write_once
 from inventory.services.reservations import invalid
 from inventory.services.using import check_day
-from labplan.base.errors import DomainError, FieldProblem, StateForbids
+from labplan.base.errors import DomainError, FieldProblem, InvalidValue, StateForbids
 from labplan.base.events import record_event
 from labplan.base.idempotency import Once
 from labplan.base.rights import Actor, require
@@ -154,13 +154,11 @@ def _facts(counts: Sequence[Count]) -> list[Fact]:
         except DomainError as error:
             problems += error.errors
     if problems:
-        raise invalid_lines(problems)
+        several = "Correct the lines listed in errors; nothing was counted."
+        raise InvalidValue(
+            problems[0].detail if len(problems) == 1 else several, errors=tuple(problems)
+        )
     return facts
-
-
-def invalid_lines(problems: Sequence[FieldProblem]) -> DomainError:
-    error = invalid("lines", "", "Correct the fields listed in errors.")
-    return type(error)(error.detail, errors=tuple(problems))
 
 
 def _fact(count: Count, bottle: Bottle | None, field: str) -> Fact:

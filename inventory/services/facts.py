@@ -284,7 +284,7 @@ class _Work:
         missing = {hold.reservation_id for hold in victims} - self.locked.keys()
         if missing:
             raise _MoreToLock(missing)
-        why = f"it is {status}" if keeps_none else self._why(shelf)
+        why = f"it is {status}" if keeps_none else self._why(shelf) if victims else ""
         for hold in victims:
             self.cancelled.append(CancelledHold.of(hold, self.left[hold.pk], why))
             self._give_back(hold, self.left[hold.pk], f"cancelled: {why}")
