@@ -1,6 +1,9 @@
 """What may be done with the stock. Other apps call these and never its models."""
 
 from inventory.services.bottles import (
+    OPERATIONS as MOVEMENT_RIGHTS,
+)
+from inventory.services.bottles import (
     BottleMoved,
     MovementOrder,
     ReadingOrder,
@@ -18,6 +21,7 @@ from inventory.services.keeping import (
     make_firm,
     require_reservation,
 )
+from inventory.services.minimum import set_minimum
 from inventory.services.notices import HOLDS_CANCELLED_TOPIC, mark_notice_read, require_own_notice
 from inventory.services.once import operation_of
 from inventory.services.picking import Wanted
@@ -34,6 +38,7 @@ from inventory.services.using import Actual, Used, use_reservation
 
 __all__ = [
     "HOLDS_CANCELLED_TOPIC",
+    "MOVEMENT_RIGHTS",
     "Actual",
     "BottleMoved",
     "BottleReceipt",
@@ -70,6 +75,7 @@ __all__ = [
     "require_reservation",
     "reserve",
     "set_bottle_status",
+    "set_minimum",
     "set_quota",
     "use_reservation",
 ]
