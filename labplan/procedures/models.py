@@ -24,6 +24,8 @@ class Procedure(models.Model):
     reasons = models.TextField(default="[]")  # [{code, detail}], for lists
     attempt = models.PositiveSmallIntegerField(default=0)
     reservation_code = models.UUIDField(null=True, unique=True)
+    # what the stock took back of its reservation, [{line, bottle, amount, why}]
+    lost_holds = models.TextField(default="[]")
     document = models.ForeignKey("Document", models.PROTECT, null=True, related_name="+")
     version = models.PositiveIntegerField(default=1)
     created_at = models.DateTimeField()

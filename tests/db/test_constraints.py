@@ -131,7 +131,7 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "procedures_procedure": lambda code: {
         "code": code, "project_id": _key(Project), "requested_by": "LEAD", "target_smiles": "C",
         "product_mass_mg": 1, "promoter": "", "solvent": "", "state": "queued", "reasons": "[]",
-        "attempt": 0, "version": 1, "created_at": NOON,
+        "lost_holds": "[]", "attempt": 0, "version": 1, "created_at": NOON,
     },
     "procedures_document": lambda code: {
         "procedure_id": _key(Procedure), "attempt": 2, "body": b"{}", "sha256": "0" * 64,
