@@ -75,6 +75,7 @@ class BottleStatus(LookView):
             work=lambda claim: services.set_bottle_status(
                 actor=request.user, bottle_code=code, status=values["status"],
                 reason=values["reason"], once=claim,
+                operation_id=services.operation_of(claim),
                 check_version=lambda bottle: require_match(request, shapes.bottle_etag(bottle)),
             ),
         )  # fmt: skip

@@ -114,6 +114,7 @@ class ReservationRelease(LookView):
             request, route="reservation.release", check_rights=check, render=_shown,
             work=lambda claim: services.give_back(
                 actor=request.user, code=code, reason=values.get("reason", ""), once=claim,
+                operation_id=services.operation_of(claim),
                 check_version=lambda r: require_match(request, shapes.reservation_etag(r)),
             ),
         )  # fmt: skip

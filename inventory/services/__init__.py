@@ -23,7 +23,7 @@ from inventory.services.keeping import (
 )
 from inventory.services.minimum import set_minimum
 from inventory.services.notices import HOLDS_CANCELLED_TOPIC, mark_notice_read, require_own_notice
-from inventory.services.once import operation_of
+from inventory.services.once import operation_of, write_once
 from inventory.services.picking import Wanted
 from inventory.services.projects import require_project
 from inventory.services.quotas import QuotaOrder, set_quota
@@ -78,4 +78,5 @@ __all__ = [
     "set_minimum",
     "set_quota",
     "use_reservation",
+    "write_once",
 ]

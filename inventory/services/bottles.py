@@ -153,7 +153,8 @@ def _transfer(
 
 def set_bottle_status(
     *, actor: Actor, bottle_code: str, status: str, reason: str,
-    check_version: Callable[[Bottle], None], once: Once | None = None,
+    check_version: Callable[[Bottle], None], operation_id: uuid.UUID | None = None,
+    once: Once | None = None,
 ) -> BottleMoved:  # fmt: skip
     """Set a bottle aside from use (its holds are cancelled), or give it free again.
 
@@ -171,18 +172,22 @@ def set_bottle_status(
             raise StateForbids(f"{bottle_code} is disposed of; nothing brings it back.")
 
     def body() -> BottleMoved:
-        return _change_status(actor, bottle, status, reason, check)
+        return _change_status(actor, bottle, status, reason, check, operation_id)
 
-    return write_once(body, operation_id=None, once=once, earlier=_never)
+    return write_once(
+        body, operation_id=operation_id, once=once,
+        earlier=lambda operation: BottleMoved(bottle_code, 0),
+    )  # fmt: skip
 
 
 def _change_status(
     actor: Actor, bottle: Bottle, status: str, reason: str,
-    check: Callable[[Bottle], None] | None = None,
+    check: Callable[[Bottle], None] | None = None, operation_id: uuid.UUID | None = None,
 ) -> BottleMoved:  # fmt: skip
     written = write_facts(
-        [], actor=actor, project_id=None, reason=reason, statuses={bottle.pk: status}, check=check
-    )
+        [], actor=actor, project_id=None, reason=reason, statuses={bottle.pk: status},
+        check=check, operation_id=operation_id,
+    )  # fmt: skip
     _record_status(actor, bottle, status, reason)
     return BottleMoved(bottle.code, len(written.cancelled))
 
@@ -231,5 +236,5 @@ def record_reading(
     return write_once(body, operation_id=None, once=once, earlier=_never)
 
 
-def _never(operation_id: uuid.UUID) -> BottleMoved | Reading:
+def _never(operation_id: uuid.UUID) -> Reading:
     raise AssertionError("only an operation with an id is looked up again")

@@ -68,7 +68,9 @@ def hold_lines(
     return reservation
 
 
-def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
+def release_reservation(
+    *, actor: Actor, code: uuid.UUID, reason: str, operation_id: uuid.UUID | None = None
+) -> None:
     """Give back what a reservation still holds, in the caller's open transaction.
 
     Raises NotFound, NotAllowed, and StateForbids when it is closed already.
@@ -84,7 +86,7 @@ def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
     holds = list(open_holds.select_related("bottle__form__substance").order_by("line"))
     write_lines(
         [_give_back_line(hold) for hold in holds],
-        actor=actor, project_id=reservation.project_id, reason=reason,
+        actor=actor, project_id=reservation.project_id, reason=reason, operation_id=operation_id,
     )  # fmt: skip
     reservation.holds.filter(state=Hold.State.OPEN).update(
         given_back=F("amount") - F("used"), state=Hold.State.RELEASED

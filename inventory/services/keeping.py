@@ -9,6 +9,7 @@ from django.db import transaction
 from inventory import locks
 from inventory.models import Hold, Reservation
 from inventory.services.holds import release_reservation
+from inventory.services.once import write_once
 from inventory.services.reservations import day_within_reach, invalid
 from labplan.base.errors import NotFound, StateForbids
 from labplan.base.idempotency import Once, Unclaimed
@@ -25,22 +26,25 @@ def require_reservation(*, actor: Actor, code: uuid.UUID, operation: str) -> Res
 
 def give_back(
     *, actor: Actor, code: uuid.UUID, reason: str, check_version: VersionCheck,
-    once: Once | None = None,
+    operation_id: uuid.UUID | None = None, once: Once | None = None,
 ) -> Reservation:  # fmt: skip
     """Release what a reservation still holds.
 
     Raises NotFound, NotAllowed, StateForbids, and what `check_version` raises on the locked row.
-    Safe to repeat with the same claim.
+    Safe to repeat with the same operation id or claim.
     """
-    claim = once or Unclaimed()
-    with transaction.atomic(durable=True):
-        claim.insert()
+
+    def body() -> Reservation:
         reservation = _locked(actor, code, "reservation.release")
         check_version(reservation)
-        release_reservation(actor=actor, code=code, reason=reason)
-        reservation.refresh_from_db()
-        claim.remember(reservation)
-    return reservation
+        release_reservation(actor=actor, code=code, reason=reason, operation_id=operation_id)
+        reservation.refresh_from_db(fields=["state", "version"])
+        return reservation
+
+    def earlier(operation: uuid.UUID) -> Reservation:
+        return require_reservation(actor=actor, code=code, operation="reservation.release")
+
+    return write_once(body, operation_id=operation_id, once=once, earlier=earlier)
 
 
 def extend_reservation(
