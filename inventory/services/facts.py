@@ -12,10 +12,10 @@ from dataclasses import dataclass, field
 from datetime import date
 
 from django.db import transaction
-from django.db.models import F
+from django.db.models import F, Q
 
 from inventory import locks
-from inventory.models import Bottle, Hold, Reservation
+from inventory.models import Balance, Bottle, Hold, Reservation
 from inventory.quantities import Quantity, converted, own_quantity
 from inventory.services.book import BookLine, write_lines
 from inventory.services.notices import CancelledHold, tell_who_is_hit
@@ -92,12 +92,16 @@ def write_facts(
     """
     locks.require_transaction()
     own = {fact.hold_id for fact in facts if fact.hold_id is not None}
-    wanted = set(Hold.objects.filter(pk__in=own).values_list("reservation_id", flat=True))
+    rows = Hold.objects.filter(pk__in=own).values_list("reservation_id", "bottle_id")
+    found = list(rows) if own else []
+    wanted = {reservation_id for reservation_id, _ in found}
+    bottles = {fact.bottle.pk for fact in facts} | set(statuses or {})
+    bottles |= {bottle_id for _, bottle_id in found}
     for _ in range(TRIES):
         try:
             with transaction.atomic():
                 locked = locks.lock_reservations(wanted)
-                work = _Work(facts, dict(statuses or {}), locked)
+                work = _Work(facts, dict(statuses or {}), bottles, locked)
                 for shelf in work.shelves.values():
                     (check or _no_check)(shelf.bottle)
                 return work.write(
@@ -125,23 +129,24 @@ class _Shelf:
     out: list[BookLine] = field(default_factory=list)
 
 
+def _shelf(bottle: Bottle, balance: Balance) -> _Shelf:
+    bottle.balance = balance
+    return _Shelf(bottle, balance.on_hand, balance.held)
+
+
 class _Work:
     """The lines of one operation, worked out on locked rows."""
 
     def __init__(
-        self, facts: Sequence[Fact], statuses: dict[int, str], locked: dict[int, Reservation]
-    ) -> None:
+        self, facts: Sequence[Fact], statuses: dict[int, str], bottles: set[int],
+        locked: dict[int, Reservation],
+    ) -> None:  # fmt: skip
         self.facts, self.statuses, self.locked = facts, statuses, locked
-        own = {fact.hold_id for fact in facts if fact.hold_id is not None}
-        bottles = {fact.bottle.pk for fact in facts} | set(statuses)
-        bottles |= set(Hold.objects.filter(pk__in=own).values_list("bottle_id", flat=True))
         balances = locks.read_balances(bottles)
         # Read after the locks: nobody makes or changes a hold on these bottles any more.
-        self.holds = {hold.pk: hold for hold in self._holds_on(bottles, own)}
-        rows = Bottle.objects.select_related("form__substance", "balance").in_bulk(bottles)
-        self.shelves = {
-            pk: _Shelf(rows[pk], balance.on_hand, balance.held) for pk, balance in balances.items()
-        }
+        rows = Bottle.objects.select_related("form__substance").in_bulk(bottles)
+        self.shelves = {pk: _shelf(rows[pk], balance) for pk, balance in balances.items()}
+        self.holds = {hold.pk: hold for hold in self._holds_on(bottles)}
         self.left = {pk: _left(hold) for pk, hold in self.holds.items()}
         self.used: dict[int, int] = defaultdict(int)
         self.given_back: dict[int, int] = defaultdict(int)
@@ -150,10 +155,14 @@ class _Work:
         self.cancelled: list[CancelledHold] = []
         self.counted: list[Counted] = []
 
-    def _holds_on(self, bottles: set[int], own: set[int | None]) -> list[Hold]:
-        rows = Hold.objects.select_related("reservation__project", "bottle__form__substance")
-        open_there = rows.filter(bottle__in=bottles, state=Hold.State.OPEN)
-        return [*open_there, *rows.filter(pk__in=own).exclude(state=Hold.State.OPEN)]
+    def _holds_on(self, bottles: set[int]) -> list[Hold]:
+        """What is held of these bottles, and the holds that the facts are charged against."""
+        own = [fact.hold_id for fact in self.facts if fact.hold_id is not None]
+        wanted = Q(bottle__in=bottles, state=Hold.State.OPEN) | Q(pk__in=own)
+        holds = list(Hold.objects.filter(wanted).select_related("reservation"))
+        for hold in holds:
+            hold.bottle = self.shelves[hold.bottle_id].bottle
+        return holds
 
     def write(
         self, *, actor: Actor, project_id: int | None, reason: str,
@@ -318,9 +327,10 @@ class _Work:
     def _store_openings(self, day: date) -> None:
         """Nothing comes out of a sealed bottle."""
         sealed = {f.bottle.pk for f in self.facts if f.kind == "use" and not f.bottle.opened_on}
-        Bottle.objects.filter(pk__in=sealed, opened_on=None).update(
-            opened_on=day, version=F("version") + 1
-        )
+        if sealed:
+            Bottle.objects.filter(pk__in=sealed, opened_on=None).update(
+                opened_on=day, version=F("version") + 1
+            )
 
 
 def verdict_on(book: int, found: int, uncertainty: int) -> str:

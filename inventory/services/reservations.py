@@ -117,12 +117,13 @@ Chosen = list[tuple[Bottle, Quantity]]
 
 def _choose(order: ReservationOrder) -> tuple[Chosen, tuple[Missing, ...]]:
     """A bottle for each line, what earlier lines take from it counted."""
+    named = _named_bottles(order)
     taken: dict[int, int] = {}
     chosen: Chosen = []
     missing: list[Missing] = []
     for number, line in enumerate(order.lines, start=1):
         field = f"lines[{number - 1}]"
-        found = _of_bottle(line, field) if line.bottle_code else _of_substance(line, field)
+        found = _of_bottle(line, field, named) if line.bottle_code else _of_substance(line, field)
         left = [
             Candidate(c.bottle, max(0, c.usable - taken.get(c.bottle.pk, 0)), c.needed)
             for c in found
@@ -138,9 +139,14 @@ def _choose(order: ReservationOrder) -> tuple[Chosen, tuple[Missing, ...]]:
     return chosen, tuple(missing)
 
 
-def _of_bottle(line: ReservationLine, field: str) -> list[Candidate]:
-    rows = Bottle.objects.select_related("form__substance", "balance")
-    bottle = rows.filter(code=line.bottle_code).first()
+def _named_bottles(order: ReservationOrder) -> dict[str, Bottle]:
+    codes = {line.bottle_code for line in order.lines if line.bottle_code}
+    rows = Bottle.objects.filter(code__in=codes).select_related("form__substance", "balance")
+    return {bottle.code: bottle for bottle in rows} if codes else {}
+
+
+def _of_bottle(line: ReservationLine, field: str, named: dict[str, Bottle]) -> list[Candidate]:
+    bottle = named.get(line.bottle_code)
     if bottle is None:
         raise invalid(f"{field}.bottle", "unknown_bottle", f"No bottle {line.bottle_code}.")
     needed = quantity_of(bottle, line.asked, field=field).amount

@@ -100,7 +100,7 @@ def _facts(reservation: Reservation, actuals: Sequence[Actual], reason: str) -> 
 def _other_bottles(actuals: Sequence[Actual]) -> dict[str, Bottle]:
     codes = {actual.bottle_code for actual in actuals if actual.bottle_code}
     rows = Bottle.objects.filter(code__in=codes).select_related("form__substance")
-    return {bottle.code: bottle for bottle in rows}
+    return {bottle.code: bottle for bottle in rows} if codes else {}
 
 
 def _used_by(operation_id: uuid.UUID) -> Reservation:
