@@ -118,7 +118,7 @@ class Bench:
         }  # fmt: skip
 
     def _draw_status(self, dice: random.Random) -> Any:
-        status = dice.choice(["quarantined", "usable", "usable", "usable"])
+        status = dice.choices(["quarantined", "usable"], weights=[1, 9])[0]
         return {"bottle": dice.choice(self.bottles), "status": status}
 
     def _draw_transfer(self, dice: random.Random) -> Any:

@@ -18,6 +18,10 @@ from typing import Any
 RETRIED_PCT = 80
 # of 100 answered operations, so many are sent again all the same
 REPEATED_PCT = 3
+# of 1,000 operations, so many take their process with them when all is written but the answer
+DIES_UNANSWERED_PER_MILLE = 2
+# a command with its answer, in the log
+BYTES_A_COMMAND = 400
 POLL_S = 0.02
 
 
@@ -27,15 +31,13 @@ def main(arguments: list[str]) -> int:
     django.setup()
     from tests.simulation import commands  # the imports are done once, before the forks
 
-    folder, seed, workers, each, kill_every_s, limit_s = (
-        Path(arguments[0]), int(arguments[1]), int(arguments[2]), int(arguments[3]),
-        float(arguments[4]), float(arguments[5]),
-    )  # fmt: skip
+    folder = Path(arguments[0])
+    seed, workers, each, kill_every, limit_s = (int(argument) for argument in arguments[1:])
     assert commands.WEIGHTS
     dice = random.Random(f"{seed}/nursery")
     running = {_start(folder, slot, seed, each): slot for slot in range(workers)}
     end, kills = time.monotonic() + limit_s, 0
-    next_kill = time.monotonic() + dice.uniform(0.5, 1.5) * kill_every_s
+    next_kill = _kill_after(dice, kill_every)
     failed = False
     while running:
         time.sleep(POLL_S)
@@ -44,8 +46,9 @@ def main(arguments: list[str]) -> int:
             print("out of time", flush=True)
             _kill_all(running)
             break
-        if time.monotonic() >= next_kill:
-            next_kill = time.monotonic() + dice.uniform(0.5, 1.5) * kill_every_s
+        # By the work done and not by the time, so that a slow machine kills no more often.
+        if _logged(folder) >= next_kill:
+            next_kill = _logged(folder) + _kill_after(dice, kill_every)
             os.kill(dice.choice(list(running)), signal.SIGKILL)
         for pid, status in _ended(running):
             slot = running.pop(pid)
@@ -59,6 +62,14 @@ def main(arguments: list[str]) -> int:
                 break
     print(json.dumps({"kills": kills}), flush=True)
     return 1 if failed else 0
+
+
+def _kill_after(dice: random.Random, kill_every: int) -> float:
+    return dice.uniform(0.5, 1.5) * kill_every * BYTES_A_COMMAND
+
+
+def _logged(folder: Path) -> int:
+    return sum(path.stat().st_size for path in folder.glob("*.log"))
 
 
 def _ended(running: dict[int, int]) -> list[tuple[int, int]]:
@@ -104,15 +115,18 @@ def work(path: Path, slot: int, seed: int, each: int) -> None:
     if open_command is not None:
         dice = random.Random(f"{seed}/{slot}/{done}/{len(lines)}")
         if dice.randrange(100) < RETRIED_PCT:
-            write({"answer": open_command["op"], **bench.run(open_command)})
+            write({"answer": open_command["op"], "retried": True, **bench.run(open_command)})
         else:
             write({"given_up": open_command["op"]})
     for number in range(done + 1, each):
         command = bench.draw(seed, number)
         write(command)
         answer = bench.run(command)
+        dice = random.Random(command["op"])
+        if dice.randrange(1000) < DIES_UNANSWERED_PER_MILLE:
+            os.kill(os.getpid(), signal.SIGKILL)
         write({"answer": command["op"], **answer})
-        if "ok" in answer and random.Random(command["op"]).randrange(100) < REPEATED_PCT:
+        if "ok" in answer and dice.randrange(100) < REPEATED_PCT:
             write({"repeated": command["op"], **bench.run(command)})
 
 
