@@ -7,6 +7,14 @@ from django.db.models import F, Q
 LARGEST_AMOUNT = 10**15
 
 
+class MeasuredBy(models.TextChoices):
+    """How an amount is measured, and so its base unit."""
+
+    MASS = "mass"  # micrograms
+    VOLUME = "volume"  # nanolitres
+    COUNT = "count"  # pieces
+
+
 class IsWholeNumber(models.Func):
     """True for an integer. SQLite keeps 'abc' or 0.5 in an integer column unless it is asked."""
 
