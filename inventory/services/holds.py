@@ -46,7 +46,8 @@ def hold_lines(
     require(actor, operation, project_id=project_id)
     bottles = _bottles_by_code(lines)
     check_quotas(
-        project_id=project_id, claims=[(bottles[line.bottle_code], line.amount) for line in lines]
+        project_id=project_id,
+        claims=[(bottles[line.bottle_code].pk, line.amount) for line in lines],
     )
     reservation = Reservation.objects.create(
         code=uuid.uuid4(), project_id=project_id, actor_code=actor.code, purpose=purpose,
@@ -103,8 +104,7 @@ def keep_still(bottle_codes: Sequence[str]) -> None:
 
 def _bottles_by_code(lines: Sequence[HoldLine]) -> dict[str, Bottle]:
     codes = {line.bottle_code for line in lines}
-    found = Bottle.objects.filter(code__in=codes).select_related("form__substance")
-    bottles = {bottle.code: bottle for bottle in found}
+    bottles = {bottle.code: bottle for bottle in Bottle.objects.filter(code__in=codes)}
     missing = sorted(codes - bottles.keys())
     if missing:
         raise NotFound(f"There is no bottle {', '.join(missing)}.")

@@ -20,7 +20,7 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.bench import paper
+from tests.bench import ledger, paper
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import PENTENYL_LACTOSIDE
 
@@ -101,6 +101,8 @@ def main() -> None:
         table.add_row(
             name, f"{took:.0f} ms", beside, f"{baseline:.0f} ms", f"{took / baseline:.1f}"
         )
+    for row in ledger.rows():
+        table.add_row(*row)
     for kind in ("web", "worker"):
         table.add_row(f"{kind} process after 50 plans (PSS)", memory_mb(kind), "", "", "")
     Console(width=110).print(table)

@@ -102,9 +102,8 @@ def check(folder: Path) -> dict[str, int]:
     return {
         "commands": len(outcome.commands), "written": len(book.lines),
         "refused": outcome.count("refused"), "busy": outcome.count("busy"),
-        "retried": outcome.count("retried"), "unanswered": len(outcome.given_up), "of them written": len(
-            outcome.given_up & set(book.lines)
-        ),
+        "retried": outcome.count("retried"), "unanswered": len(outcome.given_up),
+        "of them written": len(outcome.given_up & set(book.lines)),
         "repeated": outcome.repeated, "holds cancelled": model.cancelled,
     }  # fmt: skip
 
