@@ -4,7 +4,7 @@ ARGS ?=
 VENV_PYTHON := .venv/bin/python
 
 .DEFAULT_GOAL := help
-.PHONY: help demo test check bench openapi lock clean setup-run setup-test setup-dev
+.PHONY: help demo serve test check bench soak openapi lock clean setup-run setup-test setup-dev
 .NOTPARALLEL:
 MAKEFLAGS += --no-print-directory
 
@@ -15,6 +15,9 @@ help: ## This list
 demo: setup-run ## The demonstration: a request, its stock, its written procedure
 	@$(VENV_PYTHON) manage.py demo $(ARGS)
 
+serve: setup-run ## Serve on this machine until Ctrl-C; ARGS="--port 8000 --workers 2"
+	@$(VENV_PYTHON) manage.py serve $(ARGS)
+
 test: setup-test ## All tests, on SQLite and on PostgreSQL; ARGS="-k name" picks some
 	@$(VENV_PYTHON) tools/run_tests.py $(ARGS)
 
@@ -23,6 +26,9 @@ check: setup-dev ## Style, types, import rules, migrations, nothing of this mach
 
 bench: setup-test ## Measure the speed of planning and of the ledger
 	@$(VENV_PYTHON) -m tests.bench $(ARGS)
+
+soak: setup-test ## The long forms of the tests that break things: 2,000 requests
+	@LABPLAN_REQUESTS=2000 $(VENV_PYTHON) tools/run_tests.py tests/simulation $(ARGS)
 
 openapi: setup-run ## Make docs/openapi.yaml again from the code
 	@$(VENV_PYTHON) tools/make_openapi.py

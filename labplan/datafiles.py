@@ -28,7 +28,12 @@ def table(name: str) -> dict[str, Any]:
 
 @cache
 def data_version() -> str:
-    """Twelve hex digits over all tables that a plan can depend on."""
+    """Twelve hex digits over all tables that a plan can depend on, as this process read them."""
+    return version_on_disk()
+
+
+def version_on_disk() -> str:
+    """The same as the files are now: another one when they were replaced meanwhile."""
     digest = hashlib.sha256()
     for name in PLANNING_TABLES:
         digest.update(hashlib.sha256(_bytes(name)).digest())

@@ -1,5 +1,7 @@
 """Reservations: sets of holds that stand or fall together."""
 
+from datetime import date
+
 from django.db import models
 from django.db.models import F, Q
 
@@ -30,6 +32,10 @@ class Reservation(models.Model):
     class Meta:
         constraints = [one_of("state", ReservationState, name="reservation_state_known")]
         indexes = [models.Index(fields=["project", "-id"], name="reservation_by_project")]
+
+    def is_overdue(self, today: date) -> bool:
+        """Whether it still holds something after its last day; a day counts to its end."""
+        return self.state == ReservationState.OPEN and self.expires_on < today
 
 
 class HoldState(models.TextChoices):

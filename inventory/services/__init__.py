@@ -13,7 +13,13 @@ from inventory.services.bottles import (
 )
 from inventory.services.counting import Count, CountsTaken, count_bottles, count_from_file
 from inventory.services.decanting import DecantOrder, Preparation, decant
-from inventory.services.holds import HoldLine, hold_lines, keep_still, release_reservation
+from inventory.services.holds import (
+    HoldLine,
+    hold_lines,
+    keep_still,
+    lapse_reservation,
+    release_reservation,
+)
 from inventory.services.importing import import_stock
 from inventory.services.keeping import (
     extend_reservation,
@@ -63,6 +69,7 @@ __all__ = [
     "hold_lines",
     "import_stock",
     "keep_still",
+    "lapse_reservation",
     "make_firm",
     "mark_notice_read",
     "move_bottle",

@@ -16,7 +16,7 @@ from inventory.services.book import BookLine, write_lines
 from inventory.services.quotas import check_quotas
 from labplan.base import clock
 from labplan.base.errors import NotFound, StateForbids
-from labplan.base.rights import Actor, require
+from labplan.base.rights import LABPLAN, Actor, require
 
 
 @dataclass(frozen=True)
@@ -83,15 +83,35 @@ def release_reservation(
     require(actor, "reservation.release", project_id=reservation.project_id)
     if reservation.state != Reservation.State.OPEN:
         raise StateForbids("This reservation is closed; it holds nothing any more.")
+    _give_all_back(
+        reservation, actor=actor, reason=reason, kind="release", end=Hold.State.RELEASED,
+        operation_id=operation_id,
+    )  # fmt: skip
+
+
+def lapse_reservation(*, code: uuid.UUID, reason: str) -> bool:
+    """Give back what a reservation still holds when its last day is over, in the caller's open
+    transaction; False, and nothing changed, when it is closed or was extended meanwhile.
+    """
+    locks.require_transaction()
+    reservation = Reservation.objects.select_for_update(no_key=True).get(code=code)
+    if not reservation.is_overdue(clock.today()):
+        return False
+    _give_all_back(reservation, actor=LABPLAN, reason=reason, kind="lapse", end=Hold.State.LAPSED)
+    return True
+
+
+def _give_all_back(
+    reservation: Reservation, *, actor: Actor, reason: str, kind: str, end: str,
+    operation_id: uuid.UUID | None = None,
+) -> None:  # fmt: skip
     open_holds = reservation.holds.filter(state=Hold.State.OPEN)
     holds = list(open_holds.select_related("bottle__form__substance").order_by("line"))
     write_lines(
-        [_give_back_line(hold) for hold in holds],
+        [_give_back_line(hold, kind) for hold in holds],
         actor=actor, project_id=reservation.project_id, reason=reason, operation_id=operation_id,
     )  # fmt: skip
-    reservation.holds.filter(state=Hold.State.OPEN).update(
-        given_back=F("amount") - F("used"), state=Hold.State.RELEASED
-    )
+    open_holds.update(given_back=F("amount") - F("used"), state=end)
     reservation.state = Reservation.State.CLOSED
     reservation.version += 1
     reservation.save(update_fields=["state", "version"])
@@ -135,10 +155,10 @@ def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLi
     )  # fmt: skip
 
 
-def _give_back_line(hold: Hold) -> BookLine:
+def _give_back_line(hold: Hold, kind: str) -> BookLine:
     left = hold.amount - hold.used - hold.given_back
     quantity = own_quantity(hold.bottle, left)
     return BookLine(
-        bottle_id=hold.bottle_id, kind="release", held_change=-left, hold_id=hold.pk,
+        bottle_id=hold.bottle_id, kind=kind, held_change=-left, hold_id=hold.pk,
         entered_amount=quantity.entered_amount, entered_unit=quantity.entered_unit,
     )  # fmt: skip

@@ -4,6 +4,7 @@ A model joins by `append_only = True` as a class attribute and AppendOnlyModel a
 An app adds more triggers by registering a function that returns SQL for a vendor.
 """
 
+import re
 from collections.abc import Callable, Iterable, Iterator
 from contextlib import contextmanager
 from typing import Any
@@ -66,6 +67,30 @@ def install_all(*, using: str = "default", **_signal: Any) -> None:
             for sql_for_vendor in _extra:
                 for statement in sql_for_vendor(connection.vendor):
                     cursor.execute(statement)
+
+
+def missing_triggers(*, using: str = "default") -> set[str]:
+    """The triggers that should be installed and are not, or are switched off."""
+    connection = connections[using]
+    with connection.cursor() as cursor:
+        cursor.execute(_INSTALLED[connection.vendor])
+        installed = {name for (name,) in cursor.fetchall()}
+    return _expected(connection.vendor) - installed
+
+
+# Those of the tables this connection sees; a trigger that is switched off counts for nothing.
+_INSTALLED = {
+    "sqlite": "SELECT name FROM sqlite_master WHERE type = 'trigger'",
+    "postgresql": "SELECT tgname FROM pg_trigger WHERE NOT tgisinternal "
+    "AND tgenabled IN ('O', 'A') AND pg_table_is_visible(tgrelid)",
+}
+_MADE = re.compile(r"CREATE (?:OR REPLACE )?TRIGGER (?:IF NOT EXISTS )?(\w+)")
+
+
+def _expected(vendor: str) -> set[str]:
+    own = [text for table in append_only_tables() for text in _statements(vendor, table)]
+    added = [text for sql_for_vendor in _extra for text in sql_for_vendor(vendor)]
+    return {name for text in (*own, *added) for name in _MADE.findall(text)}
 
 
 @contextmanager

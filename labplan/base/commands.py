@@ -14,14 +14,15 @@ class LabCommand(BaseCommand):
         try:
             return super().execute(*args, **options)
         except (OperationalError, ProgrammingError) as error:
-            if _has_no_tables(error):
+            if has_no_tables(error):
                 raise CommandError(
                     "The database has no tables yet: run 'manage.py migrate' first."
                 ) from error
             raise
 
 
-def _has_no_tables(error: Exception) -> bool:
+def has_no_tables(error: Exception) -> bool:
+    """Whether the database refused because `migrate` has never run there."""
     return "no such table" in str(error) or getattr(error.__cause__, "sqlstate", "") == "42P01"
 
 

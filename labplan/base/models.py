@@ -141,11 +141,14 @@ class OutboxMessage(models.Model):
 
     State = OutboxMessageState
     topic = models.CharField(max_length=40)
+    queue = models.CharField(max_length=20)
     payload = models.TextField()
+    request_id = models.CharField(max_length=64, blank=True)  # of the request that asked for it
     state = models.CharField(
         max_length=8, choices=OutboxMessageState, default=OutboxMessageState.NEW
     )
-    attempts = models.PositiveSmallIntegerField(default=0)
+    sends = models.PositiveIntegerField(default=0)  # only the newest copy may be run
+    attempts = models.PositiveSmallIntegerField(default=0)  # runs begun
     created_at = models.DateTimeField()
     available_at = models.DateTimeField()
     lease_until = models.DateTimeField(null=True)
@@ -161,6 +164,16 @@ class OutboxMessage(models.Model):
                 name="outbox_unfinished",
             ),
         ]
+
+
+class OutboxPause(models.Model):
+    """While this row is there, nothing is sent."""
+
+    since = models.DateTimeField()
+    reason = models.CharField(max_length=160)
+
+    class Meta:
+        constraints = [models.CheckConstraint(condition=Q(id=1), name="outbox_pause_is_one")]
 
 
 class Event(AppendOnlyModel):

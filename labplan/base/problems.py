@@ -1,7 +1,6 @@
 """Every refusal on the wire is application/problem+json (RFC 9457)."""
 
 import logging
-import uuid
 from typing import Any
 
 from django.core.exceptions import PermissionDenied
@@ -12,22 +11,10 @@ from rest_framework.response import Response
 from rest_framework.views import set_rollback
 
 from labplan.base import errors as domain
+from labplan.base import tracing
+from labplan.base.problem_form import CONTENT_TYPE, TYPE_PREFIX, problem_body
 
 logger = logging.getLogger(__name__)
-CONTENT_TYPE = "application/problem+json"
-TYPE_PREFIX = "urn:labplan:problem:"
-
-
-def problem_body(error: domain.DomainError) -> dict[str, Any]:
-    return {
-        "type": TYPE_PREFIX + error.code,
-        "title": error.title,
-        "status": error.status,
-        "code": error.code,
-        "detail": error.detail,
-        "errors": [line.as_dict() for line in error.errors],
-        **error.extra,
-    }
 
 
 def problem_response(exception: Exception, context: dict[str, Any]) -> Response | None:
@@ -98,8 +85,8 @@ def _from_framework(error: exceptions.APIException) -> domain.DomainError:
 
 
 def server_error(request: HttpRequest) -> JsonResponse:
-    """A 500: no detail leaves the house, but a trace id that stands in the log."""
-    trace_id = uuid.uuid4().hex
+    """A 500: no detail leaves the house, but the request's id, under which the log says more."""
+    trace_id = tracing.current() or tracing.new_id()
     logger.error("unforeseen error %s at %s %s", trace_id, request.method, request.path)
     return plain_problem(
         500, "internal_error", f"Something broke here. Tell the operator: {trace_id}."

@@ -53,6 +53,10 @@ class Actor:
 OPERATOR = Actor(person_id=0, code="OPERATOR", site_role="auditor", scope="read")
 
 
+# For what labplan does by itself, in the book under this code: the lapse of a hold.
+LABPLAN = Actor(person_id=0, code="LABPLAN")
+
+
 def actor_for(person: Person, *, scope: str = ApiToken.Scope.WRITE) -> Actor:
     """Read the roles of a person once."""
     roles = dict(person.memberships.values_list("project_id", "role"))

@@ -67,6 +67,20 @@ def preview_on_shelf(
     return preview(planned.plan)
 
 
+# octyl beta-D-glucopyranoside tetraacetate: a target that every part of the engine knows
+_WARM_TARGET = "CCCCCCCCO[C@@H]1O[C@H](COC(C)=O)[C@@H](OC(C)=O)[C@H](OC(C)=O)[C@H]1OC(C)=O"
+
+
+def warm_plan() -> None:
+    """Plan a target on an empty shelf, document and drawings included; RuntimeError if it fails."""
+    plan = make_plan(
+        read_target(_WARM_TARGET), Scale(acceptor_amount_mmol=1.0), (), as_of=clock.today(),
+        wishes=Wishes(),
+    )  # fmt: skip
+    if plan.verdict != "plannable" or not plan_document(plan, as_of=clock.today()):
+        raise RuntimeError(f"the engine cannot plan its own test target: {plan.reasons}")
+
+
 def _for_engine(bottle: BottleOnShelf) -> ShelfBottle:
     unit = _BASE_UNITS[bottle.measured_by]
     values = {name: getattr(bottle, name) for name in _SAME_NAMES}

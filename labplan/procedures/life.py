@@ -22,10 +22,11 @@ TRANSITIONS: dict[tuple[str, str], frozenset[str]] = {
     (APPROVED, "cancel"): frozenset({CANCELLED}),
     (RUNNING, "finish"): frozenset({FINISHED}),
     (RUNNING, "abandon"): frozenset({ABANDONED}),
+    (FAILED, "requeue"): frozenset({QUEUED}),
 }
 ACTIONS = tuple(sorted({action for _, action in TRANSITIONS}))
 # What labplan does by itself; all others are for people.
-OWN_ACTIONS = frozenset({"plan", "lapse"})
+OWN_ACTIONS = frozenset({"plan", "lapse", "requeue"})
 SETTLED = frozenset(STATES) - {QUEUED}
 
 

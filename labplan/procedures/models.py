@@ -5,7 +5,7 @@ from django.db.models import Q
 
 from labplan.base.append_only import AppendOnlyModel
 from labplan.base.models import Project
-from labplan.procedures import life
+from labplan.procedures import life, progress
 
 
 class Procedure(models.Model):
@@ -23,6 +23,9 @@ class Procedure(models.Model):
     state = models.CharField(max_length=10, choices=[(s, s) for s in life.STATES])
     reasons = models.TextField(default="[]")  # [{code, detail}], for lists
     attempt = models.PositiveSmallIntegerField(default=0)
+    # attempts that were begun and never ended, well or badly: they took their process with them
+    broken_off = models.PositiveSmallIntegerField(default=0)
+    phase = models.CharField(max_length=10, default=progress.WAITING)
     reservation_code = models.UUIDField(null=True, unique=True)
     # what the stock took back of its reservation, [{line, bottle, amount, why}]
     lost_holds = models.TextField(default="[]")
@@ -35,6 +38,9 @@ class Procedure(models.Model):
         constraints = [
             models.CheckConstraint(
                 condition=Q(state__in=life.STATES), name="procedure_state_known"
+            ),
+            models.CheckConstraint(
+                condition=Q(phase__in=progress.PHASES), name="procedure_phase_known"
             ),
             models.CheckConstraint(
                 # NULL > 0 passes a CHECK, hence "is not null". The upper bounds also keep text
@@ -59,7 +65,10 @@ class Procedure(models.Model):
                 name="procedure_planned_holds",
             ),
         ]
-        indexes = [models.Index(fields=["project", "-id"], name="procedure_by_project")]
+        indexes = [
+            models.Index(fields=["project", "-id"], name="procedure_by_project"),
+            models.Index(fields=["id"], condition=Q(state=life.QUEUED), name="procedure_queued"),
+        ]
 
     def __str__(self) -> str:
         return self.code

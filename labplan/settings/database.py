@@ -14,6 +14,10 @@ SQLITE_PRAGMAS = (
 )
 
 
+# A request does not wait longer than this for a row that somebody sits on.
+POSTGRESQL_PATIENCE = "-c lock_timeout=3000"
+
+
 def database_from_url(url: str, *, sqlite_synchronous: str = "FULL") -> dict[str, Any]:
     """Return the settings for `sqlite:///path` or a libpq `postgresql://` address."""
     if url.startswith("sqlite:///"):
@@ -45,7 +49,9 @@ def _postgresql(url: str) -> dict[str, Any]:
     from psycopg.conninfo import conninfo_to_dict
 
     parts = dict(conninfo_to_dict(url))
-    server_options = f"{parts.pop('options', '')} -c lock_timeout=3000".strip()
+    # A host that is away must not hold a request, or the health answer, for minutes.
+    parts.setdefault("connect_timeout", "5")
+    server_options = f"{parts.pop('options', '')} {POSTGRESQL_PATIENCE}".strip()
     return {
         "ENGINE": "django.db.backends.postgresql",
         "NAME": parts.pop("dbname", "labplan"),

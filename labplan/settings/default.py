@@ -2,16 +2,24 @@
 
 LABPLAN_DATA_DIR     where the SQLite file and the generated key live (default: var/)
 DATABASE_URL         sqlite:///path or postgresql://...  (default: SQLite in LABPLAN_DATA_DIR)
+REDIS_URL            broker, redis://... or redis+socket:///path  (make serve starts one if not set)
 LABPLAN_SECRET_KEY   Django's key (default: made once and kept in LABPLAN_DATA_DIR)
 LABPLAN_HOSTS        host names served, separated by commas (default: this machine only)
 LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
+LABPLAN_PLAN_LIMIT_S when a worker that plans one target is killed (default: 30)
+LABPLAN_LEASE_S      how long a message may lie in the broker before it is sent again (default: 120)
+LABPLAN_PG_BIN       the folder of pg_dump and pg_restore (default: where PATH finds them)
+LABPLAN_LOG          plain or json, a line a record on standard error (default: plain)
+PROMETHEUS_MULTIPROC_DIR  folder in which all processes of a machine count, for /metrics (default:
+                     none; each process then counts for itself)
 """
 
 import os
 from pathlib import Path
 
+from labplan.base import logs
 from labplan.settings.database import database_from_url
-from labplan.settings.places import known_time_zone
+from labplan.settings.environment import known_time_zone, one_of_words, whole_seconds
 from labplan.settings.secret import read_or_make_secret_key
 
 BASE_DIR = Path(__file__).resolve().parents[2]
@@ -27,8 +35,11 @@ INSTALLED_APPS = [
     "labplan.base",
     "inventory",
     "labplan.procedures",
+    "labplan.operations",
 ]
 MIDDLEWARE = [
+    # Outermost, so that every answer there is has its id, its log line and its count.
+    "labplan.base.middleware.RequestMiddleware",
     "django.middleware.security.SecurityMiddleware",
     "labplan.base.middleware.ProblemFallbackMiddleware",
 ]
@@ -48,6 +59,10 @@ DATABASES = {
         os.environ.get("DATABASE_URL") or f"sqlite:///{DATA_DIR / 'labplan.sqlite3'}"
     )
 }
+# The broker only carries messages to workers; losing it, or what it holds, loses no work.
+BROKER_URL = os.environ.get("REDIS_URL", "")
+PLAN_LIMIT_S = whole_seconds("LABPLAN_PLAN_LIMIT_S", 30)
+OUTBOX_LEASE_S = whole_seconds("LABPLAN_LEASE_S", 120)
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
 AUTH_USER_MODEL = "base.Person"
 
@@ -81,11 +96,14 @@ SPECTACULAR_SETTINGS = {
         "Send a token as 'Authorization: Bearer <token>'; bodies are JSON. Units stand in the "
         "names of fields. Unknown fields and parameters are refused (400), values that break a "
         "rule too (422), and every refusal is a problem (RFC 9457) that says what to do.\n\n"
+        "Every answer carries X-Request-ID: the one you sent (1 to 64 letters, digits, '.', '_', "
+        "'-'), else a new one. Give it to the operator, who finds it in the log.\n\n"
         "labplan is a planning aid: a qualified chemist checks and approves what it writes."
     ),
     "VERSION": "0.1.0",
     "COMPONENT_SPLIT_REQUEST": True,
     "SCHEMA_PATH_PREFIX": "/api/v1",
+    "PREPROCESSING_HOOKS": ["labplan.base.api.schema.keep_what_is_versioned"],
     "POSTPROCESSING_HOOKS": ["labplan.base.api.schema.add_what_all_share"],
     "TAGS": [
         {"name": "Routes", "description": "What could be made, before anything is asked for."},
@@ -94,13 +112,10 @@ SPECTACULAR_SETTINGS = {
         {"name": "Reservations", "description": "What is set aside, and for which project."},
         {"name": "Projects", "description": "Who may use what."},
         {"name": "About this API", "description": "This description, for programs and people."},
+        {"name": "Health", "description": "For those who run it, and for load balancers."},
     ],
 }
 
-LOGGING = {
-    "version": 1,
-    "disable_existing_loggers": False,
-    "formatters": {"line": {"format": "%(asctime)s %(levelname)s %(name)s %(message)s"}},
-    "handlers": {"stderr": {"class": "logging.StreamHandler", "formatter": "line"}},
-    "root": {"handlers": ["stderr"], "level": "INFO"},
-}
+LOGGING = logs.logging_configuration(one_of_words("LABPLAN_LOG", logs.STYLES))
+# Those who watch ask these every few seconds; an answer that is no error is logged as DEBUG only.
+WATCHERS_ROUTES = frozenset({"health-live", "health-ready", "metrics"})

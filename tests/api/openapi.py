@@ -6,10 +6,10 @@ from typing import Any
 
 from jsonschema import Draft202012Validator, FormatChecker, ValidationError
 
-# what Django and HTTP set on every answer
+# what Django, HTTP and our middleware set on every answer
 GENERAL_HEADERS = {
     "Allow", "Content-Length", "Content-Type", "Cross-Origin-Opener-Policy", "Referrer-Policy",
-    "Vary", "WWW-Authenticate", "X-Content-Type-Options",
+    "Vary", "WWW-Authenticate", "X-Content-Type-Options", "X-Request-ID",
 }  # fmt: skip
 
 

@@ -34,6 +34,10 @@ class Expected:
     post_on_the_shelf: bool = False
     # a body whose only fault is whose project it names
     body: dict[str, Any] | None = None
+    # public, but told anew each time: durations, counts
+    changes_by_itself: bool = False
+    # lies at the root and not under api/v1/; what lies at both is described under the prefix
+    only_at_root: bool = False
 
     def status_for(self, who: str) -> int | None:
         """What a POST by an outsider of this kind is answered."""
@@ -45,6 +49,9 @@ class Expected:
 EXPECTED: dict[str, Expected] = {
     "openapi-document": Expected("public"),
     "documentation-page": Expected("public"),
+    "health-live": Expected("public"),
+    "health-ready": Expected("public", changes_by_itself=True),
+    "metrics": Expected("public", changes_by_itself=True, only_at_root=True),
     "project-list": Expected("nothing"),
     "project-detail": Expected("hidden", ("project",)),
     "substance-list": Expected("stock"),
@@ -85,6 +92,11 @@ EXPECTED: dict[str, Expected] = {
     "procedure-sheet-pdf": Expected("hidden", ("procedure",)),
     "procedure-cancel": Expected("hidden", ("procedure",), ("POST", "OPTIONS"), 404),
 }  # fmt: skip
+
+
+# Served at the root as well, for load balancers and Prometheus beside the proxy.
+AT_ROOT = {"health/live/", "health/ready/", "metrics"}
+DESCRIBED = {name: expected for name, expected in EXPECTED.items() if not expected.only_at_root}
 
 
 def served_patterns() -> Iterator[tuple[str, URLPattern]]:

@@ -1,6 +1,10 @@
-"""Run all measurements and print one table."""
+"""Run the measurements and print a table each: all of them, or those that are named.
+
+python -m tests.bench [engine] [workers]
+"""
 
 import gc
+import json
 import statistics
 import subprocess
 import sys
@@ -20,7 +24,7 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.bench import ledger, paper
+from tests.bench import paper, reservations, workers
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import PENTENYL_LACTOSIDE
 
@@ -84,7 +88,8 @@ def memory_mb(kind: str) -> str:
     return f"{ended.stdout.strip()} MB"
 
 
-def main() -> None:
+def engine() -> Table:
+    """Planning, documents, paper and memory."""
     table = Table("measured", "median", "beside it", "median", "ratio")
     bare = median_ms(bare_rdkit)
     for name, work in (
@@ -101,12 +106,57 @@ def main() -> None:
         table.add_row(
             name, f"{took:.0f} ms", beside, f"{baseline:.0f} ms", f"{took / baseline:.1f}"
         )
-    for row in ledger.rows():
-        table.add_row(*row)
     for kind in ("web", "worker"):
         table.add_row(f"{kind} process after 50 plans (PSS)", memory_mb(kind), "", "", "")
-    Console(width=110).print(table)
+    return table
+
+
+def real_workers() -> Table:
+    """Queued requests planned by one worker and by two; one request on an idle house."""
+    ended = subprocess.run(
+        [sys.executable, "-m", "tests.bench.workers"],
+        stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, text=True, check=True,
+    )  # fmt: skip
+    found = json.loads(ended.stdout.splitlines()[-1])
+    one, two = statistics.median(found["one_s"]), statistics.median(found["two_s"])
+    table = Table("measured (PostgreSQL)", "median", "beside it", "median", "ratio")
+    table.add_row(
+        f"{workers.REQUESTS} queued requests, one worker", f"{one:.2f} s",
+        "two workers", f"{two:.2f} s", f"{found['ratio']:.2f} (median of {workers.RUNS} pairs)",
+    )  # fmt: skip
+    table.add_row(
+        "request to planned, nothing else to do",
+        f"{found['latency_ms']:.0f} ms (90 %: {found['latency_p90_ms']:.0f})",
+        "planning and settling alone", f"{found['bare_ms']:.0f} ms",
+        f"+{found['latency_ms'] - found['bare_ms']:.0f} ms",
+    )  # fmt: skip
+    idle_ms = found["longest_idle_in_transaction_ms"]
+    table.add_row("idle in transaction over 50 ms", f"{idle_ms:.0f} ms" if idle_ms else "never",
+                  "", "", "")  # fmt: skip
+    return table
+
+
+def stock() -> Table:
+    """Amounts set aside by several clients at once."""
+    table = Table("measured", "figure", "beside it", "figure", "ratio")
+    for row in reservations.rows():
+        table.add_row(*row)
+    return table
+
+
+SECTIONS: dict[str, Callable[[], Table]] = {
+    "engine": engine,
+    "workers": real_workers,
+    "stock": stock,
+}
+
+
+def main(wanted: list[str]) -> None:
+    if unknown := set(wanted) - set(SECTIONS):
+        sys.exit(f"no measurement {', '.join(unknown)}; there are: {', '.join(SECTIONS)}")
+    for name in wanted or SECTIONS:
+        Console(width=120).print(SECTIONS[name]())
 
 
 if __name__ == "__main__":
-    main()
+    main(sys.argv[1:])

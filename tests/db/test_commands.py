@@ -10,7 +10,7 @@ from django.db import OperationalError
 from labplan.base import clock
 from labplan.base.commands import LabCommand, checked_code, checked_text
 from labplan.base.models import ApiToken, Membership, Person
-from labplan.settings.places import known_time_zone
+from labplan.settings.environment import known_time_zone
 from tests.laboratory import Laboratory
 
 

@@ -83,9 +83,10 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
         "headers": "{}", "body": "", "created_at": NOON,
     },
     "base_outboxmessage": lambda code: {
-        "topic": "t", "payload": "{}", "state": "new", "attempts": 0, "created_at": NOON,
-        "available_at": NOON, "last_error": "",
+        "topic": "t", "queue": "q", "payload": "{}", "request_id": "", "state": "new", "sends": 0,
+        "attempts": 0, "created_at": NOON, "available_at": NOON, "last_error": "",
     },
+    "base_outboxpause": lambda code: {"id": 1, "since": NOON, "reason": "r"},
     "inventory_place": lambda code: {"code": code, "name": "n", "is_locked": False},
     "inventory_substance": lambda code: {
         "code": code, "kind": "defined", "name": "n", "search_key": "n", "cas": "",
@@ -131,7 +132,8 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "procedures_procedure": lambda code: {
         "code": code, "project_id": _key(Project), "requested_by": "LEAD", "target_smiles": "C",
         "product_mass_mg": 1, "promoter": "", "solvent": "", "state": "queued", "reasons": "[]",
-        "lost_holds": "[]", "attempt": 0, "version": 1, "created_at": NOON,
+        "lost_holds": "[]", "attempt": 0, "broken_off": 0, "phase": "waiting", "version": 1,
+        "created_at": NOON,
     },
     "procedures_document": lambda code: {
         "procedure_id": _key(Procedure), "attempt": 2, "body": b"{}", "sha256": "0" * 64,
@@ -175,6 +177,7 @@ CHECKS = [
     Attack("membership_role_known", "base_membership", {"role": "owner"}),
     Attack("api_token_scope_known", "base_apitoken", {"scope": "reed"}),
     Attack("outbox_state_known", "base_outboxmessage", {"state": "lost"}),
+    Attack("outbox_pause_is_one", "base_outboxpause", {"id": 2}),
     Attack("substance_kind_known", "inventory_substance", {"kind": "wish"}),
     Attack("substance_defined_has_structure", "inventory_substance", {"inchikey": None}),
     Attack("substance_defined_has_structure", "inventory_substance", {"smiles": ""}),
@@ -287,6 +290,7 @@ CHECKS = [
     *[Attack("movement_hold_fits_kind", MOVEMENT, _held(k, 1, 1, 1)) for k in KINDS_UP],
     Attack("movement_hold_fits_kind", MOVEMENT, _held("transfer", 0, 1, 1)),
     Attack("procedure_state_known", PROCEDURE, {"state": "lost"}),
+    Attack("procedure_phase_known", PROCEDURE, {"phase": "dreaming"}),
     Attack("procedure_has_one_scale", PROCEDURE, {"acceptor_amount_mmol": 1}),
     Attack("procedure_has_one_scale", PROCEDURE, {"product_mass_mg": None}),
     Attack("procedure_has_one_scale", PROCEDURE, {"product_mass_mg": 0}),
@@ -304,6 +308,7 @@ CHECKS = [
         Attack(f"{table}.{column} not negative", table, {column: -1})
         for table, column in [
             ("base_rememberedanswer", "status"), ("base_outboxmessage", "attempts"),
+            ("base_outboxmessage", "sends"), (PROCEDURE, "broken_off"),
             ("inventory_reservation", "version"), ("inventory_hold", "line"),
             ("inventory_bottle", "version"), ("inventory_substance", "version"),
             ("inventory_quota", "version"), ("inventory_notice", "line"), (MOVEMENT, "part"),

@@ -20,6 +20,7 @@ from labplan.procedures.services import ProcedureOrder, planning, request_proced
 from tests.db.bench import database_address
 from tests.laboratory import OCTYL_GLUCOSIDE, Laboratory
 
+LEASE = timedelta(seconds=outbox.limit_s("procedure.plan") + outbox.GRACE_S)
 NOON = datetime(2026, 12, 1, 12, tzinfo=UTC)
 ROOT = Path(__file__).resolve().parents[2]
 # A relay like any other, but for the function in which it is killed.
@@ -74,8 +75,8 @@ def test_a_killed_attempt_is_taken_up_by_the_next_relay(live_lab: Laboratory, pl
     assert live_lab.counts() == before
     assert OutboxMessage.objects.get().state == "sent"
 
-    assert _deliver_at(NOON + outbox.LEASE - timedelta(seconds=1)) == 0
-    assert _deliver_at(NOON + outbox.LEASE) == 1
+    assert _deliver_at(NOON + LEASE - timedelta(seconds=1)) == 0
+    assert _deliver_at(NOON + LEASE) == 1
     procedure.refresh_from_db()
     assert (procedure.state, procedure.attempt) == ("planned", 2)
     reservation = Reservation.objects.get(purpose=f"procedure {procedure.code}")
@@ -94,10 +95,10 @@ def test_a_killed_attempt_is_taken_up_by_the_next_relay(live_lab: Laboratory, pl
 def test_a_procedure_that_kills_its_process_twice_is_failed(live_lab: Laboratory) -> None:
     procedure, before = _request(live_lab), live_lab.counts()
     _relay_killed_in("settle_plan", NOON)
-    _relay_killed_in("_close", NOON + outbox.LEASE)
+    _relay_killed_in("_close", NOON + LEASE)
     procedure.refresh_from_db()
-    assert (procedure.state, procedure.attempt) == ("queued", planning.MAX_ATTEMPTS)
-    assert _deliver_at(NOON + 2 * outbox.LEASE) == 1
+    assert (procedure.state, procedure.attempt) == ("queued", planning.MAX_BROKEN_OFF)
+    assert _deliver_at(NOON + 2 * LEASE) == 1
     procedure.refresh_from_db()
     assert procedure.state == "failed"
     [reason] = json.loads(procedure.reasons)
@@ -105,7 +106,7 @@ def test_a_procedure_that_kills_its_process_twice_is_failed(live_lab: Laboratory
     assert (procedure.reservation_code, procedure.document_id) == (None, None)
     assert live_lab.counts() == before
     assert OutboxMessage.objects.get().state == "done"
-    assert _deliver_at(NOON + 10 * outbox.LEASE) == 0
+    assert _deliver_at(NOON + 10 * LEASE) == 0
 
 
 def test_an_attempt_that_comes_back_late_settles_nothing(live_lab: Laboratory) -> None:
@@ -146,3 +147,39 @@ def test_a_message_delivered_again_after_the_end_changes_nothing(live_lab: Labor
     procedure.refresh_from_db()
     assert (procedure.state, procedure.version, procedure.attempt) == ("planned", settled, 1)
     assert live_lab.counts() == after
+
+
+def test_a_procedure_that_eats_all_memory_is_tried_twice(
+    live_lab: Laboratory, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def eats(attempt: planning.Attempt) -> None:
+        raise MemoryError
+
+    monkeypatch.setattr(planning, "compute_plan", eats)
+    procedure, before = _request(live_lab), live_lab.counts()
+    for hour in range(planning.MAX_BROKEN_OFF + 1):
+        procedure.refresh_from_db()
+        assert procedure.state == "queued"
+        assert _deliver_at(NOON + timedelta(hours=hour)) == 1
+    procedure.refresh_from_db()
+    assert procedure.state == "failed"
+    assert [reason["code"] for reason in json.loads(procedure.reasons)] == ["engine_crashed"]
+    assert live_lab.counts() == before
+
+
+def test_errors_that_are_no_crash_may_come_as_often_as_they_like(
+    live_lab: Laboratory, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def fails(attempt: planning.Attempt) -> None:
+        raise OSError("the disk is full")
+
+    procedure = _request(live_lab)
+    with monkeypatch.context() as patch:
+        patch.setattr(planning, "compute_plan", fails)
+        for hour in range(planning.MAX_BROKEN_OFF + 2):
+            assert _deliver_at(NOON + timedelta(hours=hour)) == 1
+    procedure.refresh_from_db()
+    assert (procedure.state, procedure.broken_off, procedure.phase) == ("queued", 0, "waiting")
+    assert _deliver_at(NOON + timedelta(days=1)) == 1
+    procedure.refresh_from_db()
+    assert procedure.state == "planned"

@@ -12,10 +12,14 @@ from django.db import transaction
 
 from labplan.base import clock, outbox
 from labplan.base.models import Event, OutboxMessage
+from labplan.base.outbox import messages, topics
 from tests.db.bench import at_once
 
 NOON = datetime(2026, 12, 1, 12, tzinfo=UTC)
 TOPIC = "test.topic"
+LIMIT_S = 60
+# how long a run that says nothing is waited for
+LEASE = timedelta(seconds=LIMIT_S + outbox.GRACE_S)
 pytestmark = pytest.mark.django_db(transaction=True)
 Handle = Callable[[outbox.Handler], None]
 
@@ -25,7 +29,8 @@ def handle(monkeypatch: pytest.MonkeyPatch) -> Handle:
     """Give the topic of these tests a handler."""
 
     def register(handler: outbox.Handler) -> None:
-        monkeypatch.setitem(outbox._handlers, TOPIC, handler)
+        topic = topics.Topic(handler, outbox.HOUSEKEEPING, LIMIT_S)
+        monkeypatch.setitem(topics._topics, TOPIC, topic)
 
     return register
 
@@ -90,9 +95,9 @@ def test_what_was_sent_and_not_done_comes_again_when_its_lease_ends(handle: Hand
     number = outbox.enqueue(TOPIC, {})
     assert outbox.deliver_waiting() == 1
     message = _message()
-    assert (message.state, message.lease_until) == ("sent", NOON + outbox.LEASE)
-    assert _deliver_after(outbox.LEASE.total_seconds() - 1) == 0
-    assert _deliver_after(outbox.LEASE.total_seconds()) == 1
+    assert (message.state, message.lease_until) == ("sent", NOON + LEASE)
+    assert _deliver_after(LEASE.total_seconds() - 1) == 0
+    assert _deliver_after(LEASE.total_seconds()) == 1
     assert seen == [number, number]
     assert _message().attempts == 2
 
@@ -113,7 +118,7 @@ def test_the_wait_after_a_failure_doubles(handle: Handle) -> None:
 
 
 def test_the_wait_is_capped(handle: Handle, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(outbox, "MAX_ATTEMPTS", 40)
+    monkeypatch.setattr(messages, "MAX_ATTEMPTS", 40)
     handle(_fails)
     outbox.enqueue(TOPIC, {})
     OutboxMessage.objects.update(attempts=20)
@@ -137,7 +142,7 @@ def test_a_message_whose_process_dies_each_time_is_dead_in_the_end(handle: Handl
     seen = []
     handle(lambda payload, message_id: seen.append(message_id))
     outbox.enqueue(TOPIC, {})
-    lease_s = outbox.LEASE.total_seconds()
+    lease_s = LEASE.total_seconds()
     for number in range(outbox.MAX_ATTEMPTS + 3):
         _deliver_after(number * lease_s)
     assert len(seen) == outbox.MAX_ATTEMPTS
@@ -222,7 +227,7 @@ def test_a_late_failure_does_not_take_the_message_from_the_next_run(handle: Hand
     def handler(payload: dict[str, Any], message_id: int) -> None:
         runs.append(message_id)
         if len(runs) == 1:
-            [delivered] = at_once(lambda: _deliver_after(outbox.LEASE.total_seconds()))
+            [delivered] = at_once(lambda: _deliver_after(LEASE.total_seconds()))
             assert delivered == 1
             raise ValueError("the first run fails late")
 
@@ -232,7 +237,7 @@ def test_a_late_failure_does_not_take_the_message_from_the_next_run(handle: Hand
     assert len(runs) == 2
     message = _message()
     assert (message.state, message.attempts) == ("sent", 2)
-    assert message.lease_until == NOON + 2 * outbox.LEASE
+    assert message.lease_until == NOON + 2 * LEASE
     assert message.last_error == ""
 
 

@@ -6,7 +6,9 @@ import pkgutil
 
 import pytest
 
-PACKAGES = ("labplan.chemistry", "labplan.planning", "labplan.safety")
+PACKAGES = (
+    "labplan.chemistry", "labplan.planning", "labplan.safety", "labplan.operations.waiting",
+)  # fmt: skip
 MODULES = [
     name
     for package in PACKAGES

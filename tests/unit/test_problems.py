@@ -12,7 +12,7 @@ from django.test import RequestFactory
 from rest_framework import exceptions
 
 from inventory import errors as stock
-from labplan.base import errors, problems
+from labplan.base import errors, problems, tracing
 from labplan.base.errors import DomainError, FieldProblem
 
 LINE = FieldProblem("project", "unknown_project", "There is no such project.")
@@ -166,9 +166,15 @@ def test_a_server_error_tells_a_trace_and_nothing_else(caplog: pytest.LogCapture
     body = body_of(problems.server_error(request))
     assert (body["status"], body["code"]) == (500, "internal_error")
     trace_id = body["detail"].rstrip(".").rsplit(" ", 1)[1]
-    assert len(trace_id) == 32
+    assert len(trace_id) == 16
     assert trace_id in caplog.text
     assert body_of(problems.server_error(request))["detail"] != body["detail"]
+
+
+def test_the_trace_of_a_server_error_is_the_id_of_the_request() -> None:
+    with tracing.working_on("the-callers-own.id_1"):
+        body = body_of(problems.server_error(RequestFactory().get("/api/v1/procedures/")))
+    assert body["detail"] == "Something broke here. Tell the operator: the-callers-own.id_1."
 
 
 def test_an_address_that_is_not_served_is_a_problem() -> None:

@@ -136,6 +136,14 @@ def answered(name: str, description: str, *statuses: int) -> OpenApiParameter:
     )  # fmt: skip
 
 
+def answered_sometimes(name: str, description: str, *statuses: int) -> OpenApiParameter:
+    """A header that only some of the answers have."""
+    return OpenApiParameter(
+        name, {"type": "string"}, OpenApiParameter.HEADER, response=list(statuses),
+        description=description,
+    )  # fmt: skip
+
+
 PAGE_PARAMETERS = (
     asked("cursor", "Where the page starts: take it from `next` or `previous`, as it is."),
     asked(

@@ -148,6 +148,11 @@ class QuantitySchema(OpenApiSerializerFieldExtension):
         }
 
 
+def keep_what_is_versioned(endpoints: list[Any], **_context: Any) -> list[Any]:
+    """Hook of the generator: what also lies at the root is described once, under the prefix."""
+    return [endpoint for endpoint in endpoints if endpoint[0].startswith("/api/")]
+
+
 def add_what_all_share(result: dict[str, Any], **_context: Any) -> dict[str, Any]:
     """Hook of the generator: the schemas by name, and the problem every operation may answer."""
     components = result.setdefault("components", {})

@@ -12,6 +12,7 @@ from labplan.base.api.describe import (
     about,
     answer,
     answered,
+    answered_sometimes,
     asked,
     component,
     decimal,
@@ -28,7 +29,7 @@ from labplan.base.api.describe import (
     whole,
     word,
 )
-from labplan.procedures import life
+from labplan.procedures import life, progress
 from labplan.procedures.api.orders import OrderSerializer, PreviewSerializer
 from labplan.procedures.api.plan_parts import REASON
 from labplan.procedures.api.plan_schema import DOCUMENT, PREVIEW
@@ -85,11 +86,31 @@ _SUMMARY = {
     ),
 }
 PROCEDURE = component("Procedure", "A requested procedure, without its document.", _SUMMARY)
+_PROGRESS = record(
+    {
+        "phase": word("The part of planning it is in.", list(progress.PHASES)),
+        "text": text("The same for a person to read.", progress.PHASES[progress.WAITING]),
+        "queued_before": or_null(
+            whole(
+                "How many procedures of all projects were asked for before it and are queued "
+                "still; null when it is not queued.",
+                0, minimum=0,
+            )
+        ),
+    },
+    "How far planning has come.",
+)  # fmt: skip
 PROCEDURE_DETAIL = component(
     "ProcedureDetail",
     "A requested procedure with its document.",
-    {**_SUMMARY, "document": or_null(DOCUMENT)},
+    {**_SUMMARY, "progress": _PROGRESS, "document": or_null(DOCUMENT)},
 )
+_PREFER_WAIT = asked(
+    "Prefer",
+    "`wait=N`: hold the answer for up to N seconds while it is queued, 10 at most (RFC 7240). "
+    "Honoured where the waiting service is asked, as at the address `make serve` prints.",
+    {"type": "string", "examples": ["wait=10"]}, header=True,
+)  # fmt: skip
 _EXAMPLE = {
     "target_smiles": "CCCCCCCCO[C@@H]1O[C@H](COC(C)=O)[C@H](OC(C)=O)[C@H](OC(C)=O)[C@H]1OC(C)=O",
     "product_mass_g": "2.000",
@@ -135,7 +156,18 @@ procedure_detail = extend_schema_view(
     get=operation(
         "procedure-detail", TAG, "Look at a procedure",
         {200: answer(PROCEDURE_DETAIL, "The procedure with its document."), 304: UNCHANGED},
-        parameters=[CODE, IF_NONE_MATCH, etag(200, 304)],
+        description="While it is queued, the answer says how far it is and carries Retry-After. "
+        "Look again after that, or let the answer be held until it is settled by `Prefer: wait=N`.",
+        parameters=[
+            CODE, IF_NONE_MATCH, _PREFER_WAIT, etag(200, 304),
+            answered_sometimes(
+                "Retry-After", "Seconds after which to look; only while it is queued.", 200, 304
+            ),
+            answered_sometimes(
+                "Preference-Applied", "`wait=N` when the answer was held for as long as needed.",
+                200, 304,
+            ),
+        ],
     )
 )  # fmt: skip
 procedure_document = extend_schema_view(

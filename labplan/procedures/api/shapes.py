@@ -7,12 +7,19 @@ from typing import Any
 from django.urls import NoReverseMatch, reverse
 
 from labplan.base.preconditions import etag_of
-from labplan.procedures import life
+from labplan.procedures import life, progress
 from labplan.procedures.models import Procedure
 
 
 def etag(procedure: Procedure) -> str:
+    """Of the version; what If-Match is held against."""
     return etag_of("procedure", procedure.code, procedure.version)
+
+
+def detail_etag(procedure: Procedure, queued_before: int | None) -> str:
+    """Of what `show_detail` shows, so that If-None-Match never hides progress."""
+    seen = f"{procedure.phase}-{queued_before}" if queued_before is not None else ""
+    return etag_of("procedure", procedure.code, procedure.version, seen=seen)
 
 
 def show_summary(procedure: Procedure) -> dict[str, Any]:
@@ -58,7 +65,12 @@ def _actions(procedure: Procedure) -> dict[str, str]:
     return found
 
 
-def show_detail(procedure: Procedure) -> dict[str, Any]:
+def show_detail(procedure: Procedure, queued_before: int | None) -> dict[str, Any]:
     document = procedure.document
+    shown = {
+        "phase": procedure.phase,
+        "text": progress.PHASES[procedure.phase],
+        "queued_before": queued_before,
+    }
     body = json.loads(bytes(document.body)) if document else None
-    return {**show_summary(procedure), "document": body}
+    return {**show_summary(procedure), "progress": shown, "document": body}

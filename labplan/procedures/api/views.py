@@ -21,6 +21,8 @@ from labplan.procedures.sheet.html import sheet_html
 from labplan.procedures.sheet.of_procedure import view_of
 from labplan.procedures.sheet.pdf import PAPERS, sheet_pdf
 
+LOOK_AGAIN_S = "1"  # for those who do not wait
+
 
 @schema.route_preview
 class RoutePreview(LookView):
@@ -58,19 +60,25 @@ class ProcedureList(ListView):
 def _accepted(procedure: Procedure) -> Response:
     body = shapes.show_summary(procedure)
     headers = {
-        "Location": body["links"]["self"], "ETag": shapes.etag(procedure), "Retry-After": "1",
+        "Location": body["links"]["self"], "ETag": shapes.etag(procedure),
+        "Retry-After": LOOK_AGAIN_S,
     }  # fmt: skip
     return Response(body, status=202, headers=headers)
 
 
 @schema.procedure_detail
 class ProcedureDetail(LookView):
+    """Retry-After says that it is not settled yet; the waiting service goes by that header."""
+
     def get(self, request: Any, code: str) -> Response:
         procedure = selectors.get_procedure(actor=request.user, code=code)
-        headers = {"ETag": shapes.etag(procedure)}
+        before = selectors.count_queued_before(procedure)
+        headers = {"ETag": shapes.detail_etag(procedure, before), "Vary": "Prefer"}
+        if before is not None:
+            headers["Retry-After"] = LOOK_AGAIN_S
         if is_known(request, headers["ETag"]):
             return Response(status=304, headers=headers)
-        return Response(shapes.show_detail(procedure), headers=headers)
+        return Response(shapes.show_detail(procedure, before), headers=headers)
 
 
 @schema.procedure_document

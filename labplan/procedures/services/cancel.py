@@ -9,8 +9,9 @@ from labplan.base.errors import NotFound
 from labplan.base.events import record_event
 from labplan.base.idempotency import Once, Unclaimed
 from labplan.base.rights import Actor, may, require
-from labplan.procedures import life
+from labplan.procedures import life, progress
 from labplan.procedures.models import Procedure
+from labplan.procedures.services.changes import announce_change
 
 
 def cancel_procedure(
@@ -41,12 +42,14 @@ def cancel_procedure(
             )
         procedure.state = life.require_end(before, "cancel", life.CANCELLED)
         procedure.version += 1
-        procedure.save(update_fields=["state", "version"])
+        procedure.phase = progress.ENDED
+        procedure.save(update_fields=["state", "version", "phase"])
         record_event(
             actor_code=actor.code, kind="procedure.cancelled", subject=f"procedure {code}",
             before=before, after=procedure.state,
         )  # fmt: skip
         claim.remember(procedure)
+        announce_change(procedure)
     return procedure
 
 

@@ -5,12 +5,13 @@ not repeated for ever. What settles is the attempt that was begun last; any othe
 """
 
 import json
+from contextlib import suppress
 from dataclasses import dataclass
 from datetime import timedelta
 from decimal import Decimal
-from typing import Any
 
-from django.db import OperationalError, transaction
+from django.db import DatabaseError, OperationalError, close_old_connections, transaction
+from django.db.models import F, QuerySet
 
 from inventory.errors import StockShort
 from inventory.services import HoldLine, hold_lines, keep_still
@@ -22,11 +23,16 @@ from labplan.base.models import Person
 from labplan.base.problems import is_lock_timeout
 from labplan.base.rights import Actor, actor_for
 from labplan.planning.values import Charge
-from labplan.procedures import life
+from labplan.procedures import life, progress
 from labplan.procedures.engine import PlannedOn, Scale, Wishes, plan_on_shelf, read_target
 from labplan.procedures.models import Document, Procedure
+from labplan.procedures.services.changes import announce_change, note_settled
 
-MAX_ATTEMPTS = 2
+MAX_BROKEN_OFF = 2
+ENGINE_CRASHED = (
+    "Planning this broke off twice: it crashed, or ran over its time limit. Nothing is held. Tell "
+    "the operator this code; asking again will end the same."
+)
 FREE_TRIES = 2
 HOLD_DAYS = 14
 
@@ -54,6 +60,14 @@ class Attempt:
     wishes: Wishes
 
 
+@dataclass(frozen=True)
+class Draft:
+    """A plan and the bytes of its document, not stored yet."""
+
+    planned: PlannedOn
+    body: bytes
+
+
 def plan_procedure(*, procedure_id: int, message_id: int) -> None:
     """Plan and settle. Safe to repeat: a procedure that is settled already is left alone."""
     attempt = begin_attempt(procedure_id, message_id)
@@ -63,13 +77,18 @@ def plan_procedure(*, procedure_id: int, message_id: int) -> None:
         _plan_until_settled(attempt)
     except DomainError as error:
         _settle_bare(attempt, life.FAILED, error.code, error.detail)
+    except MemoryError:
+        raise  # counts as broken off: the next try would eat as much
+    except Exception:
+        _note_an_orderly_end(attempt)
+        raise
 
 
 def _plan_until_settled(attempt: Attempt) -> None:
     for _ in range(FREE_TRIES):
-        planned = compute_plan(attempt)
+        draft = compute_plan(attempt)
         try:
-            settle_plan(attempt, planned)
+            settle_plan(attempt, draft)
             return
         except StockShort:
             continue  # somebody was faster: look at the shelf again
@@ -87,14 +106,13 @@ def begin_attempt(procedure_id: int, message_id: int) -> Attempt | None:
         if procedure.state != life.QUEUED:
             outbox.mark_done(message_id)
             return None
-        procedure.attempt += 1
-        procedure.save(update_fields=["attempt"])
-        if procedure.attempt > MAX_ATTEMPTS:
-            _close(
-                procedure, life.FAILED, message_id,
-                [("engine_crashed", "Planning broke off twice; tell the operator this code.")],
-            )  # fmt: skip
+        if procedure.broken_off >= MAX_BROKEN_OFF:
+            _close(procedure, life.FAILED, message_id, [("engine_crashed", ENGINE_CRASHED)])
             return None
+        procedure.attempt += 1
+        procedure.broken_off += 1
+        procedure.phase = progress.READING
+        procedure.save(update_fields=["attempt", "broken_off", "phase"])
         try:
             actor = _actor_behind(procedure)
         except DomainError as error:
@@ -126,29 +144,52 @@ def _actor_behind(procedure: Procedure) -> Actor:
     return actor_for(person)
 
 
-def compute_plan(attempt: Attempt) -> PlannedOn:
-    """Snapshot and plan, outside any transaction of its own."""
-    return plan_on_shelf(
+def _note_an_orderly_end(attempt: Attempt) -> None:
+    """An attempt that ends with an error has not crashed: it may be repeated as often as needed."""
+    close_old_connections()  # it may have been the connection that broke
+    with suppress(DatabaseError):
+        _of_attempt(attempt).update(broken_off=F("broken_off") - 1, phase=progress.WAITING)
+
+
+def _of_attempt(attempt: Attempt) -> QuerySet[Procedure]:
+    return Procedure.objects.filter(
+        pk=attempt.procedure_id, state=life.QUEUED, attempt=attempt.number
+    )
+
+
+def compute_plan(attempt: Attempt) -> Draft:
+    """Snapshot, plan and document, outside any transaction of its own."""
+    target = read_target(attempt.smiles)
+    _show_phase(attempt, progress.SIZING)
+    planned = plan_on_shelf(
         actor=attempt.actor,
-        target=read_target(attempt.smiles),
+        target=target,
         scale=attempt.scale,
         wishes=attempt.wishes,
         as_of=clock.today(),
     )
+    _show_phase(attempt, progress.WRITING)
+    draft = Draft(planned, canonical_bytes(planned.document()))
+    _show_phase(attempt, progress.SETTLING)
+    return draft
 
 
-def settle_plan(attempt: Attempt, planned: PlannedOn) -> None:
+def _show_phase(attempt: Attempt, phase: str) -> None:
+    _of_attempt(attempt).update(phase=phase)
+
+
+def settle_plan(attempt: Attempt, draft: Draft) -> None:
     """ONE transaction: compare the attempt, hold the lines, store the document, set the state.
 
     Raises StockShort when the shelf has moved since the snapshot; nothing is changed then.
     """
     with transaction.atomic(durable=True):
-        _settle(attempt, planned)
+        _settle(attempt, draft)
 
 
 def _settle_on_still_rows(attempt: Attempt) -> None:
     """The last try: plan while nobody else can move the bottles in question."""
-    seen = compute_plan(attempt).bottles_seen
+    seen = compute_plan(attempt).planned.bottles_seen
     try:
         with transaction.atomic(durable=True):
             keep_still(seen)
@@ -162,7 +203,8 @@ def _settle_on_still_rows(attempt: Attempt) -> None:
         )  # fmt: skip
 
 
-def _settle(attempt: Attempt, planned: PlannedOn) -> None:
+def _settle(attempt: Attempt, draft: Draft) -> None:
+    planned = draft.planned
     procedure = _locked(attempt.procedure_id)
     if procedure.state != life.QUEUED or procedure.attempt != attempt.number:
         return
@@ -176,7 +218,7 @@ def _settle(attempt: Attempt, planned: PlannedOn) -> None:
             lines=_hold_lines(planned),
         )  # fmt: skip
         procedure.reservation_code = reservation.code
-    procedure.document = _store_document(attempt, planned.document())
+    procedure.document = _store_document(attempt, draft.body)
     _close(procedure, state, attempt.message_id, _reasons_of(planned))
 
 
@@ -223,8 +265,7 @@ def _hold_line(charge: Charge) -> HoldLine:
     )
 
 
-def _store_document(attempt: Attempt, content: dict[str, Any]) -> Document:
-    body = canonical_bytes(content)
+def _store_document(attempt: Attempt, body: bytes) -> Document:
     return Document.objects.create(
         procedure_id=attempt.procedure_id, attempt=attempt.number, body=body,
         sha256=sha256_hex(body), created_at=clock.now(),
@@ -247,12 +288,15 @@ def _close(
     procedure.reasons = json.dumps([{"code": c, "detail": d} for c, d in reasons])
     procedure.version += 1
     procedure.settled_at = clock.now()
+    procedure.phase = progress.ENDED
     procedure.save()
     record_event(
         actor_code=procedure.requested_by, kind="procedure.settled",
         subject=f"procedure {procedure.code}", before=before, after=state,
     )  # fmt: skip
     outbox.mark_done(message_id)
+    announce_change(procedure)
+    note_settled(procedure)
 
 
 def _locked(procedure_id: int) -> Procedure:

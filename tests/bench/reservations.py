@@ -1,7 +1,7 @@
 """A reservation of five lines beside the same rows written by one server function.
 
-`rows()` starts a PostgreSQL and a SQLite of its own and runs `python -m tests.bench.ledger` on
-each; `measure` forks clients before a connection is open.
+`rows()` starts a PostgreSQL and a SQLite of its own and runs this module as a program on each;
+`measure` forks clients before a connection is open.
 """
 
 import json
@@ -97,7 +97,7 @@ def _run(address: str) -> dict[str, dict[str, float]]:
         **os.environ, "DATABASE_URL": address, "DJANGO_SETTINGS_MODULE": "labplan.settings.test",
     }  # fmt: skip
     ended = subprocess.run(
-        [sys.executable, "-m", "tests.bench.ledger"], env=environment, capture_output=True,
+        [sys.executable, "-m", "tests.bench.reservations"], env=environment, capture_output=True,
         text=True, check=False,
     )  # fmt: skip
     if ended.returncode:

@@ -1,0 +1,1 @@
+"""Running labplan: serving, health, metrics, backup, moving to another database."""

@@ -1,0 +1,38 @@
+"""Check what the environment says; refuse nonsense at start, not in a request."""
+
+import os
+from zoneinfo import ZoneInfo
+
+from django.core.exceptions import ImproperlyConfigured
+
+
+def known_time_zone(name: str) -> str:
+    """Return the name of a time zone there is; refuse another at start, not in a request."""
+    try:
+        ZoneInfo(name)
+    except (KeyError, ValueError, OSError) as error:
+        raise ImproperlyConfigured(
+            f"LABPLAN_TIME_ZONE={name!r} is no time zone; give one like Europe/Berlin."
+        ) from error
+    return name
+
+
+def whole_seconds(variable: str, default: int) -> int:
+    """Return the seconds that an environment variable gives, 1 to 86,400."""
+    return whole_number(variable, default, highest=86_400)
+
+
+def whole_number(variable: str, default: int, *, highest: int) -> int:
+    """Return the whole number that an environment variable gives, from 1 to the highest."""
+    given = os.environ.get(variable) or str(default)
+    if not given.isdecimal() or not 1 <= int(given) <= highest:
+        raise ImproperlyConfigured(f"{variable}={given!r}: give a whole number, 1 to {highest}.")
+    return int(given)
+
+
+def one_of_words(variable: str, words: tuple[str, ...]) -> str:
+    """Return the word that an environment variable gives; the first one when it gives none."""
+    given = os.environ.get(variable) or words[0]
+    if given not in words:
+        raise ImproperlyConfigured(f"{variable}={given!r}: give one of {', '.join(words)}.")
+    return given
