@@ -70,11 +70,13 @@ def hold_lines(
 
 
 def release_reservation(
-    *, actor: Actor, code: uuid.UUID, reason: str, operation_id: uuid.UUID | None = None
-) -> None:
+    *, actor: Actor, code: uuid.UUID, reason: str, operation_id: uuid.UUID | None = None,
+    must_be_open: bool = True,
+) -> None:  # fmt: skip
     """Give back what a reservation still holds, in the caller's open transaction.
 
-    Raises NotFound, NotAllowed, and StateForbids when it is closed already.
+    Raises NotFound, NotAllowed, and StateForbids when it is closed already; without
+    `must_be_open` a closed one is left as it is.
     """
     locks.require_transaction()
     reservation = Reservation.objects.select_for_update(no_key=True).filter(code=code).first()
@@ -82,7 +84,9 @@ def release_reservation(
         raise NotFound("There is no reservation with this code.")
     require(actor, "reservation.release", project_id=reservation.project_id)
     if reservation.state != Reservation.State.OPEN:
-        raise StateForbids("This reservation is closed; it holds nothing any more.")
+        if must_be_open:
+            raise StateForbids("This reservation is closed; it holds nothing any more.")
+        return
     _give_all_back(
         reservation, actor=actor, reason=reason, kind="release", end=Hold.State.RELEASED,
         operation_id=operation_id,
