@@ -3,6 +3,8 @@
 from django.db import models
 from django.db.models import F, Q
 
+from labplan.base.checks import IsWholeNumber
+
 # 1 Gg in micrograms, 1 ML in nanolitres: far above any bottle, far below 64 bits.
 LARGEST_AMOUNT = 10**15
 
@@ -13,22 +15,6 @@ class MeasuredBy(models.TextChoices):
     MASS = "mass"  # micrograms
     VOLUME = "volume"  # nanolitres
     COUNT = "count"  # pieces
-
-
-class IsWholeNumber(models.Func):
-    """True for an integer. SQLite keeps 'abc' or 0.5 in an integer column unless it is asked."""
-
-    function = "TYPEOF"
-    output_field = models.BooleanField()
-    conditional = True
-
-    def as_sql(self, compiler, connection, **extra):  # type: ignore[no-untyped-def]
-        inner, params = compiler.compile(self.source_expressions[0])
-        return f"({inner} = {inner})", [*params, *params]
-
-    def as_sqlite(self, compiler, connection, **extra):  # type: ignore[no-untyped-def]
-        inner, params = compiler.compile(self.source_expressions[0])
-        return f"(typeof({inner}) IN ('integer', 'null'))", params
 
 
 def whole_number(field: str, *, lowest: int, name: str) -> models.CheckConstraint:

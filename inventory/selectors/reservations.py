@@ -63,6 +63,12 @@ def held_lines(*, code: uuid.UUID) -> QuerySet[Hold]:
     return Hold.objects.filter(reservation__code=code).select_related("bottle").order_by("line")
 
 
+def overdue_codes(*, today: date) -> list[uuid.UUID]:
+    """The reservations that still hold something after their last day, oldest first."""
+    found = Reservation.objects.filter(state=Reservation.State.OPEN, expires_on__lt=today)
+    return list(found.order_by("expires_on", "pk").values_list("code", flat=True))
+
+
 def visible_quotas(*, actor: Actor, project: str = "", substance: str = "") -> QuerySet[Quota]:
     mine = visible_project_ids(actor, "quota.view")
     found = Quota.objects.select_related("project", "substance")
@@ -77,9 +83,3 @@ def own_notices(*, actor: Actor, unread: bool = False) -> QuerySet[Notice]:
     """What the stock has to tell the actor; nobody else reads it."""
     found = Notice.objects.filter(person_code=actor.code).select_related("project")
     return found.filter(read_at=None) if unread else found
-
-
-def overdue_codes(*, today: date) -> list[uuid.UUID]:
-    """The reservations that still hold something after their last day, oldest first."""
-    found = Reservation.objects.filter(state=Reservation.State.OPEN, expires_on__lt=today)
-    return list(found.order_by("expires_on", "pk").values_list("code", flat=True))

@@ -106,9 +106,14 @@ def lapse_reservation(*, code: uuid.UUID, reason: str) -> bool:
 
 
 def _give_all_back(
-    reservation: Reservation, *, actor: Actor, reason: str, kind: str, end: str,
+    reservation: Reservation,
+    *,
+    actor: Actor,
+    reason: str,
+    kind: str,
+    end: str,
     operation_id: uuid.UUID | None = None,
-) -> None:  # fmt: skip
+) -> None:
     open_holds = reservation.holds.filter(state=Hold.State.OPEN)
     holds = list(open_holds.select_related("bottle__form__substance").order_by("line"))
     write_lines(

@@ -66,6 +66,20 @@ class NotAuthenticated(DomainError):
     status = 401
 
 
+class LoginFailed(DomainError):
+    code = "login_failed"
+    title = "Code and password do not fit"
+    status = 401
+
+
+class TooManyAttempts(DomainError):
+    """`retry_after_s` says when to try again."""
+
+    code = "too_many_attempts"
+    title = "Too many attempts"
+    status = 429
+
+
 class NotAllowed(DomainError):
     code = "not_allowed"
     title = "Your role does not allow this"

@@ -7,6 +7,8 @@ from django.db import models
 from django.db.models import Q
 
 from labplan.base.append_only import AppendOnlyModel
+from labplan.base.checks import whole_from
+from labplan.base.seal_tables import Seal, SealRun  # noqa: F401 - Django finds models here
 
 
 def one_of(field: str, choices: type[models.TextChoices], *, name: str) -> models.CheckConstraint:
@@ -104,9 +106,37 @@ class ApiToken(models.Model):
     created_at = models.DateTimeField()
     expires_at = models.DateTimeField()
     revoked_at = models.DateTimeField(null=True)
+    last_used_at = models.DateTimeField(null=True)  # to the hour
+    by_login = models.BooleanField(default=False)  # ends when the password is changed
 
     class Meta:
         constraints = [one_of("scope", ApiTokenScope, name="api_token_scope_known")]
+
+
+class LoginCountKind(models.TextChoices):
+    ADDRESS = "address"
+    CODE = "code"
+
+
+class LoginCount(models.Model):
+    """Failed logins of one address or for one code in a quarter of an hour, all processes.
+
+    Neither stands in here: the digest is keyed.
+    """
+
+    Kind = LoginCountKind
+    kind = models.CharField(max_length=8, choices=LoginCountKind)
+    digest = models.CharField(max_length=64)
+    quarter = models.BigIntegerField()
+    attempts = models.BigIntegerField()
+
+    class Meta:
+        constraints = [
+            models.UniqueConstraint(fields=["kind", "digest", "quarter"], name="login_count_once"),
+            one_of("kind", LoginCountKind, name="login_count_kind_known"),
+            whole_from("quarter", 0, name="login_count_quarter_whole"),
+            whole_from("attempts", 0, name="login_count_attempts_whole"),
+        ]
 
 
 class RememberedAnswer(models.Model):

@@ -16,5 +16,5 @@ def problem_body(error: DomainError) -> dict[str, Any]:
         "code": error.code,
         "detail": error.detail,
         "errors": [line.as_dict() for line in error.errors],
-        **error.extra,
+        **{name: value for name, value in error.extra.items() if name != "retry_after_s"},
     }

@@ -28,6 +28,8 @@ def problem_response(exception: Exception, context: dict[str, Any]) -> Response 
         headers["WWW-Authenticate"] = 'Bearer realm="labplan"'
     if isinstance(error, domain.StillRunning | domain.Busy):
         headers["Retry-After"] = "1"
+    if "retry_after_s" in error.extra:
+        headers["Retry-After"] = str(error.extra["retry_after_s"])
     if allowed := getattr(context.get("view"), "allowed_methods", None):
         headers["Allow"] = ", ".join(allowed)
     return Response(

@@ -32,6 +32,12 @@ SITE_OPERATIONS: dict[str, frozenset[str]] = {
     "quota.set": frozenset({"stock_keeper"}),
     "notice.mark": _ALL,
 }
+# What concerns only who asks, so that no role is needed; the scope a token needs for it.
+OWN_OPERATIONS: dict[str, str] = {
+    "token.view": "read",
+    "token.make": "write",
+    "token.revoke": "write",
+}
 READING = frozenset({"project.view", "procedure.view", "reservation.view", "stock.view",
                      "movement.view", "quota.view"})  # fmt: skip
 # The free amounts of the shelf are everybody's business.
@@ -47,6 +53,7 @@ class Actor:
     site_role: str = "none"
     scope: str = "write"
     roles: dict[int, str] = field(default_factory=dict)
+    token_id: int | None = None  # of the token the request came with
 
 
 # For commands that the operator runs on the machine itself: sees everything, moves nothing.
@@ -57,14 +64,18 @@ OPERATOR = Actor(person_id=0, code="OPERATOR", site_role="auditor", scope="read"
 LABPLAN = Actor(person_id=0, code="LABPLAN")
 
 
-def actor_for(person: Person, *, scope: str = ApiToken.Scope.WRITE) -> Actor:
+def actor_for(
+    person: Person, *, scope: str = ApiToken.Scope.WRITE, token_id: int | None = None
+) -> Actor:
     """Read the roles of a person once."""
     roles = dict(person.memberships.values_list("project_id", "role"))
-    return Actor(person.pk, person.code, person.site_role, scope, roles)
+    return Actor(person.pk, person.code, person.site_role, scope, roles, token_id)
 
 
 def may(actor: Actor, operation: str, *, project_id: int | None = None) -> bool:
     """Say whether the actor may do this; a name not in the tables is an error in the code."""
+    if operation in OWN_OPERATIONS:
+        return OWN_OPERATIONS[operation] in ("read", actor.scope)
     if not _may_at_all(actor, operation):
         return False
     if operation in PROJECT_OPERATIONS:

@@ -1,4 +1,4 @@
-"""What `base` sweeps away: answers nobody will ask for again, and messages that are long done."""
+"""What `base` does every so often: seal what is new, forget old answers, clear old messages."""
 
 from datetime import timedelta
 
@@ -7,6 +7,7 @@ from django.db.models import QuerySet
 from labplan.base import clock
 from labplan.base.housekeeping import sweeps
 from labplan.base.models import OutboxMessage, RememberedAnswer
+from labplan.base.seal import seal_new
 
 # How long the same Idempotency-Key brings the same answer.
 ANSWERS_KEPT = timedelta(days=7)
@@ -26,6 +27,9 @@ def clear_messages() -> int:
     """Delete messages that have been done for thirty days; dead letters stay."""
     done = OutboxMessage.objects.filter(state=OutboxMessage.State.DONE)
     return _delete(done.filter(done_at__lt=clock.now() - MESSAGES_KEPT))
+
+
+sweeps("base.seal", every=timedelta(minutes=1))(seal_new)
 
 
 def _delete(rows: QuerySet) -> int:

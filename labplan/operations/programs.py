@@ -17,7 +17,11 @@ def web(socket: Path, *, processes: int) -> Program:
             sys.executable, "-m", "gunicorn", "--config", str(ROOT / "deploy" / "gunicorn.conf.py"),
             "labplan.wsgi",
         ],
-        {"LABPLAN_BIND": f"unix:{socket}", "LABPLAN_WEB_WORKERS": str(processes)},
+        {
+            "LABPLAN_BIND": f"unix:{socket}", "LABPLAN_WEB_WORKERS": str(processes),
+            # the waiting service, which stands before it
+            "LABPLAN_PROXIES": os.environ.get("LABPLAN_PROXIES") or "1",
+        },
     )  # fmt: skip
 
 

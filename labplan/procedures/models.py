@@ -81,6 +81,8 @@ class Document(AppendOnlyModel):
     attempt = models.PositiveSmallIntegerField()
     body = models.BinaryField()
     sha256 = models.CharField(max_length=64)
+    # the newest seal when it was stored, as it is printed on the sheet; empty before the first
+    seal = models.CharField(max_length=40, blank=True)
     created_at = models.DateTimeField()
 
     class Meta:

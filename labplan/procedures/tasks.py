@@ -37,14 +37,6 @@ def on_plan(payload: Payload, message_id: int) -> None:
     plan_procedure(procedure_id=payload["procedure_id"], message_id=message_id)
 
 
-@outbox.handles(HOLDS_CANCELLED_TOPIC, queue=outbox.PROCEDURES)
-def on_holds_cancelled(payload: Payload, message_id: int) -> None:
-    note_lost_holds(
-        reservation_code=uuid.UUID(payload["reservation"]), holds=payload["holds"],
-        message_id=message_id,
-    )  # fmt: skip
-
-
 @sweeps("procedures.lapse_overdue", every=timedelta(minutes=5))
 def lapse_what_is_overdue() -> int:
     return lapse_overdue()
@@ -54,3 +46,11 @@ def lapse_what_is_overdue() -> int:
 def warm_the_engine() -> None:
     """Read and plan one target on an empty shelf: everything that planning needs is then loaded."""
     warm_plan()
+
+
+@outbox.handles(HOLDS_CANCELLED_TOPIC, queue=outbox.HOUSEKEEPING)
+def on_holds_cancelled(payload: Payload, message_id: int) -> None:
+    note_lost_holds(
+        reservation_code=uuid.UUID(payload["reservation"]), holds=payload["holds"],
+        message_id=message_id,
+    )  # fmt: skip

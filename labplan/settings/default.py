@@ -4,7 +4,9 @@ LABPLAN_DATA_DIR     where the SQLite file and the generated key live (default: 
 DATABASE_URL         sqlite:///path or postgresql://...  (default: SQLite in LABPLAN_DATA_DIR)
 REDIS_URL            broker, redis://... or redis+socket:///path  (make serve starts one if not set)
 LABPLAN_SECRET_KEY   Django's key (default: made once and kept in LABPLAN_DATA_DIR)
+LABPLAN_SEAL_KEY     key of the seals (default: made once and kept in LABPLAN_DATA_DIR)
 LABPLAN_HOSTS        host names served, separated by commas (default: this machine only)
+LABPLAN_PROXIES      how many proxies of yours stand before it (default: 0)
 LABPLAN_TIME_ZONE    the laboratory's time zone, for dates (default: UTC)
 LABPLAN_PLAN_LIMIT_S when a worker that plans one target is killed (default: 30)
 LABPLAN_LEASE_S      how long a message may lie in the broker before it is sent again (default: 120)
@@ -20,13 +22,16 @@ from pathlib import Path
 from labplan.base import logs
 from labplan.settings.database import database_from_url
 from labplan.settings.environment import known_time_zone, one_of_words, whole_seconds
-from labplan.settings.secret import read_or_make_secret_key
+from labplan.settings.proxies import own_proxies
+from labplan.settings.secret import read_or_make_secret_key, read_seal_key
 
 BASE_DIR = Path(__file__).resolve().parents[2]
 DATA_DIR = Path(os.environ.get("LABPLAN_DATA_DIR") or BASE_DIR / "var")
 
 DEBUG = False
 SECRET_KEY = os.environ.get("LABPLAN_SECRET_KEY") or read_or_make_secret_key(DATA_DIR)
+# Whoever has it can make seals: keep it and its copies apart from those of the database.
+SEAL_KEY = read_seal_key(DATA_DIR)
 ALLOWED_HOSTS = os.environ.get("LABPLAN_HOSTS", "127.0.0.1,localhost,[::1]").split(",")
 
 INSTALLED_APPS = [
@@ -65,6 +70,20 @@ PLAN_LIMIT_S = whole_seconds("LABPLAN_PLAN_LIMIT_S", 30)
 OUTBOX_LEASE_S = whole_seconds("LABPLAN_LEASE_S", 120)
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"
 AUTH_USER_MODEL = "base.Person"
+
+AUTH_PASSWORD_VALIDATORS = [
+    {
+        "NAME": f"django.contrib.auth.password_validation.{name}",
+        "OPTIONS": options,
+    }
+    for name, options in (
+        ("MinimumLengthValidator", {"min_length": 12}),
+        ("UserAttributeSimilarityValidator", {"user_attributes": ("code",)}),
+        ("CommonPasswordValidator", {}),
+        ("NumericPasswordValidator", {}),
+    )
+]
+OWN_PROXIES = own_proxies()
 
 USE_TZ = True
 TIME_ZONE = "UTC"
@@ -111,6 +130,7 @@ SPECTACULAR_SETTINGS = {
         {"name": "Stock", "description": "Substances, bottles, places, and the book of a bottle."},
         {"name": "Reservations", "description": "What is set aside, and for which project."},
         {"name": "Projects", "description": "Who may use what."},
+        {"name": "Tokens", "description": "What lets a program in: make, list and revoke yours."},
         {"name": "About this API", "description": "This description, for programs and people."},
         {"name": "Health", "description": "For those who run it, and for load balancers."},
     ],

@@ -7,6 +7,7 @@ import tempfile
 from pathlib import Path
 
 os.environ.setdefault("LABPLAN_SECRET_KEY", "for-tests-only")
+os.environ.setdefault("LABPLAN_SEAL_KEY", "for-tests-only-and-as-long-as-a-real-one")
 
 from labplan.settings.database import database_from_url
 from labplan.settings.default import *  # noqa: F403

@@ -2,15 +2,19 @@
 
 import hashlib
 import html
+import io
 import json
 import re
 from html.parser import HTMLParser
 from typing import Any
 
 import pytest
+from pypdf import PdfReader
 
+from inventory.services.verify import verify_ledger
 from labplan.base.canonical import canonical_bytes
 from labplan.base.models import PersonName, Project
+from labplan.base.seal import newest_printed, seal_new
 from labplan.procedures.models import Document
 from tests.api import targets
 from tests.api.problems import assert_problem
@@ -239,6 +243,25 @@ def test_the_sheet_says_whose_it_is_and_what_it_was_made_from(
     for version in planned["document"]["versions"].values():
         assert version in text
     assert "qualified chemist" in text
+
+
+def test_the_sheet_carries_the_newest_seal_of_the_moment_it_was_planned(lab: Laboratory) -> None:
+    """Later seals change neither paper: the same document is printed with the same bytes."""
+    seal_new()
+    seal = newest_printed()
+    shown = order_and_plan(lab)
+    pdf = lab.client().get(shown["links"]["sheet_pdf"])
+    assert seal in Page(sheet_of(lab, shown)).text
+    first_page = PdfReader(io.BytesIO(pdf.content)).pages[0].extract_text()
+    assert seal in first_page.replace("\n", "")
+    assert seal_new() > 0
+    assert newest_printed() != seal
+    assert lab.client().get(shown["links"]["sheet_pdf"]).content == pdf.content
+    assert verify_ledger(newest=seal).faults == ()
+
+
+def test_before_the_first_seal_the_sheet_says_so(lab: Laboratory, planned: dict[str, Any]) -> None:
+    assert "none yet" in Page(sheet_of(lab, planned)).text
 
 
 def test_an_erased_name_leaves_a_sheet_with_the_code(

@@ -11,6 +11,7 @@ import yaml
 from openapi_spec_validator import OpenAPIV31SpecValidator
 
 from labplan.base.api.pages import example_of
+from labplan.base.login import set_password
 from tests.api import targets
 from tests.api.openapi import assert_described, faults
 from tests.api.url_map import AT_ROOT, DESCRIBED, Planted, plant_procedure, served_patterns
@@ -94,9 +95,7 @@ def test_only_what_is_public_needs_no_token(document: dict[str, Any]) -> None:
         for operation in methods.values()
         if operation.get("security") != [{"bearer": []}]
     }
-    assert without == {
-        routes()[n] for n, expected in DESCRIBED.items() if expected.sees == "public"
-    }
+    assert without == {routes()[n] for n, e in DESCRIBED.items() if e.sees in ("public", "door")}
 
 
 def test_filters_pages_and_headers_are_described(document: dict[str, Any]) -> None:
@@ -278,6 +277,23 @@ def test_problems_are_as_described(
         assert_described(document, route, method, response)
     statuses = {response.status_code for _, _, response in met}
     assert statuses == {400, 401, 403, 404, 409, 412, 415, 422, 428}
+
+
+def test_tokens_and_logins_are_as_described(lab: Laboratory, document: dict[str, Any]) -> None:
+    client, tokens, login = lab.client(), "/api/v1/tokens/", "/api/v1/login/"
+    set_password(person_code="MIRA", password="a heron on one leg")
+    body = {"person": "MIRA", "password": "a heron on one leg"}
+    met = [client.post(login, body)]
+    met += [client.post(login, {**body, "password": "another"}) for _ in range(6)]
+    assert [response.status_code for response in met] == [201, *[401] * 5, 429]
+    for response in met:
+        assert_described(document, login, "post", response)
+    made = client.post(tokens, {"name": "balance"})
+    assert_described(document, tokens, "post", made)
+    revoked = client.post(f"{tokens}{made.json()['id']}/revoke/")
+    assert revoked.status_code == 200
+    assert_described(document, tokens + "{token_id}/revoke/", "post", revoked)
+    assert_described(document, tokens, "get", client.get(tokens))
 
 
 def test_a_field_that_is_gone_or_new_is_found(

@@ -70,8 +70,8 @@ def test_the_object_has_the_shape_that_was_agreed(lab: Laboratory) -> None:
 
 
 def test_nothing_is_stored_or_held(lab: Laboratory) -> None:
-    before, book = lab.counts(), whole_book()
     lab.client()  # makes its token first
+    before, book = lab.counts(), whole_book()
     assert preview(lab)["routes"][0]["available"] is True
     preview(lab, target_smiles=targets.ALPHA_OCTYL)
     assert ask(lab, target_smiles="C1CC").status_code == 422

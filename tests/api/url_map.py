@@ -8,6 +8,7 @@ from django.urls import URLPattern, URLResolver, get_resolver, reverse
 
 from inventory.models import Notice
 from labplan.base import clock
+from labplan.base.models import ApiToken
 from tests.laboratory import Laboratory, octyl_order
 
 METHODS = ("GET", "HEAD", "POST", "PUT", "PATCH", "DELETE", "OPTIONS", "TRACE", "BREW")
@@ -19,7 +20,8 @@ class Expected:
     """What a route serves, and what a person without a project there sees of it.
 
     `sees`: "stock" (the same as everybody), "nothing" (an empty list), "hidden" (404), "public"
-    (holds no data of the laboratory: the same for everybody, also without a token).
+    (holds no data of the laboratory: the same for everybody, also without a token), "own" (of
+    everybody what is his own), "door" (takes no token: one comes from there).
     """
 
     sees: str
@@ -29,15 +31,17 @@ class Expected:
     post_status: int | None = None
     # a POST that only looks may be sent with a token of scope read
     post_only_looks: bool = False
+    # concerns only who asks, so that no role is needed
+    is_own: bool = False
+    # public, but told anew each time: durations, counts
+    changes_by_itself: bool = False
+    # lies at the root and not under api/v1/; what lies at both is described under the prefix
+    only_at_root: bool = False
     # A POST on the shelf itself, which serves all projects: who works in any of them, and an
     # administrator, gets as far as the body (empty here: 422). Others get `post_status`.
     post_on_the_shelf: bool = False
     # a body whose only fault is whose project it names
     body: dict[str, Any] | None = None
-    # public, but told anew each time: durations, counts
-    changes_by_itself: bool = False
-    # lies at the root and not under api/v1/; what lies at both is described under the prefix
-    only_at_root: bool = False
 
     def status_for(self, who: str) -> int | None:
         """What a POST by an outsider of this kind is answered."""
@@ -49,6 +53,9 @@ class Expected:
 EXPECTED: dict[str, Expected] = {
     "openapi-document": Expected("public"),
     "documentation-page": Expected("public"),
+    "login": Expected("door", (), ("POST", "OPTIONS"), 422, is_own=True),
+    "token-list": Expected("own", (), (*READS, "POST"), 422, is_own=True),
+    "token-revoke": Expected("hidden", ("token",), ("POST", "OPTIONS"), 404, is_own=True),
     "health-live": Expected("public"),
     "health-ready": Expected("public", changes_by_itself=True),
     "metrics": Expected("public", changes_by_itself=True, only_at_root=True),
@@ -151,6 +158,7 @@ def plant_procedure(lab: Laboratory) -> Planted:
         "reservation": shown["reservation"],
         "procedure": shown["code"],
         "notice": str(_plant_notice(lab, shown["reservation"]).pk),
+        "token": str(ApiToken.objects.filter(person__code="MIRA").latest("pk").pk),
     }
     document = shown["document"]
     secrets = (

@@ -1,6 +1,8 @@
 """Run the measurements and print a table each: all of them, or those that are named.
 
-python -m tests.bench [engine] [workers]
+python -m tests.bench [engine] [workers] [ledger[:MOVEMENTS]] [ledger-postgresql[:MOVEMENTS]]
+
+The last two seal and check a large ledger; they are run only when they are named.
 """
 
 import gc
@@ -24,7 +26,7 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.bench import paper, reservations, workers
+from tests.bench import ledger, paper, reservations, workers
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import PENTENYL_LACTOSIDE
 
@@ -151,11 +153,22 @@ SECTIONS: dict[str, Callable[[], Table]] = {
 }
 
 
+LONG = {"ledger": False, "ledger-postgresql": True}  # whether on PostgreSQL
+MOVEMENTS = 1_000_000
+
+
+def section(name: str) -> Table:
+    kind, _, movements = name.partition(":")
+    if kind in LONG:
+        return ledger.measure(int(movements or MOVEMENTS), on_postgresql=LONG[kind])
+    return SECTIONS[kind]()
+
+
 def main(wanted: list[str]) -> None:
-    if unknown := set(wanted) - set(SECTIONS):
-        sys.exit(f"no measurement {', '.join(unknown)}; there are: {', '.join(SECTIONS)}")
+    if unknown := {name.partition(":")[0] for name in wanted} - {*SECTIONS, *LONG}:
+        sys.exit(f"no measurement {', '.join(unknown)}; there are: {', '.join([*SECTIONS, *LONG])}")
     for name in wanted or SECTIONS:
-        Console(width=120).print(SECTIONS[name]())
+        Console(width=120).print(section(name))
 
 
 if __name__ == "__main__":

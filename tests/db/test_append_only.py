@@ -13,7 +13,8 @@ from django.db import DatabaseError, connection, models, transaction
 from inventory.models import Movement
 from labplan.base import append_only, clock
 from labplan.base.events import record_event
-from labplan.base.models import Event
+from labplan.base.models import Event, Seal, SealRun
+from labplan.base.seal import seal_new
 from labplan.procedures.models import Document, Procedure
 from tests.db.bench import (
     ON_POSTGRESQL,
@@ -27,14 +28,20 @@ from tests.db.bench import (
 )
 
 pytestmark = pytest.mark.django_db
-KINDS: tuple[type[models.Model], ...] = (Movement, Event, Document)
-TABLES = ("base_event", "inventory_movement", "procedures_document")
+KINDS: tuple[type[models.Model], ...] = (Movement, Event, Document, Seal, SealRun)
+TABLES = ("base_event", "base_seal", "base_sealrun", "inventory_movement", "procedures_document")
+KEYS = {table: "number" if table == "base_seal" else "id" for table in TABLES}
 VERBS = ("no_change", "no_truncate") if ON_POSTGRESQL else ("no_update", "no_delete")
+# tables whose new rows must fit the one before
+CARRYING_ON = ("base_seal", "base_sealrun", "inventory_movement")
 ALL_TRIGGERS = {
     *(f"{table}_{verb}" for table in TABLES for verb in VERBS),
-    "inventory_movement_carries_on",
+    *(f"{table}_carries_on" for table in CARRYING_ON),
 }
-A_COLUMN = {"base_event": "kind", "inventory_movement": "reason", "procedures_document": "sha256"}
+A_COLUMN = {
+    "base_event": "kind", "inventory_movement": "reason", "procedures_document": "sha256",
+    "base_seal": "key_print", "base_sealrun": "book",
+}  # fmt: skip
 
 
 @pytest.fixture
@@ -50,6 +57,7 @@ def shelf() -> Shelf:
     Document.objects.create(
         procedure=procedure, attempt=1, body=b"{}", sha256="0" * 64, created_at=clock.now()
     )
+    seal_new()
     if ON_POSTGRESQL:
         # A table with foreign keys still to be checked may be neither emptied nor altered.
         run_sql("SET CONSTRAINTS ALL IMMEDIATE")
@@ -57,7 +65,7 @@ def shelf() -> Shelf:
 
 
 def _everything() -> list[list[tuple[Any, ...]]]:
-    return [rows_of(f"SELECT * FROM {table} ORDER BY id") for table in TABLES]
+    return [rows_of(f"SELECT * FROM {table} ORDER BY 1") for table in TABLES]
 
 
 def _refused(call: Callable[[], Any], words: str) -> None:
@@ -75,13 +83,13 @@ def _refused(call: Callable[[], Any], words: str) -> None:
     [
         "UPDATE {table} SET {column} = 'x'",
         "UPDATE {table} SET {column} = {column}",
-        "UPDATE {table} SET id = id + 1000",
+        "UPDATE {table} SET {key} = {key} + 1000",
         "DELETE FROM {table}",
-        "DELETE FROM {table} WHERE id = (SELECT max(id) FROM {table})",
+        "DELETE FROM {table} WHERE {key} = (SELECT max({key}) FROM {table})",
     ],
 )
 def test_raw_sql_changes_no_row(table: str, sql: str) -> None:
-    text = sql.format(table=table, column=A_COLUMN[table])
+    text = sql.format(table=table, column=A_COLUMN[table], key=KEYS[table])
     _refused(lambda: run_sql(text), f"rows of {table} are never changed")
 
 
@@ -93,9 +101,9 @@ def test_the_table_is_not_emptied_nor_its_rows_replaced(table: str) -> None:
         _refused(lambda: run_sql(f"TRUNCATE {table} CASCADE"), words)
         return
     columns = [name for _, name, *_ in rows_of(f"PRAGMA table_info({table})")]
-    row = dict(zip(columns, rows_of(f"SELECT * FROM {table} ORDER BY id DESC")[0], strict=True))
+    row = dict(zip(columns, rows_of(f"SELECT * FROM {table} ORDER BY 1 DESC")[0], strict=True))
     row[A_COLUMN[table]] = "x"
-    _refused(lambda: insert(table, row, verb="INSERT OR REPLACE"), words)
+    _refused(lambda: insert(table, row, verb="INSERT OR REPLACE"), _words_to_a_row_again(table))
 
 
 @pytest.mark.usefixtures("shelf")
@@ -104,11 +112,17 @@ def test_an_upsert_changes_no_row(table: str) -> None:
     """On both databases the conflict turns into an update, which the trigger refuses."""
     columns = ", ".join(f'"{f.column}"' for f in _model_of(table)._meta.concrete_fields)
     upsert = (
-        f"INSERT INTO {table} ({columns}) SELECT {columns} FROM {table} WHERE id = "
-        f"(SELECT max(id) FROM {table}) "
-        f"ON CONFLICT (id) DO UPDATE SET {A_COLUMN[table]} = 'x'"
+        f"INSERT INTO {table} ({columns}) SELECT {columns} FROM {table} WHERE {KEYS[table]} = "
+        f"(SELECT max({KEYS[table]}) FROM {table}) "
+        f"ON CONFLICT ({KEYS[table]}) DO UPDATE SET {A_COLUMN[table]} = 'x'"
     )
-    _refused(lambda: run_sql(upsert), f"rows of {table} are never changed")
+    _refused(lambda: run_sql(upsert), _words_to_a_row_again(table))
+
+
+def _words_to_a_row_again(table: str) -> str:
+    """A seal that is there already does not carry on from the newest one: that comes first."""
+    words = f"rows of {table} are never changed"
+    return f"{words}|does not carry on|covers what is sealed" if "seal" in table else words
 
 
 def _model_of(table: str) -> type[models.Model]:
@@ -120,12 +134,13 @@ def _model_of(table: str) -> type[models.Model]:
 @pytest.mark.parametrize("way", ["update", "delete", "save", "delete one", "base manager"])
 def test_the_models_refuse_before_the_database_is_asked(kind: Any, way: str) -> None:
     row = kind.objects.first()
+    to = {"number" if kind is Seal else "id": 5}
     calls: dict[str, Callable[[], Any]] = {
-        "update": lambda: kind.objects.update(id=5),
+        "update": lambda: kind.objects.update(**to),
         "delete": lambda: kind.objects.filter(pk=row.pk).delete(),
         "save": row.save,
         "delete one": row.delete,
-        "base manager": lambda: kind.objects.filter(pk=row.pk).select_related().update(id=5),
+        "base manager": lambda: kind.objects.filter(pk=row.pk).update(**to),
     }
     before = _everything()
     with pytest.raises(TypeError, match=f"{kind.__name__} rows are never"):
@@ -208,7 +223,8 @@ def test_triggers_lost_in_a_table_rebuild_come_back_with_migrate(shelf: Shelf) -
     for table in TABLES:
         for verb in VERBS:
             drop_trigger(table, f"{table}_{verb}")
-    drop_trigger("inventory_movement", "inventory_movement_carries_on")
+    for table in CARRYING_ON:
+        drop_trigger(table, f"{table}_carries_on")
     assert trigger_names() == set()
     call_command("migrate", verbosity=0, stdout=io.StringIO())
     assert trigger_names() == ALL_TRIGGERS
@@ -239,10 +255,62 @@ def test_a_rebuilt_table_gets_its_triggers_back(shelf: Shelf) -> None:
     _refused(lambda: run_sql("DELETE FROM base_event"), "rows of base_event are never changed")
 
 
+@pytest.mark.spoils_the_book
 def test_lifting_is_for_the_block_only(shelf: Shelf) -> None:
     with append_only.lifted(connection):
-        assert trigger_names() == {"inventory_movement_carries_on"}
+        assert trigger_names() == {f"{table}_carries_on" for table in CARRYING_ON}
         run_sql("UPDATE base_event SET kind = 'x'")
     assert trigger_names() == ALL_TRIGGERS
     assert set(Event.objects.values_list("kind", flat=True)) == {"x"}
     _refused(lambda: run_sql("DELETE FROM base_event"), "rows of base_event are never changed")
+
+
+def _next_seal(**changes: Any) -> dict[str, Any]:
+    """What the database takes for the seal after the first, with values replaced."""
+    first = Seal.objects.get(number=1)
+    return {
+        "number": 2, "sealed_at": clock.now(), "key_print": "p", "before": first.digest,
+        "runs": 1, "rows": 1, "digest": "a" * 64, **changes,
+    }  # fmt: skip
+
+
+@pytest.mark.usefixtures("shelf")
+@pytest.mark.parametrize(
+    "changes",
+    [{"number": 3}, {"number": 1, "before": "0" * 64}, {"before": "0" * 64}, {"before": "b" * 64}],
+    ids=str,
+)
+def test_a_seal_that_does_not_carry_on_is_refused(changes: dict[str, Any]) -> None:
+    row = _next_seal(**changes)
+    _refused(lambda: insert("base_seal", row), "does not carry on")
+
+
+@pytest.mark.usefixtures("shelf")
+def test_a_second_seal_of_one_number_is_refused() -> None:
+    with transaction.atomic():
+        insert("base_seal", _next_seal())
+        _refused(lambda: insert("base_seal", _next_seal(digest="c" * 64)), "(?i)unique")
+        transaction.set_rollback(True)
+
+
+@pytest.mark.parametrize(
+    ("changes", "words"),
+    [
+        ({"first": 1, "last": 1}, "covers what is sealed"),
+        ({"first": 2, "last": 3}, "covers what is sealed"),
+        ({"first": 1, "last": 9}, "covers what is sealed"),
+    ],
+    ids=str,
+)
+def test_a_run_covers_only_what_is_new(shelf: Shelf, changes: dict[str, Any], words: str) -> None:
+    """Lines 1 and 2 of bottle A are sealed."""
+    row = {
+        "seal_id": 2, "book": "stock", "subject": shelf.bottle("A").pk, "first": 3, "last": 3,
+        "digest": "a" * 64, **changes,
+    }  # fmt: skip
+    row["marks"] = "0" * 8 * (row["last"] - row["first"] + 1)
+    with transaction.atomic():
+        insert("base_seal", _next_seal())
+        _refused(lambda: insert("base_sealrun", row), words)
+        insert("base_sealrun", {**row, "seal_id": 2, "first": 3, "last": 3, "marks": "0" * 8})
+        transaction.set_rollback(True)

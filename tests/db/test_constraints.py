@@ -12,6 +12,7 @@ from django.db import DataError, IntegrityError, connection, models, transaction
 
 from inventory.models import Bottle, Form, Hold, Movement, Place, Reservation, Substance
 from labplan.base.models import Person, Project
+from labplan.base.seal import seal_new
 from labplan.procedures.models import Document, Procedure
 from tests.db.bench import ON_POSTGRESQL, drop_trigger, insert, make_shelf, rows_of
 
@@ -34,6 +35,9 @@ def _stock() -> None:
     Document.objects.create(
         procedure=Procedure.objects.get(), attempt=1, body=b"{}", sha256="0" * 64, created_at=NOON
     )
+    seal_new()
+    for table in ("base_seal", "base_sealrun"):
+        drop_trigger(table, f"{table}_carries_on")
 
 
 def _key(model: type[models.Model], **where: Any) -> int:
@@ -76,7 +80,10 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "base_membership": _membership_row,
     "base_apitoken": lambda code: {
         "person_id": _key(Person), "name": "n", "digest": code, "scope": "read",
-        "created_at": NOON, "expires_at": NOON,
+        "created_at": NOON, "expires_at": NOON, "by_login": False,
+    },
+    "base_logincount": lambda code: {
+        "kind": "code", "digest": code, "quarter": 1, "attempts": 1,
     },
     "base_rememberedanswer": lambda code: {
         "person_id": _key(Person), "route": "r", "key": code, "fingerprint": "f", "status": 202,
@@ -85,6 +92,14 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "base_outboxmessage": lambda code: {
         "topic": "t", "queue": "q", "payload": "{}", "request_id": "", "state": "new", "sends": 0,
         "attempts": 0, "created_at": NOON, "available_at": NOON, "last_error": "",
+    },
+    "base_seal": lambda code: {
+        "number": 2, "sealed_at": NOON, "key_print": "p", "before": "0" * 64, "runs": 3, "rows": 3,
+        "digest": "1" * 64,
+    },
+    "base_sealrun": lambda code: {
+        "seal_id": 1, "book": code, "subject": 0, "first": 5, "last": 6, "marks": "m" * 16,
+        "digest": "1" * 64,
     },
     "base_outboxpause": lambda code: {"id": 1, "since": NOON, "reason": "r"},
     "inventory_place": lambda code: {"code": code, "name": "n", "is_locked": False},
@@ -137,7 +152,7 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     },
     "procedures_document": lambda code: {
         "procedure_id": _key(Procedure), "attempt": 2, "body": b"{}", "sha256": "0" * 64,
-        "created_at": NOON,
+        "seal": "", "created_at": NOON,
     },
 }  # fmt: skip
 TABLES = tuple(SOUND_ROWS)
@@ -176,7 +191,29 @@ CHECKS = [
     Attack("person_site_role_known", "base_person", {"site_role": "root"}),
     Attack("membership_role_known", "base_membership", {"role": "owner"}),
     Attack("api_token_scope_known", "base_apitoken", {"scope": "reed"}),
+    Attack("login_count_kind_known", "base_logincount", {"kind": "name"}),
+    Attack("login_count_quarter_whole", "base_logincount", {"quarter": -1}),
+    Attack("login_count_attempts_whole", "base_logincount", {"attempts": -1}),
     Attack("outbox_state_known", "base_outboxmessage", {"state": "lost"}),
+    Attack("seal_number_whole", "base_seal", {"number": 0}),
+    Attack("seal_runs_whole", "base_seal", {"runs": 0}),
+    Attack("seal_rows_whole", "base_seal", {"rows": 0}, ("seal_rows_fill_runs",)),
+    Attack("seal_rows_fill_runs", "base_seal", {"rows": 2}),
+    *[
+        Attack(f"seal_{column}_long", "base_seal", {column: value})
+        for column in ("before", "digest") for value in ("", "1" * 63)
+    ],
+    Attack("seal_run_subject_whole", "base_sealrun", {"subject": -1}),
+    Attack("seal_run_first_whole", "base_sealrun", {"first": 0, "last": 1}),
+    Attack(
+        "seal_run_last_whole", "base_sealrun", {"first": -1, "last": 0},
+        ("seal_run_first_whole",),
+    ),
+    Attack(
+        "seal_run_has_rows", "base_sealrun", {"first": 7, "marks": ""}, ("seal_run_row_marked",)
+    ),
+    Attack("seal_run_digest_long", "base_sealrun", {"digest": "1" * 63}),
+    *[Attack("seal_run_row_marked", "base_sealrun", {"marks": "m" * n}) for n in (0, 15, 17, 24)],
     Attack("outbox_pause_is_one", "base_outboxpause", {"id": 2}),
     Attack("substance_kind_known", "inventory_substance", {"kind": "wish"}),
     Attack("substance_defined_has_structure", "inventory_substance", {"inchikey": None}),
@@ -321,6 +358,8 @@ CHECKS = [
 UNIQUES = {
     "membership_once": ("base_membership", ("person_id", "project_id")),
     "remembered_answer_once": ("base_rememberedanswer", ("person_id", "route", "key")),
+    "login_count_once": ("base_logincount", ("kind", "digest", "quarter")),
+    "seal_run_once": ("base_sealrun", ("book", "subject", "last")),
     "form_once": ("inventory_form", ("substance_id", "label")),
     "hold_line_once": ("inventory_hold", ("reservation_id", "line")),
     "movement_seq_once": (MOVEMENT, ("bottle_id", "seq")),
@@ -340,6 +379,11 @@ UNIQUES = {
 }
 
 WHOLE_COLUMNS = [
+    ("login_count_quarter_whole", "base_logincount", "quarter"),
+    ("login_count_attempts_whole", "base_logincount", "attempts"),
+    *[(f"seal_{column}_whole", "base_seal", column) for column in ("number", "runs", "rows")],
+    *[(f"seal_run_{column}_whole", "base_sealrun", column)
+      for column in ("subject", "first", "last")],
     ("bottle_heel_whole", "inventory_bottle", "heel"),
     ("bottle_least_whole", "inventory_bottle", "least_dispensed"),
     ("bottle_tare_whole", "inventory_bottle", "tare_ug"),

@@ -31,6 +31,8 @@ CODES = {
     "too_large": 413,
     "unknown_field": 400,
     "not_authenticated": 401,
+    "login_failed": 401,
+    "too_many_attempts": 429,
     "not_allowed": 403,
     "not_found": 404,
     "invalid_value": 422,

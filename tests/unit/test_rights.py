@@ -119,6 +119,23 @@ def test_require_refuses_exactly_what_may_denies(operation: str) -> None:
                 require(somebody, operation, project_id=OURS)
 
 
+# What concerns only who asks: no role is needed, and a token of scope read only looks.
+OWN = {"token.view": ("read", "write"), "token.make": ("write",), "token.revoke": ("write",)}
+
+
+def test_everybody_has_his_own_tokens_whatever_role_he_has() -> None:
+    assert set(OWN) == set(rights.OWN_OPERATIONS)
+    for operation, scopes in OWN.items():
+        for role, scope, site_role in MATRIX:
+            somebody = actor(role, scope, site_role)
+            assert may(somebody, operation) is (scope in scopes)
+            if scope in scopes:
+                require(somebody, operation)
+            else:
+                with pytest.raises(NotAllowed, match="This token may only read"):
+                    require(somebody, operation)
+
+
 def test_a_refusal_says_what_is_missing() -> None:
     with pytest.raises(NotAllowed, match="needs one of these roles in the project: chemist, lead"):
         require(actor("viewer", "write", "none"), "procedure.request", project_id=OURS)

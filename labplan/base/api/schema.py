@@ -12,22 +12,27 @@ from labplan.base.api.describe import (
     ASKED_DECIMAL,
     PROBLEM,
     answer,
+    answered,
     component,
     flag,
     in_path,
+    instant,
     list_of,
     list_operation,
     operation,
+    or_null,
     record,
     registered_components,
     text,
     whole,
     word,
 )
+from labplan.base.api.token_bodies import LoginSerializer, TokenSerializer
 from labplan.base.fields import QuantityField
-from labplan.base.models import MembershipRole
+from labplan.base.models import ApiTokenScope, MembershipRole
 
 TAG = "Projects"
+TOKENS_TAG = "Tokens"
 ABOUT_TAG = "About this API"
 CODE = text("Code of the project.", "PROBES-03")
 _PROJECT = {
@@ -77,7 +82,8 @@ _PROBLEM_RESPONSE = {
     "headers": {
         "Allow": {"description": "The methods served here.", "schema": {"type": "string"}},
         "Retry-After": {
-            "description": "Seconds to wait, where trying again helps (busy, request_running).",
+            "description": "Seconds to wait, where trying again helps (busy, request_running, "
+            "too_many_attempts).",
             "schema": {"type": "string"},
         },
         "WWW-Authenticate": {
@@ -88,6 +94,57 @@ _PROBLEM_RESPONSE = {
     "content": {PROBLEM: {"schema": {"$ref": "#/components/schemas/Problem"}}},
 }
 
+_TOKEN = {
+    "id": whole("Number of the token.", 7, minimum=1),
+    "name": text("What it is for.", "laptop"),
+    "scope": word("What it may do.", ApiTokenScope.values),
+    "created_at": instant("When it was made, in UTC."),
+    "expires_at": instant("When it ends, in UTC."),
+    "last_used_at": or_null(instant("When it was used last, to the hour; null if never.")),
+    "revoked_at": or_null(instant("When it was revoked; null while it is good.")),
+    "is_current": flag("Whether it is the one this request came with.", example=False),
+}
+TOKEN = component("Token", "A token of yours, without its text.", _TOKEN)
+NEW_TOKEN = component(
+    "NewToken",
+    "A new token. Its text is shown this once and cannot be read again.",
+    {**_TOKEN, "token": text("To be sent as 'Authorization: Bearer ...'.", "lpt_...")},
+)
+_NOT_STORED = answered("Cache-Control", "The text of a token is to lie in no cache.", 201)
+token_list = extend_schema_view(
+    get=list_operation(
+        "token-list", TOKENS_TAG, "List your tokens", TOKEN,
+        description="Your own, newest first, those that have ended included.",
+    ),
+    post=operation(
+        "token-make", TOKENS_TAG, "Make a token of your own",
+        {201: answer(NEW_TOKEN, "Made; note the text now.")},
+        description="Needs a token of scope write. It takes no Idempotency-Key: answers to "
+        "requests with a key are stored, and the text of a token never is. Sent twice it makes "
+        "two tokens; revoke the one you do not know.",
+        parameters=[_NOT_STORED], request=TokenSerializer, example={"name": "balance", "days": 30},
+    ),
+)  # fmt: skip
+token_revoke = extend_schema_view(
+    post=operation(
+        "token-revoke", TOKENS_TAG, "Revoke a token of your own",
+        {200: answer(TOKEN, "Ended, from the next request on.")},
+        description="At once and for good; a repeat changes nothing. A token of scope read can "
+        "end itself only.",
+        parameters=[in_path("token_id", "Number of the token.", type="integer")],
+    )
+)  # fmt: skip
+login = extend_schema_view(
+    post=operation(
+        "login", TOKENS_TAG, "Log in with a password",
+        {201: answer(NEW_TOKEN, "A token for 12 hours.")},
+        description="Needs no token. After 5 failures for a code or 30 from an address within a "
+        "quarter of an hour it answers 429, with Retry-After, whether the password is right or "
+        "not.",
+        parameters=[_NOT_STORED], request=LoginSerializer,
+        example={"person": "KIRA", "password": "not this one"},
+    )
+)  # fmt: skip
 project_list = extend_schema_view(
     get=list_operation(
         "project-list", TAG, "List your projects", PROJECT,

@@ -20,6 +20,7 @@ class Migration(migrations.Migration):
                 ('attempt', models.PositiveSmallIntegerField()),
                 ('body', models.BinaryField()),
                 ('sha256', models.CharField(max_length=64)),
+                ('seal', models.CharField(blank=True, max_length=40)),
                 ('created_at', models.DateTimeField()),
             ],
         ),

@@ -22,6 +22,7 @@ from labplan.base.events import record_event
 from labplan.base.models import Person
 from labplan.base.problems import is_lock_timeout
 from labplan.base.rights import Actor, actor_for
+from labplan.base.seal import newest_printed
 from labplan.planning.values import Charge
 from labplan.procedures import life, progress
 from labplan.procedures.engine import PlannedOn, Scale, Wishes, plan_on_shelf, read_target
@@ -268,7 +269,7 @@ def _hold_line(charge: Charge) -> HoldLine:
 def _store_document(attempt: Attempt, body: bytes) -> Document:
     return Document.objects.create(
         procedure_id=attempt.procedure_id, attempt=attempt.number, body=body,
-        sha256=sha256_hex(body), created_at=clock.now(),
+        sha256=sha256_hex(body), seal=newest_printed(), created_at=clock.now(),
     )  # fmt: skip
 
 

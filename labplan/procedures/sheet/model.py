@@ -38,6 +38,7 @@ class Heading:
     requested_by_name: str
     scale: str
     sha256: str
+    seal: str = ""  # the newest when the document was stored
 
 
 def sheet_view(document: dict[str, Any], heading: Heading) -> dict[str, Any]:
@@ -101,6 +102,7 @@ def _facts(document: dict[str, Any], heading: Heading) -> list[dict[str, str]]:
         ),
         ("InChIKey", document["target"]["inchikey"], "code"),
         ("Document", heading.sha256, "code"),
+        ("Newest seal", heading.seal or "none yet", "code" if heading.seal else ""),
     )
     return [{"label": label, "value": value, "style": style} for label, value, style in facts]
 

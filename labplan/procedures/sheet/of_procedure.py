@@ -21,5 +21,6 @@ def view_of(procedure: Procedure) -> dict[str, Any]:
         requested_by_name=name.full_name if name else "",
         scale=scale_text(procedure.product_mass_mg, procedure.acceptor_amount_mmol),
         sha256=procedure.document.sha256,
+        seal=procedure.document.seal,
     )
     return sheet_view(json.loads(bytes(procedure.document.body)), heading)

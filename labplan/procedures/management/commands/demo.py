@@ -12,6 +12,7 @@ from django.db import connection
 from rich.console import Console
 
 from labplan.base import clock
+from labplan.base.seal import seal_new
 from labplan.base.tokens import create_token
 from labplan.procedures.demo import scenario as demo_scenario
 from labplan.procedures.demo.live import ApiClient, running_relay, running_server
@@ -54,6 +55,7 @@ def _load(console: Console, scenario: dict[str, Any]) -> None:
     with console.status("Loading the stock"):
         demo_scenario.load_people(scenario)
         result = demo_scenario.load_stock(scenario)
+        seal_new()
     console.print(
         f"{scenario['group']} (invented): {result.bottles} bottles in {result.places} places, "
         f"as of {clock.today()}."
