@@ -46,7 +46,8 @@ def hold_lines(
     require(actor, operation, project_id=project_id)
     bottles = _bottles_by_code(lines)
     check_quotas(
-        project_id=project_id, claims=[(bottles[line.bottle_code], line.amount) for line in lines]
+        project_id=project_id,
+        claims=[(bottles[line.bottle_code].pk, line.amount) for line in lines],
     )
     reservation = Reservation.objects.create(
         code=uuid.uuid4(), project_id=project_id, actor_code=actor.code, purpose=purpose,
@@ -69,11 +70,13 @@ def hold_lines(
 
 
 def release_reservation(
-    *, actor: Actor, code: uuid.UUID, reason: str, operation_id: uuid.UUID | None = None
-) -> None:
+    *, actor: Actor, code: uuid.UUID, reason: str, operation_id: uuid.UUID | None = None,
+    must_be_open: bool = True,
+) -> None:  # fmt: skip
     """Give back what a reservation still holds, in the caller's open transaction.
 
-    Raises NotFound, NotAllowed, and StateForbids when it is closed already.
+    Raises NotFound, NotAllowed, and StateForbids when it is closed already; without
+    `must_be_open` a closed one is left as it is.
     """
     locks.require_transaction()
     reservation = Reservation.objects.select_for_update(no_key=True).filter(code=code).first()
@@ -81,7 +84,9 @@ def release_reservation(
         raise NotFound("There is no reservation with this code.")
     require(actor, "reservation.release", project_id=reservation.project_id)
     if reservation.state != Reservation.State.OPEN:
-        raise StateForbids("This reservation is closed; it holds nothing any more.")
+        if must_be_open:
+            raise StateForbids("This reservation is closed; it holds nothing any more.")
+        return
     _give_all_back(
         reservation, actor=actor, reason=reason, kind="release", end=Hold.State.RELEASED,
         operation_id=operation_id,
@@ -128,8 +133,7 @@ def keep_still(bottle_codes: Sequence[str]) -> None:
 
 def _bottles_by_code(lines: Sequence[HoldLine]) -> dict[str, Bottle]:
     codes = {line.bottle_code for line in lines}
-    found = Bottle.objects.filter(code__in=codes).select_related("form__substance")
-    bottles = {bottle.code: bottle for bottle in found}
+    bottles = {bottle.code: bottle for bottle in Bottle.objects.filter(code__in=codes)}
     missing = sorted(codes - bottles.keys())
     if missing:
         raise NotFound(f"There is no bottle {', '.join(missing)}.")

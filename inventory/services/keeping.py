@@ -9,6 +9,7 @@ from django.db import transaction
 from inventory import locks
 from inventory.models import Hold, Reservation
 from inventory.services.holds import release_reservation
+from inventory.services.notices import lost_hold, tell_the_app
 from inventory.services.once import write_once
 from inventory.services.reservations import day_within_reach, invalid
 from labplan.base.errors import NotFound, StateForbids
@@ -28,7 +29,7 @@ def give_back(
     *, actor: Actor, code: uuid.UUID, reason: str, check_version: VersionCheck,
     operation_id: uuid.UUID | None = None, once: Once | None = None,
 ) -> Reservation:  # fmt: skip
-    """Release what a reservation still holds.
+    """Release what a reservation still holds; the app that made it is told.
 
     Raises NotFound, NotAllowed, StateForbids, and what `check_version` raises on the locked row.
     Safe to repeat with the same operation id or claim.
@@ -37,7 +38,16 @@ def give_back(
     def body() -> Reservation:
         reservation = _locked(actor, code, "reservation.release")
         check_version(reservation)
+        open_holds = reservation.holds.filter(state=Hold.State.OPEN).select_related("bottle")
+        holds = list(open_holds.order_by("line"))
         release_reservation(actor=actor, code=code, reason=reason, operation_id=operation_id)
+        tell_the_app(
+            code,
+            [
+                lost_hold(hold, hold.amount - hold.used - hold.given_back, "it was given back")
+                for hold in holds
+            ],
+        )
         reservation.refresh_from_db(fields=["state", "version"])
         return reservation
 

@@ -29,24 +29,18 @@ class CancelledHold:
     purpose: str
     line: int
     bottle_code: str
-    amount: int
-    amount_text: str
     why: str
+    amount_text: str
+    message: dict[str, Any]
 
     @classmethod
     def of(cls, hold: Hold, amount: int, why: str) -> "CancelledHold":
         reservation = hold.reservation
         return cls(
             hold.pk, reservation.code, reservation.actor_code, reservation.project_id,
-            reservation.purpose, hold.line, hold.bottle.code, amount,
-            in_words(hold.bottle.measured_by, amount), why,
+            reservation.purpose, hold.line, hold.bottle.code, why,
+            in_words(hold.bottle.measured_by, amount), lost_hold(hold, amount, why),
         )  # fmt: skip
-
-    def as_message(self) -> dict[str, Any]:
-        return {
-            "line": self.line, "bottle": self.bottle_code, "amount": self.amount_text,
-            "why": self.why,
-        }  # fmt: skip
 
 
 def tell_who_is_hit(cancelled: Sequence[CancelledHold]) -> None:
@@ -63,14 +57,24 @@ def tell_who_is_hit(cancelled: Sequence[CancelledHold]) -> None:
         )
         for hold in cancelled
     )  # fmt: skip
-    by_reservation: dict[uuid.UUID, list[CancelledHold]] = defaultdict(list)
+    by_reservation: dict[uuid.UUID, list[dict[str, Any]]] = defaultdict(list)
     for hold in cancelled:
-        by_reservation[hold.reservation_code].append(hold)
+        by_reservation[hold.reservation_code].append(hold.message)
     for code, holds in by_reservation.items():
-        outbox.enqueue(
-            HOLDS_CANCELLED_TOPIC,
-            {"reservation": str(code), "holds": [hold.as_message() for hold in holds]},
-        )
+        tell_the_app(code, holds)
+
+
+def tell_the_app(reservation_code: uuid.UUID, holds: list[dict[str, Any]]) -> None:
+    """Leave a message for whichever app made the reservation, in the caller's transaction."""
+    outbox.enqueue(HOLDS_CANCELLED_TOPIC, {"reservation": str(reservation_code), "holds": holds})
+
+
+def lost_hold(hold: Hold, amount: int, why: str) -> dict[str, Any]:
+    """One hold that is gone, as a message says it."""
+    return {
+        "line": hold.line, "bottle": hold.bottle.code,
+        "amount": in_words(hold.bottle.measured_by, amount), "why": why,
+    }  # fmt: skip
 
 
 def mark_notice_read(*, actor: Actor, notice_id: int, once: Once | None = None) -> Notice:

@@ -68,3 +68,23 @@ def test_a_reservation_of_nobody_s_procedure_is_left_alone(lab: Laboratory, plan
     lab.run_outbox()
     assert Procedure.objects.get().version == version
     assert set(OutboxMessage.objects.values_list("state", flat=True)) == {"done"}
+
+
+def test_what_is_given_back_by_hand_is_shown_too_and_the_rest_can_be_cancelled(
+    lab: Laboratory, planned: str
+) -> None:
+    mira = lab.client()
+    shown = mira.get(planned).json()
+    path = f"/api/v1/reservations/{shown['reservation']}/"
+    held = mira.get(path).json()["holds"]
+    assert mira.post(path + "release/", {"reason": "oops"}, If_Match="*").status_code == 200
+    lab.run_outbox()
+    after = mira.get(planned)
+    assert after.json()["state"] == "planned"
+    lost = after.json()["lost_holds"]
+    assert [hold["bottle"] for hold in lost] == [hold["bottle"] for hold in held]
+    assert {hold["why"] for hold in lost} == {"it was given back"}
+    before = lab.counts()
+    cancelled = mira.post(planned + "cancel/", If_Match=after["ETag"])
+    assert (cancelled.status_code, cancelled.json()["state"]) == (200, "cancelled")
+    assert lab.counts() == before

@@ -110,6 +110,7 @@ class Model:
                 made[hold.bottle].append(("release", 0, -hold.left, hold.key))
                 hold.given_back += hold.left
                 hold.state = "released"
+        self.messages += 1
         return dict(made)
 
     # ---- facts ----

@@ -1,6 +1,6 @@
 """Random commands from several processes that are killed as they go, replayed and compared.
 
-LABPLAN_SOAK=1 runs a million commands; LABPLAN_SIMULATION_SEED repeats a run's commands (how the
+LABPLAN_SOAK=1 runs a million commands; LABPLAN_SEED repeats a run's commands (how the
 processes interleave is up to the machine).
 """
 
@@ -49,10 +49,10 @@ def run_nursery(folder: Path, seed: int) -> dict[str, Any]:
 def test_the_stock_is_what_the_model_says(
     tmp_path: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    seed = int(os.environ.get("LABPLAN_SIMULATION_SEED") or secrets.randbelow(10**9))
+    seed = int(os.environ.get("LABPLAN_SEED") or secrets.randbelow(10**9))
     make_shelf(**{f"B{number:02d}": 5_000_000 for number in range(BOTTLES)})
     Place.objects.create(code="S2", name="Another shelf")
-    told = f"seed {seed}: set LABPLAN_SIMULATION_SEED={seed} to draw the same commands"
+    told = f"seed {seed}: set LABPLAN_SEED={seed} to draw the same commands"
     try:
         said = run_nursery(tmp_path, seed)
         found = replay.check(tmp_path)

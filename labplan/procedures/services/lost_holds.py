@@ -10,6 +10,7 @@ from labplan.base import outbox
 from labplan.base.events import record_event
 from labplan.procedures import life
 from labplan.procedures.models import Procedure
+from labplan.procedures.services.changes import announce_change
 
 # Before the flask is charged it matters what is held; afterwards the actuals count.
 _HOLDING = (life.PLANNED, life.APPROVED, life.RUNNING)
@@ -44,3 +45,4 @@ def _add(procedure: Procedure, holds: list[dict[str, Any]]) -> None:
         actor_code=procedure.requested_by, kind="procedure.holds_lost",
         subject=f"procedure {procedure.code}", after=new,
     )  # fmt: skip
+    announce_change(procedure)
