@@ -15,7 +15,7 @@ from django.test import override_settings
 
 from inventory.models import Movement
 from inventory.services.verify import verify_ledger
-from labplan.base import clock
+from labplan.base import clock, housekeeping
 from labplan.base.events import record_event
 from labplan.base.models import Event, Seal, SealRun
 from labplan.base.seal import SealKeyChanged, newest_printed, seal_new, writing
@@ -80,6 +80,12 @@ def test_the_report_counts_what_is_sealed_and_what_is_not_yet(shelf: Shelf) -> N
 def test_with_nothing_new_no_seal_is_made() -> None:
     assert seal_new() == 0
     assert (Seal.objects.count(), newest_printed()) == (0, "")
+
+
+def test_the_scheduler_seals_every_minute(shelf: Shelf) -> None:
+    duty = housekeeping.duties()["base.seal"]
+    assert duty.every == timedelta(minutes=1)
+    assert [housekeeping.run_duty("base.seal") for _ in range(2)] == [3, 0]
 
 
 @pytest.mark.usefixtures("db")

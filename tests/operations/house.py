@@ -8,7 +8,7 @@ import secrets
 import shutil
 import threading
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from decimal import Decimal
@@ -21,8 +21,11 @@ from django.db import connection, connections
 
 from inventory.models import Bottle, Movement
 from labplan.base import clock, outbox
+from labplan.base.errors import LoginFailed
+from labplan.base.login import log_in
 from labplan.base.models import OutboxMessage, Person, RememberedAnswer
 from labplan.base.rights import actor_for
+from labplan.base.seal import seal_new
 from labplan.base.tokens import create_token
 from labplan.operations.elsewhere import sqlite_url, working_on
 from labplan.procedures.models import Document, Procedure
@@ -90,7 +93,10 @@ def fill() -> None:
         person=Person.objects.get(code="MIRA"), route="x", key="k" * 8, fingerprint="0" * 64,
         status=201, body='{"name": "β-D-Glucose\\n\\t\\\\"}', created_at=clock.now(),
     )  # fmt: skip
+    with suppress(LoginFailed):
+        log_in(person_code="MIRA", password="not this one", address="192.0.2.1")
     for _ in range(2):
+        seal_new()  # so that the documents name a seal
         request_one()
         deliver_all()
     for _ in range(2):

@@ -18,9 +18,10 @@ from django.db import connection, transaction
 from inventory.models import Bottle, Movement, Place
 from inventory.services import BottleReceipt, receive_bottles
 from inventory.services.verify import verify_ledger
-from labplan.base import outbox
+from labplan.base import append_only, outbox
 from labplan.base.models import OutboxMessage, Person
 from labplan.base.rights import actor_for
+from labplan.base.seal import newest_printed, seal_new
 from labplan.operations import moving
 from labplan.operations.elsewhere import open_database
 from labplan.operations.state import tables_with_rows
@@ -125,6 +126,22 @@ def test_books_documents_and_triggers_are_in_force_on_the_server(
             books.setdefault(bottle, []).append(seq)
         assert len(books) == 66
         assert all(seqs == list(range(1, len(seqs) + 1)) for seqs in books.values())
+
+
+def test_the_seals_hold_at_the_server_and_go_on_there(laptop: House, server: House) -> None:
+    laptop.run("move_up", server.url)
+    with laptop.entered():
+        printed, sealed = newest_printed(), verify_ledger()
+    with server.entered():
+        moved = verify_ledger(newest=printed)
+        assert (moved.faults, moved.seals, moved.sealed_rows) == ((), 2, sealed.sealed_rows)
+        assert seal_new() == moved.unsealed_rows > 0
+        assert verify_ledger(newest=printed).faults == ()
+        assert newest_printed().startswith("3-")
+        with transaction.atomic(), append_only.lifted(connection), connection.cursor() as cursor:
+            cursor.execute("UPDATE inventory_movement SET reason = 'x' WHERE id = 1")
+        [fault] = verify_ledger().faults
+        assert fault.detail == "is not as sealed (seal 1)"
 
 
 def test_work_goes_on_at_the_server_with_numbers_never_used_before(
