@@ -4,6 +4,8 @@ from drf_spectacular.utils import extend_schema_view
 
 from inventory.models import Bottle, Hold, Movement, Reservation, Substance
 from labplan.base.api.describe import (
+    IF_NONE_MATCH,
+    UNCHANGED,
     Schema,
     about,
     answer,
@@ -11,6 +13,7 @@ from labplan.base.api.describe import (
     component,
     day,
     decimal,
+    etag,
     flag,
     in_path,
     instant,
@@ -25,6 +28,8 @@ from labplan.base.api.describe import (
 )
 
 TAG = "Stock"
+DAY = {"type": "string", "format": "date"}
+YES_OR_NO = {"type": "string", "enum": ["true", "false"]}
 HOLDS_TAG = "Reservations"
 SUBSTANCE_CODE = text("Code of the substance.", "1-octanol")
 BOTTLE_CODE = text("Code of the bottle.", "GPA-1")
@@ -43,7 +48,7 @@ def amounts(prefix: str, what: str, example: str = "2500") -> dict[str, Schema]:
     }
 
 
-def _with_amounts(
+def with_amounts(
     name: str, description: str, properties: dict[str, Schema], groups: dict[str, dict[str, Schema]]
 ) -> Schema:
     """A component in which each group of amounts appears in exactly one of its forms."""
@@ -72,35 +77,49 @@ SUBSTANCE = component(
         "density_g_per_ml": DENSITY,
         "density_temperature_c": or_null(decimal("Temperature of the density [°C].", "20")),
         "density_source": or_null(text("Where the density was taken from.")),
+        "minimum": or_null(
+            with_amounts(
+                "Minimum",
+                "The stockroom buys when less than this can be used.",
+                {},
+                {"least": amounts("", "At least")},
+            )
+        ),
     },
 )
-BOTTLE = _with_amounts(
+BOTTLE_FIELDS = {
+    "code": BOTTLE_CODE,
+    "substance": SUBSTANCE_CODE,
+    "name": text("Name of the substance.", "1-octanol"),
+    "form": text("How the substance comes: neat, hydrate, solution, salt ...", "neat"),
+    "measured_by": word("How amounts of it are measured.", Bottle.MeasuredBy.values),
+    "assay_pct": or_null(decimal("Assay [%]; null when not known.", "99.0")),
+    "assay_of": text("What the assay is of.", "as_is"),
+    "assay_kind": word("How the assay was found.", Bottle.AssayKind.values),
+    "density_g_per_ml": DENSITY,
+    "stabiliser": text(
+        "Name of the stabiliser, or: none, unknown, not_applicable.", "not_applicable"
+    ),
+    "place": text("Code of the place it stands at.", "CAB-A"),
+    "lot": or_null(text("Lot on the label.", "L-2207")),
+    "received_on": day("When it came."),
+    "opened_on": or_null(day("When it was opened; null when it is still sealed.")),
+    "expires_on": or_null(day("Good to the end of this day, in the laboratory's time zone.")),
+    "status": word("Whether it may be used.", Bottle.Status.values),
+    "tare_mg": or_null(decimal("The empty bottle [mg]; null until it was weighed.", "96500")),
+    "parent": or_null(text("Code of the bottle it was filled from.", "DCM-1")),
+    "preparation": or_null(text("What was made of it in the house.", "dried over 3A sieves")),
+}
+BOTTLE_GROUPS = {
+    "on_hand": amounts("on_hand_", "What is in it by the book"),
+    "usable": amounts("usable_", "What is free: on hand less held less what cannot be got out"),
+    "least": amounts("least_dispensed_", "Less than this is never set aside or decanted", "1"),
+}
+BOTTLE = with_amounts(
     "Bottle",
     "One physical bottle, with what is on hand and what is free; not who holds the rest.",
-    {
-        "code": BOTTLE_CODE,
-        "substance": SUBSTANCE_CODE,
-        "name": text("Name of the substance.", "1-octanol"),
-        "form": text("How the substance comes: neat, hydrate, solution, salt ...", "neat"),
-        "measured_by": word("How amounts of it are measured.", Bottle.MeasuredBy.values),
-        "assay_pct": or_null(decimal("Assay [%]; null when not known.", "99.0")),
-        "assay_of": text("What the assay is of.", "as_is"),
-        "assay_kind": word("How the assay was found.", Bottle.AssayKind.values),
-        "density_g_per_ml": DENSITY,
-        "stabiliser": text(
-            "Name of the stabiliser, or: none, unknown, not_applicable.", "not_applicable"
-        ),
-        "place": text("Code of the place it stands at.", "CAB-A"),
-        "lot": or_null(text("Lot on the label.", "L-2207")),
-        "received_on": day("When it came."),
-        "opened_on": or_null(day("When it was opened; null when it is still sealed.")),
-        "expires_on": or_null(day("Good to the end of this day, in the laboratory's time zone.")),
-        "status": word("Whether it may be used.", Bottle.Status.values),
-    },
-    {
-        "on_hand": amounts("on_hand_", "What is in it by the book"),
-        "usable": amounts("usable_", "What is free: on hand less held less what cannot be got out"),
-    },
+    BOTTLE_FIELDS,
+    BOTTLE_GROUPS,
 )
 PLACE = component(
     "Place",
@@ -112,13 +131,15 @@ PLACE = component(
         "temperature_c": or_null(decimal("Its temperature [°C].", "4")),
     },
 )
-MOVEMENT = _with_amounts(
+MOVEMENT = with_amounts(
     "Movement",
     "One line of a bottle's book. Lines are never changed.",
     {
         "seq": whole("Number of the line, from 1 without gaps.", 2, minimum=1),
         "kind": word("What happened.", Movement.Kind.values, "hold"),
         "entered": text("The amount as it was typed or weighed, with its unit.", "2.5 g"),
+        "density_g_per_ml": or_null(decimal("Density it was converted with [g/mL].", "1.326")),
+        "density_source": or_null(text("Where that density is from.", "label at 20 °C")),
         "amount_mmol": or_null(decimal("Amount of the pure substance [mmol].", "6.4")),
         "operation": uuid("Shared by all lines that were written together."),
         "project": or_null(PROJECT_CODE),
@@ -134,7 +155,7 @@ MOVEMENT = _with_amounts(
         "held_after": amounts("held_after_", "Held after this line"),
     },
 )
-HOLD = _with_amounts(
+HOLD = with_amounts(
     "Hold",
     "An amount of one bottle set aside.",
     {
@@ -148,19 +169,19 @@ HOLD = _with_amounts(
         "given_back": amounts("given_back_", "Given back of it", "0"),
     },
 )
+RESERVATION_FIELDS = {
+    "code": uuid("Code of the reservation."),
+    "project": PROJECT_CODE,
+    "actor": about(PERSON_CODE, "Code of the person it was made for."),
+    "purpose": text("What it is for.", "procedure P-7K2M4Q9X"),
+    "state": word("Open while it holds anything.", Reservation.State.values),
+    "is_firm": flag("Approved: given up last when a bottle holds less than was thought."),
+    "expires_on": day("Set aside until this day."),
+    "created_at": instant("When it was made, in UTC."),
+    "holds": list_of(HOLD, "By line."),
+}
 RESERVATION = component(
-    "Reservation",
-    "A set of holds that stands or falls together.",
-    {
-        "code": uuid("Code of the reservation."),
-        "project": PROJECT_CODE,
-        "actor": about(PERSON_CODE, "Code of the person it was made for."),
-        "purpose": text("What it is for.", "procedure P-7K2M4Q9X"),
-        "state": word("Open while it holds anything.", Reservation.State.values),
-        "expires_on": day("Set aside until this day; past it, given back by hand so far."),
-        "created_at": instant("When it was made, in UTC."),
-        "holds": list_of(HOLD, "By line."),
-    },
+    "Reservation", "A set of holds that stands or falls together.", RESERVATION_FIELDS
 )
 
 substance_list = extend_schema_view(
@@ -169,13 +190,15 @@ substance_list = extend_schema_view(
         parameters=[
             asked("name", "Part of the name; case, accents and Greek letters do not matter."),
             asked("cas", "The whole CAS registry number."),
+            asked("under_minimum", "true: only those of which there is too little.", YES_OR_NO),
         ],
     )
 )  # fmt: skip
 substance_detail = extend_schema_view(
     get=operation(
-        "substance-detail", TAG, "Look at a substance", {200: answer(SUBSTANCE, "The substance.")},
-        parameters=[in_path("code", "Code of the substance.")],
+        "substance-detail", TAG, "Look at a substance",
+        {200: answer(SUBSTANCE, "The substance."), 304: UNCHANGED},
+        parameters=[in_path("code", "Code of the substance."), IF_NONE_MATCH, etag(200, 304)],
     )
 )  # fmt: skip
 bottle_list = extend_schema_view(
@@ -186,13 +209,19 @@ bottle_list = extend_schema_view(
             asked("substance", "Code of the substance."),
             asked("place", "Code of the place."),
             asked("status", "Only these.", {"type": "string", "enum": Bottle.Status.values}),
+            asked("expires_from", "Those that expire on this day or later.", DAY),
+            asked("expires_until", "Those that expire on this day or earlier.", DAY),
+            asked("water_ppm_above", "Those whose last water reading is above this [ppm]."),
+            asked("under_minimum", "true: of substances of which there is too little.", YES_OR_NO),
+            asked("parent", "Those filled from this bottle, by its code."),
         ],
     )
 )  # fmt: skip
 bottle_detail = extend_schema_view(
     get=operation(
-        "bottle-detail", TAG, "Look at a bottle", {200: answer(BOTTLE, "The bottle.")},
-        parameters=[in_path("code", "Code of the bottle.")],
+        "bottle-detail", TAG, "Look at a bottle",
+        {200: answer(BOTTLE, "The bottle."), 304: UNCHANGED},
+        parameters=[in_path("code", "Code of the bottle."), IF_NONE_MATCH, etag(200, 304)],
     )
 )  # fmt: skip
 movement_list = extend_schema_view(
@@ -212,12 +241,24 @@ reservation_list = extend_schema_view(
     get=list_operation(
         "reservation-list", HOLDS_TAG, "List reservations", RESERVATION,
         description="Those of your projects, newest first.",
+        parameters=[
+            asked("project", "Code of the project."),
+            asked("state", "Only these.", {"type": "string", "enum": Reservation.State.values}),
+            asked("actor", "Those made for this person, by code."),
+            asked("bottle", "Those that still hold something of this bottle."),
+            asked("substance", "Those that still hold something of this substance."),
+            asked("expires_from", "Set aside until this day or later.", DAY),
+            asked("expires_until", "Set aside until this day or shorter.", DAY),
+        ],
     )
 )  # fmt: skip
 reservation_detail = extend_schema_view(
     get=operation(
         "reservation-detail", HOLDS_TAG, "Look at a reservation",
-        {200: answer(RESERVATION, "The reservation with its holds.")},
-        parameters=[in_path("code", "Code of the reservation.", format="uuid")],
+        {200: answer(RESERVATION, "The reservation with its holds."), 304: UNCHANGED},
+        parameters=[
+            in_path("code", "Code of the reservation.", format="uuid"), IF_NONE_MATCH,
+            etag(200, 304),
+        ],
     )
 )  # fmt: skip

@@ -7,19 +7,22 @@ from rest_framework.response import Response
 
 from inventory import selectors
 from inventory.api import schema, shapes
-from inventory.models import Bottle, Movement, Place, Reservation, Substance
-from labplan.base.errors import NotFound
+from inventory.api.filters import day_of, decimal_of, flag_of
+from inventory.models import Bottle, Place, Substance
 from labplan.base.pagination import ByCodePagination
+from labplan.base.preconditions import is_known
 from labplan.base.views import ListView, LookView
 
 
 @schema.substance_list
 class SubstanceList(ListView):
-    filters = {"name", "cas"}
+    filters = {"name", "cas", "under_minimum"}
+    choices = {"under_minimum": ("true", "false")}
     pagination = ByCodePagination
 
     def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Substance]:
-        return selectors.list_substances(actor=request.user, **wanted)
+        asked = {**wanted, "under_minimum": flag_of(wanted, "under_minimum")}
+        return selectors.list_substances(actor=request.user, **asked)
 
     def show(self, row: Substance) -> dict[str, Any]:
         return shapes.show_substance(row)
@@ -28,20 +31,31 @@ class SubstanceList(ListView):
 @schema.substance_detail
 class SubstanceDetail(LookView):
     def get(self, request: Any, code: str) -> Response:
-        found = selectors.list_substances(actor=request.user).filter(code=code).first()
-        if found is None:
-            raise NotFound(f"There is no substance {code}.")
-        return Response(shapes.show_substance(found))
+        found = selectors.get_substance(actor=request.user, code=code)
+        headers = {"ETag": shapes.substance_etag(found)}
+        if is_known(request, headers["ETag"]):
+            return Response(status=304, headers=headers)
+        return Response(shapes.show_substance(found), headers=headers)
 
 
 @schema.bottle_list
 class BottleList(ListView):
-    filters = {"substance", "place", "status"}
-    choices = {"status": Bottle.Status.values}
+    filters = {
+        "substance", "place", "status", "expires_from", "expires_until", "water_ppm_above",
+        "under_minimum", "parent",
+    }  # fmt: skip
+    choices = {"status": Bottle.Status.values, "under_minimum": ("true", "false")}
     pagination = ByCodePagination
 
     def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Bottle]:
-        return selectors.list_bottles(actor=request.user, **wanted)
+        asked = {
+            **wanted,
+            "expires_from": day_of(wanted, "expires_from"),
+            "expires_until": day_of(wanted, "expires_until"),
+            "water_ppm_above": decimal_of(wanted, "water_ppm_above"),
+            "under_minimum": flag_of(wanted, "under_minimum"),
+        }
+        return selectors.list_bottles(actor=request.user, wanted=selectors.BottleFilter(**asked))
 
     def show(self, row: Bottle) -> dict[str, Any]:
         return shapes.show_bottle(row)
@@ -50,20 +64,11 @@ class BottleList(ListView):
 @schema.bottle_detail
 class BottleDetail(LookView):
     def get(self, request: Any, code: str) -> Response:
-        return Response(shapes.show_bottle(selectors.get_bottle(actor=request.user, code=code)))
-
-
-@schema.movement_list
-class MovementList(ListView):
-    """The book of a bottle, newest line first; other projects' lines are for stock keepers."""
-
-    def rows(
-        self, request: Any, wanted: dict[str, str], code: str = "", **kwargs: Any
-    ) -> QuerySet[Movement]:
-        return selectors.movements_of(actor=request.user, bottle_code=code)
-
-    def show(self, row: Movement) -> dict[str, Any]:
-        return shapes.show_movement(row, row.bottle.measured_by)
+        found = selectors.get_bottle(actor=request.user, code=code)
+        headers = {"ETag": shapes.bottle_etag(found)}
+        if is_known(request, headers["ETag"]):
+            return Response(status=304, headers=headers)
+        return Response(shapes.show_bottle(found), headers=headers)
 
 
 @schema.place_list
@@ -75,21 +80,3 @@ class PlaceList(ListView):
 
     def show(self, row: Place) -> dict[str, Any]:
         return shapes.show_place(row)
-
-
-@schema.reservation_list
-class ReservationList(ListView):
-    def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Reservation]:
-        return selectors.visible_reservations(actor=request.user)
-
-    def show(self, row: Reservation) -> dict[str, Any]:
-        return shapes.show_reservation(row)
-
-
-@schema.reservation_detail
-class ReservationDetail(LookView):
-    def get(self, request: Any, code: Any) -> Response:
-        found = selectors.visible_reservations(actor=request.user).filter(code=code).first()
-        if found is None:
-            raise NotFound(f"There is no reservation {code}.")
-        return Response(shapes.show_reservation(found))

@@ -2,6 +2,8 @@
 
 from inventory.models.bottle import Bottle, Place, Reading
 from inventory.models.ledger import Balance, Movement
+from inventory.models.notice import Notice
+from inventory.models.quota import Quota
 from inventory.models.reservation import Hold, Reservation
 from inventory.models.substance import Form, Substance
 
@@ -11,7 +13,9 @@ __all__ = [
     "Form",
     "Hold",
     "Movement",
+    "Notice",
     "Place",
+    "Quota",
     "Reading",
     "Reservation",
     "Substance",

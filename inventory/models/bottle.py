@@ -3,6 +3,7 @@
 from django.db import models
 from django.db.models import Q
 
+from inventory.models.checks import MeasuredBy as MeasuredByChoices
 from inventory.models.checks import one_of, whole_number
 from inventory.models.substance import Form
 
@@ -15,12 +16,6 @@ class Place(models.Model):
 
     def __str__(self) -> str:
         return self.code
-
-
-class BottleMeasuredBy(models.TextChoices):
-    MASS = "mass"  # micrograms
-    VOLUME = "volume"  # nanolitres
-    COUNT = "count"  # pieces
 
 
 class BottleAssayKind(models.TextChoices):
@@ -47,16 +42,26 @@ class BottleStatus(models.TextChoices):
 class Bottle(models.Model):
     """One physical bottle. Whether it is weighed or measured is settled at receipt."""
 
-    MeasuredBy = BottleMeasuredBy
+    MeasuredBy = MeasuredByChoices
     AssayKind = BottleAssayKind
     StabiliserState = BottleStabiliserState
     Status = BottleStatus
     code = models.CharField(max_length=24, unique=True)
     form = models.ForeignKey(Form, models.PROTECT, related_name="bottles")
     parent = models.ForeignKey("self", models.PROTECT, null=True, related_name="children")
-    measured_by = models.CharField(max_length=8, choices=BottleMeasuredBy)
+    measured_by = models.CharField(max_length=8, choices=MeasuredByChoices)
+    # the line of the parent's book by which this bottle was filled
+    parent_movement = models.ForeignKey(
+        "inventory.Movement", models.PROTECT, null=True, related_name="+"
+    )
+    # what was done to it in the house ("dried over 3A sieves"); empty for what came as it is
+    preparation = models.CharField(max_length=120, blank=True)
     # what cannot be got out of the bottle, in its base unit
     heel = models.BigIntegerField()
+    # less than this is never set aside or decanted, in its base unit
+    least_dispensed = models.BigIntegerField(default=0)
+    # of the empty bottle with its cap, for counting by weight; None until somebody weighed it
+    tare_ug = models.BigIntegerField(null=True)
     lot = models.CharField(max_length=60, blank=True)
     supplier = models.CharField(max_length=80, blank=True)
     assay_pct = models.DecimalField(max_digits=7, decimal_places=4, null=True)
@@ -77,14 +82,21 @@ class Bottle(models.Model):
     expires_on = models.DateField(null=True)
     status = models.CharField(max_length=12, choices=BottleStatus, default=BottleStatus.USABLE)
     note = models.CharField(max_length=200, blank=True)
+    version = models.PositiveIntegerField(default=1)
 
     class Meta:
         constraints = [
-            one_of("measured_by", BottleMeasuredBy, name="bottle_measured_by_known"),
+            one_of("measured_by", MeasuredByChoices, name="bottle_measured_by_known"),
             one_of("status", BottleStatus, name="bottle_status_known"),
             one_of("assay_kind", BottleAssayKind, name="bottle_assay_kind_known"),
             one_of("stabiliser_state", BottleStabiliserState, name="bottle_stabiliser_known"),
             whole_number("heel", lowest=0, name="bottle_heel_whole"),
+            whole_number("least_dispensed", lowest=0, name="bottle_least_whole"),
+            whole_number("tare_ug", lowest=0, name="bottle_tare_whole"),
+            models.CheckConstraint(
+                condition=Q(parent_movement__isnull=True) | Q(parent__isnull=False),
+                name="bottle_lineage_has_parent",
+            ),
             models.CheckConstraint(
                 condition=Q(assay_pct__isnull=True) | (Q(assay_pct__gt=0) & Q(assay_pct__lte=100)),
                 name="bottle_assay_in_range",

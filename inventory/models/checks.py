@@ -9,6 +9,14 @@ from labplan.base.checks import IsWholeNumber
 LARGEST_AMOUNT = 10**15
 
 
+class MeasuredBy(models.TextChoices):
+    """How an amount is measured, and so its base unit."""
+
+    MASS = "mass"  # micrograms
+    VOLUME = "volume"  # nanolitres
+    COUNT = "count"  # pieces
+
+
 def whole_number(field: str, *, lowest: int, name: str) -> models.CheckConstraint:
     """An integer between `lowest` and the largest amount."""
     return models.CheckConstraint(

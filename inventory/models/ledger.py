@@ -17,6 +17,8 @@ class Balance(models.Model):
     on_hand = models.BigIntegerField(default=0)
     held = models.BigIntegerField(default=0)
     seq = models.BigIntegerField(default=0)
+    # Follows the bottle's status: a hold checks it under the lock that it takes anyway.
+    is_usable = models.BooleanField(default=True)
 
     class Meta:
         constraints = [
@@ -59,10 +61,13 @@ class Movement(AppendOnlyModel):
     entered_amount = models.CharField(max_length=40)
     entered_unit = models.CharField(max_length=12)
     density_g_per_ml = models.DecimalField(max_digits=7, decimal_places=4, null=True)
+    density_source = models.CharField(max_length=120, blank=True)
     # of the substance itself, at the assay known then
     amount_nmol = models.BigIntegerField(null=True)
     hold = models.ForeignKey(Hold, models.PROTECT, null=True, related_name="movements")
+    # of whoever asked, and the number of the line in it: sent twice, it is done once
     operation = models.UUIDField()
+    part = models.PositiveIntegerField()
     project = models.ForeignKey(Project, models.PROTECT, null=True, related_name="movements")
     actor_code = models.CharField(max_length=24)
     reason = models.CharField(max_length=160, blank=True)
@@ -73,6 +78,7 @@ class Movement(AppendOnlyModel):
         constraints = [
             one_of("kind", MovementKind, name="movement_kind_known"),
             models.UniqueConstraint(fields=["bottle", "seq"], name="movement_seq_once"),
+            models.UniqueConstraint(fields=["operation", "part"], name="movement_operation_once"),
             whole_number("seq", lowest=1, name="movement_seq_whole"),
             whole_number("on_hand_after", lowest=0, name="movement_on_hand_whole"),
             whole_number("held_after", lowest=0, name="movement_held_whole"),
@@ -102,5 +108,4 @@ class Movement(AppendOnlyModel):
         ]
         indexes = [
             models.Index(fields=["project", "booked_on"], name="movement_by_project"),
-            models.Index(fields=["operation"], name="movement_by_operation"),
         ]

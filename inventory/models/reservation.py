@@ -23,12 +23,15 @@ class Reservation(models.Model):
     # whose it is, in the words of the app that asked; the stock does not read it
     purpose = models.CharField(max_length=120)
     state = models.CharField(max_length=8, choices=ReservationState, default=ReservationState.OPEN)
+    # approved by somebody: what is not is given up first when a bottle turns out to hold less
+    is_firm = models.BooleanField(default=False)
     expires_on = models.DateField()
     created_at = models.DateTimeField()
     version = models.PositiveIntegerField(default=1)
 
     class Meta:
         constraints = [one_of("state", ReservationState, name="reservation_state_known")]
+        indexes = [models.Index(fields=["project", "-id"], name="reservation_by_project")]
 
     def is_overdue(self, today: date) -> bool:
         """Whether it still holds something after its last day; a day counts to its end."""
@@ -69,4 +72,7 @@ class Hold(models.Model):
                 name="hold_closed_is_settled",
             ),
             models.UniqueConstraint(fields=["reservation", "line"], name="hold_line_once"),
+        ]
+        indexes = [
+            models.Index(fields=["bottle"], condition=Q(state="open"), name="hold_open_by_bottle")
         ]

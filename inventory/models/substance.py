@@ -3,7 +3,7 @@
 from django.db import models
 from django.db.models import Q
 
-from inventory.models.checks import one_of
+from inventory.models.checks import MeasuredBy, one_of, whole_number
 
 
 class SubstanceKind(models.TextChoices):
@@ -32,10 +32,20 @@ class Substance(models.Model):
     density_g_per_ml = models.DecimalField(max_digits=7, decimal_places=4, null=True)
     density_temperature_c = models.DecimalField(max_digits=5, decimal_places=1, null=True)
     density_source = models.CharField(max_length=120, blank=True)
+    # the stockroom buys when less than this can be used, in the base unit of minimum_measured_by
+    minimum = models.BigIntegerField(null=True)
+    minimum_measured_by = models.CharField(max_length=8, choices=MeasuredBy, blank=True)
+    version = models.PositiveIntegerField(default=1)
 
     class Meta:
         constraints = [
             one_of("kind", SubstanceKind, name="substance_kind_known"),
+            whole_number("minimum", lowest=0, name="substance_minimum_whole"),
+            models.CheckConstraint(
+                condition=Q(minimum__isnull=True, minimum_measured_by="")
+                | Q(minimum__isnull=False, minimum_measured_by__in=MeasuredBy.values),
+                name="substance_minimum_has_unit",
+            ),
             models.CheckConstraint(
                 condition=~Q(kind="defined") | (Q(inchikey__isnull=False) & ~Q(smiles="")),
                 name="substance_defined_has_structure",

@@ -67,14 +67,15 @@ def shelf_snapshot(
         .select_related("form__substance", "form__solution_solvent", "balance", "place")
         .order_by("code")
     )
-    readings = _latest_readings([bottle.pk for bottle in bottles])
+    readings = latest_readings([bottle.pk for bottle in bottles])
     return tuple(_on_shelf(bottle, readings) for bottle in bottles)
 
 
 Readings = dict[tuple[int, str], tuple[Decimal, date]]
 
 
-def _latest_readings(bottle_ids: list[int]) -> Readings:
+def latest_readings(bottle_ids: list[int]) -> Readings:
+    """(bottle, kind) -> value and day of the newest reading of that kind."""
     rows = Reading.objects.filter(bottle__in=bottle_ids).order_by("read_on", "id")
     return {
         (bottle_id, kind): (value, read_on)

@@ -4,13 +4,19 @@ import uuid
 from collections import defaultdict
 from collections.abc import Sequence
 from dataclasses import dataclass
+from datetime import date
 from decimal import Decimal
 
 from inventory import locks
 from inventory.errors import Shortfall, StockShort
 from inventory.models import Balance, Movement
+from inventory.quantities import in_words
 from labplan.base import clock
+from labplan.base.errors import FieldProblem
 from labplan.base.rights import Actor
+
+# What only a bottle in use may promise; all other kinds are facts, or give something back.
+_INTENTIONS = frozenset({"hold", "decant_out"})
 
 
 @dataclass(frozen=True)
@@ -24,18 +30,24 @@ class BookLine:
     entered_amount: str = ""
     entered_unit: str = ""
     density_g_per_ml: Decimal | None = None
+    density_source: str = ""
     amount_nmol: int | None = None
     hold_id: int | None = None
     keep_back: int = 0
+    # set where the line's project or reason is not that of the whole operation
+    project_id: int | None = None
+    reason: str = ""
 
 
 def write_lines(
-    lines: Sequence[BookLine], *, actor: Actor, project_id: int | None, reason: str
-) -> uuid.UUID:
+    lines: Sequence[BookLine], *, actor: Actor, project_id: int | None, reason: str,
+    operation_id: uuid.UUID | None = None, booked_on: date | None = None,
+) -> uuid.UUID:  # fmt: skip
     """Move the balances and append the movements in the caller's transaction.
 
     Raises StockShort with every bottle that has too little; the caller's transaction must then
-    roll back. Returns the operation id that all the movements share.
+    roll back. Returns the operation id that all the movements share. The database takes an
+    operation once: a second time it raises IntegrityError (movement_operation_once).
     """
     by_bottle: dict[int, list[tuple[int, BookLine]]] = defaultdict(list)
     for number, line in enumerate(lines, start=1):
@@ -43,9 +55,9 @@ def write_lines(
     after = locks.move_balances([_change(bottle, found) for bottle, found in by_bottle.items()])
     if len(after) < len(by_bottle):
         raise _short({b: found for b, found in by_bottle.items() if b not in after})
-    operation = uuid.uuid4()
-    booked_on, recorded_at = clock.today(), clock.now()
-    rows = []
+    operation = operation_id or uuid.uuid4()
+    booked_on, recorded_at = booked_on or clock.today(), clock.now()
+    rows: list[Movement] = []
     for bottle_id in sorted(by_bottle):
         found = [line for _, line in by_bottle[bottle_id]]
         for line, seq, on_hand, held in _walk(found, after[bottle_id]):
@@ -55,9 +67,10 @@ def write_lines(
                     on_hand_change=line.on_hand_change, held_change=line.held_change,
                     on_hand_after=on_hand, held_after=held,
                     entered_amount=line.entered_amount, entered_unit=line.entered_unit,
-                    density_g_per_ml=line.density_g_per_ml, amount_nmol=line.amount_nmol,
-                    hold_id=line.hold_id, operation=operation, project_id=project_id,
-                    actor_code=actor.code, reason=reason, booked_on=booked_on,
+                    density_g_per_ml=line.density_g_per_ml, density_source=line.density_source,
+                    amount_nmol=line.amount_nmol, hold_id=line.hold_id, operation=operation,
+                    part=len(rows) + 1, project_id=line.project_id or project_id,
+                    actor_code=actor.code, reason=line.reason or reason, booked_on=booked_on,
                     recorded_at=recorded_at,
                 )
             )  # fmt: skip
@@ -73,6 +86,7 @@ def _change(bottle_id: int, found: list[tuple[int, BookLine]]) -> locks.BalanceC
         held_change=sum(line.held_change for line in lines),
         lines=len(lines),
         keep_back=max(line.keep_back for line in lines),
+        intends=any(line.kind in _INTENTIONS for line in lines),
     )
 
 
@@ -90,20 +104,30 @@ def _walk(lines: list[BookLine], after: locks.BalanceAfter) -> list[tuple[BookLi
 
 def _short(refused: dict[int, list[tuple[int, BookLine]]]) -> StockShort:
     balances = Balance.objects.select_related("bottle").in_bulk(refused)
-    shortfalls = []
+    shortfalls, errors = [], []
     for bottle_id, found in refused.items():
         balance = balances[bottle_id]
         keep_back = max(line.keep_back for _, line in found)
+        usable = max(0, balance.on_hand - balance.held - keep_back) if balance.is_usable else 0
         shortfalls.append(
             Shortfall(
                 line=found[0][0],
                 bottle=balance.bottle.code,
-                needed=sum(line.held_change for _, line in found),
-                usable=max(0, balance.on_hand - balance.held - keep_back),
+                needed=sum(line.held_change - line.on_hand_change for _, line in found),
+                usable=usable,
             )
         )
+        needed = in_words(balance.bottle.measured_by, shortfalls[-1].needed)
+        left = in_words(balance.bottle.measured_by, usable)
+        errors.append(
+            FieldProblem(
+                f"line {found[0][0]}", "short",
+                f"{balance.bottle.code}: {needed} needed, {left} can be used.",
+            )
+        )  # fmt: skip
     bottles = ", ".join(sorted(shortfall.bottle for shortfall in shortfalls))
     return StockShort(
         f"Not enough left in {bottles}: somebody may have claimed it meanwhile.",
         shortfalls=tuple(sorted(shortfalls, key=lambda s: s.line)),
+        errors=tuple(errors),
     )

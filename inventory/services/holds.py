@@ -11,13 +11,12 @@ from django.db.models import F
 from inventory import locks
 from inventory.errors import Shortfall, StockShort
 from inventory.models import Bottle, Hold, Reservation
+from inventory.quantities import own_quantity
 from inventory.services.book import BookLine, write_lines
+from inventory.services.quotas import check_quotas
 from labplan.base import clock
 from labplan.base.errors import NotFound, StateForbids
 from labplan.base.rights import LABPLAN, Actor, require
-
-# how a bottle is measured -> (the unit people write, base units in one)
-_WRITTEN_UNITS = {"mass": ("mg", 1_000), "volume": ("mL", 1_000_000), "count": ("pieces", 1)}
 
 
 @dataclass(frozen=True)
@@ -30,20 +29,26 @@ class HoldLine:
     entered_unit: str
     density_g_per_ml: Decimal | None = None
     amount_nmol: int | None = None
+    density_source: str = ""
 
 
 def hold_lines(
     *, actor: Actor, project_id: int, purpose: str, expires_on: date, lines: Sequence[HoldLine],
-    operation: str = "procedure.request",
+    operation: str = "procedure.request", operation_id: uuid.UUID | None = None,
 ) -> Reservation:  # fmt: skip
     """Set every line aside or none, in the caller's open transaction.
 
     Guarantees that on hand - held never falls under the heel of a bottle. Raises NotAllowed,
-    StockShort (all short bottles listed; the caller rolls back) or NotFound for a bottle code.
+    QuotaExceeded, StockShort (all short bottles listed; the caller rolls back) or NotFound for a
+    bottle code.
     """
     locks.require_transaction()
     require(actor, operation, project_id=project_id)
     bottles = _bottles_by_code(lines)
+    check_quotas(
+        project_id=project_id,
+        claims=[(bottles[line.bottle_code].pk, line.amount) for line in lines],
+    )
     reservation = Reservation.objects.create(
         code=uuid.uuid4(), project_id=project_id, actor_code=actor.code, purpose=purpose,
         expires_on=expires_on, created_at=clock.now(),
@@ -59,15 +64,19 @@ def hold_lines(
     )
     write_lines(
         [_book_line(line, hold, bottles) for line, hold in zip(lines, holds, strict=True)],
-        actor=actor, project_id=project_id, reason=purpose,
+        actor=actor, project_id=project_id, reason=purpose, operation_id=operation_id,
     )  # fmt: skip
     return reservation
 
 
-def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
+def release_reservation(
+    *, actor: Actor, code: uuid.UUID, reason: str, operation_id: uuid.UUID | None = None,
+    must_be_open: bool = True,
+) -> None:  # fmt: skip
     """Give back what a reservation still holds, in the caller's open transaction.
 
-    Raises NotFound, NotAllowed, and StateForbids when it is closed already.
+    Raises NotFound, NotAllowed, and StateForbids when it is closed already; without
+    `must_be_open` a closed one is left as it is.
     """
     locks.require_transaction()
     reservation = Reservation.objects.select_for_update(no_key=True).filter(code=code).first()
@@ -75,8 +84,13 @@ def release_reservation(*, actor: Actor, code: uuid.UUID, reason: str) -> None:
         raise NotFound("There is no reservation with this code.")
     require(actor, "reservation.release", project_id=reservation.project_id)
     if reservation.state != Reservation.State.OPEN:
-        raise StateForbids("This reservation is closed; it holds nothing any more.")
-    _give_all_back(reservation, actor=actor, reason=reason, kind="release", end=Hold.State.RELEASED)
+        if must_be_open:
+            raise StateForbids("This reservation is closed; it holds nothing any more.")
+        return
+    _give_all_back(
+        reservation, actor=actor, reason=reason, kind="release", end=Hold.State.RELEASED,
+        operation_id=operation_id,
+    )  # fmt: skip
 
 
 def lapse_reservation(*, code: uuid.UUID, reason: str) -> bool:
@@ -92,15 +106,19 @@ def lapse_reservation(*, code: uuid.UUID, reason: str) -> bool:
 
 
 def _give_all_back(
-    reservation: Reservation, *, actor: Actor, reason: str, kind: str, end: str
+    reservation: Reservation,
+    *,
+    actor: Actor,
+    reason: str,
+    kind: str,
+    end: str,
+    operation_id: uuid.UUID | None = None,
 ) -> None:
     open_holds = reservation.holds.filter(state=Hold.State.OPEN)
+    holds = list(open_holds.select_related("bottle__form__substance").order_by("line"))
     write_lines(
-        [
-            _give_back_line(hold, kind)
-            for hold in open_holds.select_related("bottle").order_by("line")
-        ],
-        actor=actor, project_id=reservation.project_id, reason=reason,
+        [_give_back_line(hold, kind) for hold in holds],
+        actor=actor, project_id=reservation.project_id, reason=reason, operation_id=operation_id,
     )  # fmt: skip
     open_holds.update(given_back=F("amount") - F("used"), state=end)
     reservation.state = Reservation.State.CLOSED
@@ -140,15 +158,16 @@ def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLi
     return BookLine(
         bottle_id=bottle.pk, kind="hold", held_change=line.amount,
         entered_amount=line.entered_amount, entered_unit=line.entered_unit,
-        density_g_per_ml=line.density_g_per_ml, amount_nmol=line.amount_nmol,
+        density_g_per_ml=line.density_g_per_ml, density_source=line.density_source,
+        amount_nmol=line.amount_nmol,
         hold_id=hold.pk, keep_back=bottle.heel,
     )  # fmt: skip
 
 
 def _give_back_line(hold: Hold, kind: str) -> BookLine:
-    left = hold.amount - hold.used
-    unit, factor = _WRITTEN_UNITS[hold.bottle.measured_by]
+    left = hold.amount - hold.used - hold.given_back
+    quantity = own_quantity(hold.bottle, left)
     return BookLine(
         bottle_id=hold.bottle_id, kind=kind, held_change=-left, hold_id=hold.pk,
-        entered_amount=f"{(Decimal(left) / factor).normalize():f}", entered_unit=unit,
+        entered_amount=quantity.entered_amount, entered_unit=quantity.entered_unit,
     )  # fmt: skip

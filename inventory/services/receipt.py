@@ -7,13 +7,11 @@ from decimal import Decimal
 from typing import Any
 
 from inventory import locks
-from inventory.content import content_of
 from inventory.models import Balance, Bottle, Form, Place, Reading, Substance
-from inventory.models.checks import LARGEST_AMOUNT
+from inventory.quantities import density_used, moles_nmol
 from inventory.services.book import BookLine, write_lines
 from labplan.base import clock
 from labplan.base.rights import Actor, require
-from labplan.chemistry.amounts import amount_mmol, mass_mg_of_volume
 from labplan.chemistry.reference import find_by_key
 
 # Common practice: what cannot be got out of a bottle.
@@ -21,6 +19,8 @@ HEEL_SHARE_OF_SOLVENT = Decimal("0.02")
 HEEL_LEAST_SOLVENT_NL = 5_000_000
 HEEL_LIQUID_REAGENT_NL = 200_000
 HEEL_SOLID_UG = 20_000
+# Common practice: what a syringe still measures; a balance is the laboratory's own affair.
+LEAST_VOLUME_NL = 50_000
 
 
 @dataclass(frozen=True)
@@ -50,7 +50,13 @@ def receive_bottles(receipts: Sequence[BottleReceipt], *, actor: Actor, reason: 
     bottles = Bottle.objects.bulk_create(
         [_bottle(receipt, forms[_form_key(receipt)]) for receipt in receipts], batch_size=500
     )
-    Balance.objects.bulk_create([Balance(bottle=bottle) for bottle in bottles], batch_size=500)
+    Balance.objects.bulk_create(
+        [
+            Balance(bottle=bottle, is_usable=bottle.status == Bottle.Status.USABLE)
+            for bottle in bottles
+        ],
+        batch_size=500,
+    )
     _write_readings(bottles, receipts, actor)
     write_lines(
         [_receipt_line(b, receipt) for b, receipt in zip(bottles, receipts, strict=True)],
@@ -73,6 +79,17 @@ def heel_of(measured_by: str, amount: int, *, is_solvent: bool) -> int:
     return min(max(HEEL_LEAST_SOLVENT_NL, int(amount * HEEL_SHARE_OF_SOLVENT)), amount)
 
 
+def is_solvent(substance: Substance) -> bool:
+    """Whether the packaged table lists it as a solvent."""
+    packaged = find_by_key(substance.code)
+    return packaged is not None and "solvent" in packaged.tags
+
+
+def least_dispensed_of(measured_by: str) -> int:
+    """The least that is set aside or decanted, in the base unit; a bottle may say otherwise."""
+    return LEAST_VOLUME_NL if measured_by == Bottle.MeasuredBy.VOLUME else 1
+
+
 def _form_key(receipt: BottleReceipt) -> tuple[int, str]:
     return receipt.substance.pk, str(receipt.form["label"])
 
@@ -88,15 +105,13 @@ def _forms(receipts: Sequence[BottleReceipt]) -> dict[tuple[int, str], Form]:
 
 
 def _bottle(receipt: BottleReceipt, form: Form) -> Bottle:
-    packaged = find_by_key(receipt.substance.code)
-    is_solvent = packaged is not None and "solvent" in packaged.tags
     return Bottle(
         code=receipt.code,
         form=form,
         place=receipt.place,
         measured_by=receipt.measured_by,
-        heel=heel_of(receipt.measured_by, receipt.amount, is_solvent=is_solvent),
-        **receipt.fields,
+        heel=heel_of(receipt.measured_by, receipt.amount, is_solvent=is_solvent(receipt.substance)),
+        **{"least_dispensed": least_dispensed_of(receipt.measured_by), **receipt.fields},
     )
 
 
@@ -115,27 +130,14 @@ def _write_readings(
 
 
 def _receipt_line(bottle: Bottle, receipt: BottleReceipt) -> BookLine:
+    density, source = density_used(bottle)
     return BookLine(
         bottle_id=bottle.pk,
         kind="receipt",
         on_hand_change=receipt.amount,
         entered_amount=receipt.entered_amount,
         entered_unit=receipt.entered_unit,
-        density_g_per_ml=bottle.density_g_per_ml,
-        amount_nmol=_amount_nmol(bottle, receipt),
+        density_g_per_ml=density,
+        density_source=source,
+        amount_nmol=moles_nmol(bottle, receipt.amount),
     )
-
-
-def _amount_nmol(bottle: Bottle, receipt: BottleReceipt) -> int | None:
-    """The moles of the substance at the assay known now; None where nothing can be said."""
-    content = content_of(bottle)
-    if content is None:
-        return None
-    if receipt.measured_by == Bottle.MeasuredBy.MASS:
-        mass_mg = receipt.amount / 1000
-    elif receipt.measured_by == Bottle.MeasuredBy.VOLUME and content.density_g_per_ml:
-        mass_mg = mass_mg_of_volume(receipt.amount / 1_000_000, content.density_g_per_ml)
-    else:
-        return None
-    nmol = round(amount_mmol(mass_mg, content) * 1_000_000)
-    return nmol if nmol <= LARGEST_AMOUNT else None

@@ -48,7 +48,7 @@ def read_receipt(
     place = places.get(row.text("place"))
     if place is None and row.text("place"):
         row.error("place", "unknown_place", f"There is no place {row.text('place')!r}.")
-    form = _form(row, finder)
+    form = read_form(row, finder)
     fields = _bottle_fields(row)
     readings = _readings(row)
     substance = finder.find(row)
@@ -148,7 +148,8 @@ def _amount(row: Row) -> tuple[str, int]:
     return measured_by, int(base)
 
 
-def _form(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
+def read_form(row: Row, finder: SubstanceFinder) -> dict[str, Any]:
+    """The fields of a Form, from the columns of a stock file."""
     kind = row.choice("form", ("", *Form.Kind.values)) or "neat"
     fields: dict[str, Any] = {"kind": kind}
     if kind == "hydrate":
@@ -206,7 +207,7 @@ def _bottle_fields(row: Row) -> dict[str, Any]:
         "status": row.choice("status", ("", *Bottle.Status.values)) or "usable",
         "note": row.within("note", 200),
     }
-    return fields | _stabiliser(row)
+    return fields | read_stabiliser(row)
 
 
 def _assay_of(row: Row) -> str:
@@ -222,7 +223,7 @@ def _assay_of(row: Row) -> str:
     return of
 
 
-def _stabiliser(row: Row) -> dict[str, Any]:
+def read_stabiliser(row: Row) -> dict[str, Any]:
     """`none`, a name, `unknown`, or nothing where no stabiliser is in question."""
     name = row.within("stabiliser", 60)
     state = {"": "not_applicable", "none": "none", "unknown": "unknown"}.get(name.lower(), "known")

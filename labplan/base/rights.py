@@ -15,12 +15,22 @@ PROJECT_OPERATIONS: dict[str, frozenset[str]] = {
     "procedure.cancel": frozenset({"chemist", "lead"}),
     "reservation.view": _ALL,
     "reservation.release": frozenset({"chemist", "stock_keeper", "lead"}),
+    "reservation.make": frozenset({"chemist", "lead"}),
+    "reservation.use": frozenset({"chemist", "stock_keeper", "lead"}),
+    "reservation.extend": frozenset({"chemist", "lead"}),
+    "reservation.firm": frozenset({"approver", "lead"}),
+    "stock.use": frozenset({"chemist", "stock_keeper", "lead"}),
+    "quota.view": _ALL,
 }
 # operation -> the roles that may do it if held in any project (a stockroom serves all of them)
 SITE_OPERATIONS: dict[str, frozenset[str]] = {
     "stock.view": _ALL,
     "stock.receive": frozenset({"stock_keeper"}),
     "movement.view": frozenset({"stock_keeper"}),
+    "stock.report": frozenset({"chemist", "stock_keeper", "lead"}),
+    "stock.count": frozenset({"stock_keeper"}),
+    "quota.set": frozenset({"stock_keeper"}),
+    "notice.mark": _ALL,
 }
 # What concerns only who asks, so that no role is needed; the scope a token needs for it.
 OWN_OPERATIONS: dict[str, str] = {
@@ -29,7 +39,7 @@ OWN_OPERATIONS: dict[str, str] = {
     "token.revoke": "write",
 }
 READING = frozenset({"project.view", "procedure.view", "reservation.view", "stock.view",
-                     "movement.view"})  # fmt: skip
+                     "movement.view", "quota.view"})  # fmt: skip
 # The free amounts of the shelf are everybody's business.
 OPEN_TO_EVERYONE = frozenset({"stock.view"})
 

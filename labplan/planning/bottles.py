@@ -4,11 +4,10 @@ from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from datetime import date, timedelta
 
+from labplan.chemistry.readings import reading_counts
 from labplan.planning.figures import bulk_volume_text, mass_text
 from labplan.planning.values import PassedOver, ShelfBottle
 
-# Common practice: a water reading this old says nothing once the bottle is open.
-READING_VALID_AFTER_OPENING_DAYS = 30
 DRY_GRADE_PPM = 30
 # One nanolitre in mL: what a sum of floats may be off by; the hold itself is in whole units.
 BASE_UNIT = 1e-6
@@ -157,6 +156,5 @@ def water_now_ppm(bottle: ShelfBottle, as_of: date) -> float | None:
     """The reading [ppm by mass] if it still counts, else None: unknown, to be measured."""
     if bottle.water_ppm is None or bottle.water_read_on is None:
         return None
-    opened_since = bottle.opened_on is not None
-    too_old = as_of - bottle.water_read_on > timedelta(days=READING_VALID_AFTER_OPENING_DAYS)
-    return None if opened_since and too_old else bottle.water_ppm
+    counts = reading_counts(read_on=bottle.water_read_on, opened_on=bottle.opened_on, as_of=as_of)
+    return bottle.water_ppm if counts else None

@@ -27,6 +27,8 @@ class Procedure(models.Model):
     broken_off = models.PositiveSmallIntegerField(default=0)
     phase = models.CharField(max_length=10, default=progress.WAITING)
     reservation_code = models.UUIDField(null=True, unique=True)
+    # what the stock took back of its reservation, [{line, bottle, amount, why}]
+    lost_holds = models.TextField(default="[]")
     document = models.ForeignKey("Document", models.PROTECT, null=True, related_name="+")
     version = models.PositiveIntegerField(default=1)
     created_at = models.DateTimeField()

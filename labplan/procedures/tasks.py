@@ -1,9 +1,11 @@
 """What the outbox delivers to this app: a few lines each, calling a service."""
 
+import uuid
 from datetime import timedelta
 
 from django.conf import settings
 
+from inventory.services import HOLDS_CANCELLED_TOPIC
 from labplan.base import outbox
 from labplan.base.housekeeping import sweeps
 from labplan.base.outbox.topics import Payload
@@ -12,6 +14,7 @@ from labplan.procedures.engine import warm_plan
 from labplan.procedures.services import (
     give_up_planning,
     lapse_overdue,
+    note_lost_holds,
     plan_procedure,
     requeue_procedure,
 )
@@ -43,3 +46,11 @@ def lapse_what_is_overdue() -> int:
 def warm_the_engine() -> None:
     """Read and plan one target on an empty shelf: everything that planning needs is then loaded."""
     warm_plan()
+
+
+@outbox.handles(HOLDS_CANCELLED_TOPIC, queue=outbox.HOUSEKEEPING)
+def on_holds_cancelled(payload: Payload, message_id: int) -> None:
+    note_lost_holds(
+        reservation_code=uuid.UUID(payload["reservation"]), holds=payload["holds"],
+        message_id=message_id,
+    )  # fmt: skip

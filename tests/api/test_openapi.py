@@ -105,7 +105,8 @@ def test_filters_pages_and_headers_are_described(document: dict[str, Any]) -> No
 
     assert set(parameters(PROCEDURES)) == {"project", "state", "cursor", "page_size"}
     assert set(parameters("/api/v1/bottles/")) == {
-        "substance", "place", "status", "cursor", "page_size",
+        "substance", "place", "status", "expires_from", "expires_until", "water_ppm_above",
+        "under_minimum", "parent", "cursor", "page_size",
     }  # fmt: skip
     assert parameters(PROCEDURES, "post") == {"Idempotency-Key": True}
     assert parameters(CANCEL, "post") == {"Idempotency-Key": True, "If-Match": True}

@@ -6,6 +6,8 @@ from typing import Any
 
 from django.urls import URLPattern, URLResolver, get_resolver, reverse
 
+from inventory.models import Notice
+from labplan.base import clock
 from labplan.base.models import ApiToken
 from tests.laboratory import Laboratory, octyl_order
 
@@ -35,6 +37,16 @@ class Expected:
     changes_by_itself: bool = False
     # lies at the root and not under api/v1/; what lies at both is described under the prefix
     only_at_root: bool = False
+    # A POST on the shelf itself, which serves all projects: who works in any of them, and an
+    # administrator, gets as far as the body (empty here: 422). Others get `post_status`.
+    post_on_the_shelf: bool = False
+    # a body whose only fault is whose project it names
+    body: dict[str, Any] | None = None
+
+    def status_for(self, who: str) -> int | None:
+        """What a POST by an outsider of this kind is answered."""
+        works_somewhere = who != "stranger" and self.post_on_the_shelf
+        return 422 if works_somewhere else self.post_status
 
 
 # A route that is not in here fails test_rights_walk: say who may see it before it is served.
@@ -51,12 +63,34 @@ EXPECTED: dict[str, Expected] = {
     "project-detail": Expected("hidden", ("project",)),
     "substance-list": Expected("stock"),
     "substance-detail": Expected("stock", ("substance",)),
+    "substance-minimum": Expected("stock", ("substance",), ("POST", "OPTIONS"), 403),
     "bottle-list": Expected("stock"),
     "bottle-detail": Expected("stock", ("bottle",)),
-    "movement-list": Expected("nothing", ("bottle",)),
+    "movement-list": Expected(
+        "nothing", ("bottle",), (*READS, "POST"), 403, post_on_the_shelf=True
+    ),
+    "reading-list": Expected("stock", ("bottle",), (*READS, "POST"), 403, post_on_the_shelf=True),
+    "bottle-decant": Expected(
+        "stock", ("bottle",), ("POST", "OPTIONS"), 403, post_on_the_shelf=True
+    ),
+    "bottle-status": Expected(
+        "stock", ("bottle",), ("POST", "OPTIONS"), 403, post_on_the_shelf=True
+    ),
+    "stock-count": Expected("stock", (), ("POST", "OPTIONS"), 403),
     "place-list": Expected("stock"),
-    "reservation-list": Expected("nothing"),
+    "reservation-list": Expected(
+        "nothing", (), (*READS, "POST"), 422,
+        body={
+            "project": "LECTIN-07", "purpose": "p", "lines": [{"bottle": "GPA-1", "mass_mg": 1}],
+        },
+    ),
     "reservation-detail": Expected("hidden", ("reservation",)),
+    "reservation-use": Expected("hidden", ("reservation",), ("POST", "OPTIONS"), 404),
+    "reservation-release": Expected("hidden", ("reservation",), ("POST", "OPTIONS"), 404),
+    "reservation-extend": Expected("hidden", ("reservation",), ("POST", "OPTIONS"), 404),
+    "quota-list": Expected("nothing", (), (*READS, "POST"), 403),
+    "notice-list": Expected("nothing"),
+    "notice-read": Expected("hidden", ("notice",), ("POST", "OPTIONS"), 404),
     "route-preview": Expected("stock", (), ("POST", "OPTIONS"), 200, post_only_looks=True),
     "procedure-list": Expected("nothing", (), (*READS, "POST"), 422),
     "procedure-detail": Expected("hidden", ("procedure",)),
@@ -64,7 +98,7 @@ EXPECTED: dict[str, Expected] = {
     "procedure-sheet-html": Expected("hidden", ("procedure",)),
     "procedure-sheet-pdf": Expected("hidden", ("procedure",)),
     "procedure-cancel": Expected("hidden", ("procedure",), ("POST", "OPTIONS"), 404),
-}
+}  # fmt: skip
 
 
 # Served at the root as well, for load balancers and Prometheus beside the proxy.
@@ -103,6 +137,14 @@ class Planted:
         return [secret for secret in self.secrets if secret in text]
 
 
+def _plant_notice(lab: Laboratory, reservation: str) -> Notice:
+    """What MIRA would find if a fact had taken her hold; the hold itself is left alone."""
+    return Notice.objects.create(
+        person_code="MIRA", project=lab.project(), kind="hold_cancelled", bottle_code="GPA-1",
+        reservation_code=reservation, line=1, detail="d", created_at=clock.now(),
+    )  # fmt: skip
+
+
 def plant_procedure(lab: Laboratory) -> Planted:
     client = lab.client("MIRA")
     location = client.post("/api/v1/procedures/", octyl_order())["Location"]
@@ -115,6 +157,7 @@ def plant_procedure(lab: Laboratory) -> Planted:
         "bottle": "GPA-1",
         "reservation": shown["reservation"],
         "procedure": shown["code"],
+        "notice": str(_plant_notice(lab, shown["reservation"]).pk),
         "token": str(ApiToken.objects.filter(person__code="MIRA").latest("pk").pk),
     }
     document = shown["document"]

@@ -26,7 +26,7 @@ from labplan.chemistry.coupling import read_target
 from labplan.planning.document import plan_document
 from labplan.planning.plan import make_plan
 from labplan.planning.values import Scale
-from tests.bench import ledger, paper, workers
+from tests.bench import ledger, paper, reservations, workers
 from tests.shelf import AS_OF, demo_shelf
 from tests.targets import PENTENYL_LACTOSIDE
 
@@ -138,7 +138,19 @@ def real_workers() -> Table:
     return table
 
 
-SECTIONS: dict[str, Callable[[], Table]] = {"engine": engine, "workers": real_workers}
+def stock() -> Table:
+    """Amounts set aside by several clients at once."""
+    table = Table("measured", "figure", "beside it", "figure", "ratio")
+    for row in reservations.rows():
+        table.add_row(*row)
+    return table
+
+
+SECTIONS: dict[str, Callable[[], Table]] = {
+    "engine": engine,
+    "workers": real_workers,
+    "stock": stock,
+}
 
 
 LONG = {"ledger": False, "ledger-postgresql": True}  # whether on PostgreSQL

@@ -167,7 +167,8 @@ def _next_line(shelf: Shelf, **changes: Any) -> dict[str, Any]:
     return {
         "bottle_id": shelf.bottle("B").pk, "seq": 2, "kind": "correction", "on_hand_change": 5,
         "held_change": 0, "on_hand_after": 100_005, "held_after": 0, "entered_amount": "5",
-        "entered_unit": "ug", "operation": uuid.uuid4().hex, "actor_code": "A", "reason": "",
+        "entered_unit": "ug", "density_source": "", "operation": uuid.uuid4().hex, "part": 1,
+        "actor_code": "A", "reason": "",
         "booked_on": date(2026, 12, 1), "recorded_at": clock.now(), **changes,
     }  # fmt: skip
 

@@ -51,7 +51,8 @@ def _sound_row(table: str) -> dict[str, Any]:
 
 def _bottle_row(code: str) -> dict[str, Any]:
     return {
-        "code": code, "form_id": _key(Form), "measured_by": "mass", "heel": 0, "lot": "",
+        "code": code, "form_id": _key(Form), "measured_by": "mass", "heel": 0,
+        "least_dispensed": 1, "tare_ug": 30_000_000, "preparation": "", "version": 1, "lot": "",
         "supplier": "", "assay_of": "as_is", "assay_kind": "unspecified",
         "stabiliser_state": "none", "stabiliser_name": "", "stabiliser_basis": "",
         "place_id": _key(Place), "received_on": "2026-06-15", "status": "usable", "note": "",
@@ -60,7 +61,10 @@ def _bottle_row(code: str) -> dict[str, Any]:
 
 def _balance_row(code: str) -> dict[str, Any]:
     insert("inventory_bottle", _bottle_row(code))
-    return {"bottle_id": _key(Bottle, code=code), "on_hand": 10, "held": 10, "seq": 0}
+    return {
+        "bottle_id": _key(Bottle, code=code), "on_hand": 10, "held": 10, "seq": 0,
+        "is_usable": True,
+    }  # fmt: skip
 
 
 def _membership_row(code: str) -> dict[str, Any]:
@@ -102,6 +106,7 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "inventory_substance": lambda code: {
         "code": code, "kind": "defined", "name": "n", "search_key": "n", "cas": "",
         "smiles": "C", "inchikey": code, "formula": "", "density_source": "",
+        "minimum": 5, "minimum_measured_by": "mass", "version": 1,
     },
     "inventory_form": lambda code: {
         "substance_id": _key(Substance), "kind": "neat", "solution_basis": "", "cas": "",
@@ -115,7 +120,8 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "inventory_balance": _balance_row,
     "inventory_reservation": lambda code: {
         "code": uuid.uuid4().hex, "project_id": _key(Project), "actor_code": "A", "purpose": "p",
-        "state": "closed", "expires_on": "2026-12-15", "created_at": NOON, "version": 1,
+        "state": "closed", "is_firm": False, "expires_on": "2026-12-15", "created_at": NOON,
+        "version": 1,
     },
     "inventory_hold": lambda code: {
         "reservation_id": _key(Reservation), "line": 9, "bottle_id": _key(Bottle), "amount": 10,
@@ -124,13 +130,25 @@ SOUND_ROWS: dict[str, Callable[[str], dict[str, Any]]] = {
     "inventory_movement": lambda code: {
         "bottle_id": _key(Bottle, code="B"), "seq": 2, "kind": "receipt", "on_hand_change": 5,
         "held_change": 0, "on_hand_after": 100_005, "held_after": 0, "entered_amount": "5",
-        "entered_unit": "ug", "amount_nmol": 1, "operation": uuid.uuid4().hex, "actor_code": "A",
+        "entered_unit": "ug", "density_source": "", "amount_nmol": 1,
+        "operation": uuid.uuid4().hex, "part": 1, "actor_code": "A",
         "reason": "", "booked_on": "2026-12-01", "recorded_at": NOON,
+    },
+    "inventory_quota": lambda code: {
+        "project_id": _key(Project), "substance_id": _key(Substance), "starts_on": "2026-01-01",
+        "ends_on": "2026-12-31", "measured_by": "mass", "amount": 5, "actor_code": "A",
+        "reason": "", "created_at": NOON, "version": 1,
+    },
+    "inventory_notice": lambda code: {
+        "person_code": "A", "project_id": _key(Project), "kind": "hold_cancelled",
+        "bottle_code": "A", "reservation_code": uuid.uuid4().hex, "line": 1, "detail": "d",
+        "created_at": NOON,
     },
     "procedures_procedure": lambda code: {
         "code": code, "project_id": _key(Project), "requested_by": "LEAD", "target_smiles": "C",
         "product_mass_mg": 1, "promoter": "", "solvent": "", "state": "queued", "reasons": "[]",
-        "attempt": 0, "broken_off": 0, "phase": "waiting", "version": 1, "created_at": NOON,
+        "lost_holds": "[]", "attempt": 0, "broken_off": 0, "phase": "waiting", "version": 1,
+        "created_at": NOON,
     },
     "procedures_document": lambda code: {
         "procedure_id": _key(Procedure), "attempt": 2, "body": b"{}", "sha256": "0" * 64,
@@ -229,6 +247,20 @@ CHECKS = [
     Attack("bottle_assay_kind_known", "inventory_bottle", {"assay_kind": "guess"}),
     Attack("bottle_stabiliser_known", "inventory_bottle", {"stabiliser_state": "maybe"}),
     *_whole("bottle_heel_whole", "inventory_bottle", "heel", 0),
+    *_whole("bottle_least_whole", "inventory_bottle", "least_dispensed", 0),
+    *_whole("bottle_tare_whole", "inventory_bottle", "tare_ug", 0),
+    Attack("bottle_lineage_has_parent", "inventory_bottle", {"parent_movement_id": 1}),
+    *_whole("substance_minimum_whole", "inventory_substance", "minimum", 0),
+    *[
+        Attack("substance_minimum_has_unit", "inventory_substance", changes)
+        for changes in (
+            {"minimum": None}, {"minimum_measured_by": ""}, {"minimum_measured_by": "eye"},
+        )
+    ],
+    Attack("quota_measured_by_known", "inventory_quota", {"measured_by": "eye"}),
+    *_whole("quota_amount_whole", "inventory_quota", "amount", 0),
+    Attack("quota_period_runs_forward", "inventory_quota", {"ends_on": "2025-12-31"}),
+    Attack("notice_kind_known", "inventory_notice", {"kind": "rumour"}),
     *[Attack("bottle_assay_in_range", "inventory_bottle", {"assay_pct": v}) for v in (0, -1, 101)],
     *[
         Attack("bottle_density_positive", "inventory_bottle", {"density_g_per_ml": value})
@@ -315,6 +347,8 @@ CHECKS = [
             ("base_rememberedanswer", "status"), ("base_outboxmessage", "attempts"),
             ("base_outboxmessage", "sends"), (PROCEDURE, "broken_off"),
             ("inventory_reservation", "version"), ("inventory_hold", "line"),
+            ("inventory_bottle", "version"), ("inventory_substance", "version"),
+            ("inventory_quota", "version"), ("inventory_notice", "line"), (MOVEMENT, "part"),
             (PROCEDURE, "attempt"), (PROCEDURE, "version"), ("procedures_document", "attempt"),
         ]
     ],
@@ -329,6 +363,8 @@ UNIQUES = {
     "form_once": ("inventory_form", ("substance_id", "label")),
     "hold_line_once": ("inventory_hold", ("reservation_id", "line")),
     "movement_seq_once": (MOVEMENT, ("bottle_id", "seq")),
+    "movement_operation_once": (MOVEMENT, ("operation", "part")),
+    "quota_once": ("inventory_quota", ("project_id", "substance_id", "starts_on", "ends_on")),
     "document_attempt_once": ("procedures_document", ("procedure_id", "attempt")),
     "base_person.code unique": ("base_person", ("code",)),
     "base_project.code unique": ("base_project", ("code",)),
@@ -349,6 +385,10 @@ WHOLE_COLUMNS = [
     *[(f"seal_run_{column}_whole", "base_sealrun", column)
       for column in ("subject", "first", "last")],
     ("bottle_heel_whole", "inventory_bottle", "heel"),
+    ("bottle_least_whole", "inventory_bottle", "least_dispensed"),
+    ("bottle_tare_whole", "inventory_bottle", "tare_ug"),
+    ("substance_minimum_whole", "inventory_substance", "minimum"),
+    ("quota_amount_whole", "inventory_quota", "amount"),
     ("balance_on_hand_whole", "inventory_balance", "on_hand"),
     ("balance_held_whole", "inventory_balance", "held"),
     ("balance_seq_whole", "inventory_balance", "seq"),
@@ -442,6 +482,8 @@ def test_a_second_row_with_the_same_key_is_refused(name: str) -> None:
     first, second = _sound_row(table), _sound_row(table)
     if "reservation_code" in columns:
         first["reservation_code"] = uuid.UUID(int=8).hex
+    if "operation" in columns:
+        second |= {"seq": 3, "on_hand_after": 100_010}  # it carries on; only the operation repeats
     with transaction.atomic():
         insert(table, first)
         said = _refusal({**second, **{column: first[column] for column in columns}}, table)

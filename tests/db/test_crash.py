@@ -147,3 +147,39 @@ def test_a_message_delivered_again_after_the_end_changes_nothing(live_lab: Labor
     procedure.refresh_from_db()
     assert (procedure.state, procedure.version, procedure.attempt) == ("planned", settled, 1)
     assert live_lab.counts() == after
+
+
+def test_a_procedure_that_eats_all_memory_is_tried_twice(
+    live_lab: Laboratory, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def eats(attempt: planning.Attempt) -> None:
+        raise MemoryError
+
+    monkeypatch.setattr(planning, "compute_plan", eats)
+    procedure, before = _request(live_lab), live_lab.counts()
+    for hour in range(planning.MAX_BROKEN_OFF + 1):
+        procedure.refresh_from_db()
+        assert procedure.state == "queued"
+        assert _deliver_at(NOON + timedelta(hours=hour)) == 1
+    procedure.refresh_from_db()
+    assert procedure.state == "failed"
+    assert [reason["code"] for reason in json.loads(procedure.reasons)] == ["engine_crashed"]
+    assert live_lab.counts() == before
+
+
+def test_errors_that_are_no_crash_may_come_as_often_as_they_like(
+    live_lab: Laboratory, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def fails(attempt: planning.Attempt) -> None:
+        raise OSError("the disk is full")
+
+    procedure = _request(live_lab)
+    with monkeypatch.context() as patch:
+        patch.setattr(planning, "compute_plan", fails)
+        for hour in range(planning.MAX_BROKEN_OFF + 2):
+            assert _deliver_at(NOON + timedelta(hours=hour)) == 1
+    procedure.refresh_from_db()
+    assert (procedure.state, procedure.broken_off, procedure.phase) == ("queued", 0, "waiting")
+    assert _deliver_at(NOON + timedelta(days=1)) == 1
+    procedure.refresh_from_db()
+    assert procedure.state == "planned"

@@ -4,6 +4,7 @@ import io
 import os
 import subprocess
 import sys
+import uuid
 from pathlib import Path
 
 import pytest
@@ -122,7 +123,7 @@ def test_a_line_taken_from_an_end_is_found(shelf: Shelf, seq: int, where: str) -
 def test_a_line_put_in_behind_the_balance_is_found(shelf: Shelf) -> None:
     row = Movement.objects.filter(bottle__code="B").values().get()
     row |= {"id": 10**6, "seq": 2, "on_hand_change": 5, "on_hand_after": 100_005}
-    row["operation"] = row["operation"].hex
+    row["operation"] = uuid.uuid4().hex
     insert("inventory_movement", row)
     assert verify_ledger().faults == (
         LedgerFault(

@@ -4,14 +4,16 @@ import json
 import os
 import signal
 from collections.abc import Iterator
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
 from decimal import Decimal
 
 import pytest
+from celery import Celery
 
 from inventory.models import Hold, Reservation
-from labplan.base import tracing
+from labplan.base import clock, tracing
 from labplan.base.models import OutboxMessage
+from labplan.celery import app as labplan_celery
 from labplan.procedures.models import Procedure
 from labplan.procedures.services import ProcedureOrder, request_procedure
 from labplan.procedures.services.planning import MAX_BROKEN_OFF
@@ -134,3 +136,18 @@ def test_a_queued_procedure_is_cancelled_before_a_worker_takes_it(
     work.until(lambda: not OutboxMessage.objects.exclude(state="done").exists())
     asked.refresh_from_db()
     assert (asked.state, asked.attempt) == ("cancelled", 0)
+
+
+def test_a_sweep_that_the_scheduler_sends_is_run_by_a_worker(
+    live_lab: Laboratory, work: LiveWork
+) -> None:
+    first = ask(live_lab)
+    work.until(lambda: ended(first))
+    yesterday = clock.today() - timedelta(days=1)
+    Reservation.objects.update(expires_on=yesterday)
+    scheduler = Celery(broker=work.broker.address)
+    entry = {**labplan_celery.conf.beat_schedule}["procedures.lapse_overdue"]
+    scheduler.send_task(entry["task"], args=entry["args"], queue=entry["options"]["queue"])
+    work.until(lambda: not Reservation.objects.filter(state="open").exists())
+    first.refresh_from_db()
+    assert first.state == "lapsed"

@@ -1,0 +1,1 @@
+"""Random commands from several processes, held against a model in memory."""

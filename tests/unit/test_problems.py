@@ -44,6 +44,8 @@ CODES = {
     "request_running": 409,
     "busy": 503,
     "stock_short": 409,
+    "quota_exceeded": 422,
+    "not_convertible": 422,
     "import_refused": 422,
 }
 

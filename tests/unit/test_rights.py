@@ -22,18 +22,32 @@ IN_PROJECT = {
     "procedure.cancel":    "-      x       -      -        x     -",
     "reservation.view":    "x      x       x      x        x     -",
     "reservation.release": "-      x       x      -        x     -",
+    "reservation.make":    "-      x       -      -        x     -",
+    "reservation.use":     "-      x       x      -        x     -",
+    "reservation.extend":  "-      x       -      -        x     -",
+    "reservation.firm":    "-      -       -      x        x     -",
+    "stock.use":           "-      x       x      -        x     -",
+    "quota.view":          "x      x       x      x        x     -",
 }  # fmt: skip
 # What each role, held in any project, allows on the shelf.
 ON_THE_SHELF = {
     "stock.view":          "x      x       x      x        x     x",
     "stock.receive":       "-      -       x      -        -     -",
     "movement.view":       "-      -       x      -        -     -",
+    "stock.report":        "-      x       x      -        x     -",
+    "stock.count":         "-      -       x      -        -     -",
+    "quota.set":           "-      -       x      -        -     -",
+    "notice.mark":         "x      x       x      x        x     -",
 }  # fmt: skip
 # What a site role adds, whatever the project: an administrator and an auditor read everything.
-READS = {"project.view", "procedure.view", "reservation.view", "stock.view", "movement.view"}
+READS = {
+    "project.view", "procedure.view", "reservation.view", "stock.view", "movement.view",
+    "quota.view",
+}  # fmt: skip
 ADDED_BY_SITE_ROLE = {
     "none": set(),
-    "administrator": READS | {"stock.receive"},
+    "administrator": READS
+    | {"stock.receive", "stock.report", "stock.count", "quota.set", "notice.mark"},
     "auditor": READS,
 }
 

@@ -60,6 +60,18 @@ _SUMMARY = {
     "actions": _ACTIONS,
     "reasons": list_of(REASON, "Why it is refused, short or failed."),
     "reservation": or_null(uuid("Code of the reservation that holds its material.")),
+    "lost_holds": list_of(
+        record(
+            {
+                "line": whole("Number of the line in the reservation.", 1, minimum=1),
+                "bottle": text("Code of the bottle.", "GPA-1"),
+                "amount": text("What it held.", "2854 mg"),
+                "why": text("What has happened to the bottle.", "it is quarantined"),
+            }
+        ),
+        "Holds that were cancelled since it was planned, because the bottle does not allow them "
+        "any more; empty while all of its material is set aside.",
+    ),
     "created_at": instant("When it was asked for, in UTC."),
     "settled_at": or_null(instant("When planning ended, in UTC; null while it is queued.")),
     "document_sha256": or_null(text("SHA-256 of the document's bytes, in hexadecimal.")),

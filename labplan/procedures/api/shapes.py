@@ -43,6 +43,7 @@ def show_summary(procedure: Procedure) -> dict[str, Any]:
         "actions": _actions(procedure),
         "reasons": json.loads(procedure.reasons),
         "reservation": str(procedure.reservation_code) if procedure.reservation_code else None,
+        "lost_holds": json.loads(procedure.lost_holds),
         "created_at": procedure.created_at.isoformat(),
         "settled_at": procedure.settled_at.isoformat() if procedure.settled_at else None,
         "document_sha256": procedure.document.sha256 if procedure.document else None,

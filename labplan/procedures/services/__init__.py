@@ -3,6 +3,7 @@
 from labplan.procedures.services.cancel import cancel_procedure, require_may_cancel
 from labplan.procedures.services.giving_up import give_up_planning, requeue_procedure
 from labplan.procedures.services.lapse import lapse_overdue
+from labplan.procedures.services.lost_holds import note_lost_holds
 from labplan.procedures.services.planning import plan_procedure
 from labplan.procedures.services.preview import preview_routes
 from labplan.procedures.services.request import (
@@ -23,6 +24,7 @@ __all__ = [
     "cancel_procedure",
     "give_up_planning",
     "lapse_overdue",
+    "note_lost_holds",
     "plan_procedure",
     "preview_routes",
     "request_procedure",

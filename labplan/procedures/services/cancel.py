@@ -37,9 +37,11 @@ def cancel_procedure(
         before = procedure.state
         life.require_action(before, "cancel")
         if procedure.reservation_code is not None:
+            # A fact may have taken all of it, and somebody may have given it back by hand.
             release_reservation(
-                actor=actor, code=procedure.reservation_code, reason=f"{code} cancelled"
-            )
+                actor=actor, code=procedure.reservation_code, reason=f"{code} cancelled",
+                must_be_open=False,
+            )  # fmt: skip
         procedure.state = life.require_end(before, "cancel", life.CANCELLED)
         procedure.version += 1
         procedure.phase = progress.ENDED

@@ -78,6 +78,8 @@ def plan_procedure(*, procedure_id: int, message_id: int) -> None:
         _plan_until_settled(attempt)
     except DomainError as error:
         _settle_bare(attempt, life.FAILED, error.code, error.detail)
+    except MemoryError:
+        raise  # counts as broken off: the next try would eat as much
     except Exception:
         _note_an_orderly_end(attempt)
         raise
