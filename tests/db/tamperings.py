@@ -213,7 +213,7 @@ def swapped_lines(rng: random.Random) -> Found | None:
 def swapped_words(rng: random.Random) -> Found | None:
     """Two lines change who did it, why and when."""
     line, other = _line(rng), _line(rng)
-    names = ("actor_code", "reason", "entered_amount", "operation", "recorded_at")
+    names = ("actor_code", "reason", "entered_amount", "recorded_at")
     if all(getattr(line, n) == getattr(other, n) for n in names):
         return None
     _set(Movement, line.pk, **{n: getattr(other, n) for n in names})

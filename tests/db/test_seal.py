@@ -190,18 +190,21 @@ def test_another_key_seals_nothing_and_says_so() -> None:
 @pytest.mark.spoils_the_book
 def test_both_databases_write_a_row_the_same_way(shelf: Shelf) -> None:
     """The code of a row is pinned: a move from SQLite to PostgreSQL breaks no seal."""
+    row = Movement.objects.filter(bottle__code="B").values().get()
     Movement.objects.create(
-        id=4711, bottle=shelf.bottle("B"), seq=2, kind="correction", on_hand_change=5,
-        held_change=0, on_hand_after=100_005, held_after=0, entered_amount="5 \u00b5g",
-        entered_unit="ug", density_g_per_ml=Decimal("0.827"), operation=uuid.UUID(int=7),
-        actor_code="A", reason='a "quoted" \\ reason', booked_on=date(2026, 12, 1),
-        recorded_at=datetime(2026, 12, 1, 23, 0, 0, 120, tzinfo=UTC),
+        **row | {
+            "id": 4711, "seq": 2, "kind": "correction", "on_hand_change": 5,
+            "on_hand_after": 100_005, "entered_amount": "5 \u00b5g", "entered_unit": "ug",
+            "density_g_per_ml": Decimal("0.827"), "operation": uuid.UUID(int=7),
+            "actor_code": "A", "reason": 'a "quoted" \\ reason', "booked_on": date(2026, 12, 1),
+            "recorded_at": datetime(2026, 12, 1, 23, 0, 0, 120, tzinfo=UTC),
+        }
     )  # fmt: skip
     reader = RowReader(get_book("stock"), b"k")
     (found,) = reader.rows_after(shelf.bottle("B").pk, 1, 9)
-    row = dict(zip(reader.columns, found, strict=True)) | {"bottle_id": 1}
+    named = dict(zip(reader.columns, found, strict=True)) | {"bottle_id": 1}
     # columns that are added later do not count here
-    values = [row[name] if name in PINNED_COLUMNS else None for name in reader.columns]
+    values = [named[name] if name in PINNED_COLUMNS else None for name in reader.columns]
     assert reader.code_of(tuple(values)).hex() == PINNED
 
 

@@ -7,6 +7,7 @@ import io
 import secrets
 import shutil
 import threading
+import uuid
 from collections.abc import Iterator
 from contextlib import contextmanager, suppress
 from dataclasses import dataclass
@@ -19,11 +20,11 @@ import psycopg
 from django.core.management import call_command
 from django.db import connection, connections
 
-from inventory.models import Bottle, Movement
+from inventory.models import Bottle, Movement, Notice, Quota, Substance
 from labplan.base import clock, outbox
 from labplan.base.errors import LoginFailed
 from labplan.base.login import log_in
-from labplan.base.models import OutboxMessage, Person, RememberedAnswer
+from labplan.base.models import OutboxMessage, Person, Project, RememberedAnswer
 from labplan.base.rights import actor_for
 from labplan.base.seal import seal_new
 from labplan.base.tokens import create_token
@@ -92,6 +93,16 @@ def fill() -> None:
     RememberedAnswer.objects.create(
         person=Person.objects.get(code="MIRA"), route="x", key="k" * 8, fingerprint="0" * 64,
         status=201, body='{"name": "β-D-Glucose\\n\\t\\\\"}', created_at=clock.now(),
+    )  # fmt: skip
+    project = Project.objects.get(code="LECTIN-07")
+    Quota.objects.create(
+        project=project, substance=Substance.objects.get(code="1-octanol"), amount=10**9,
+        measured_by="volume", starts_on="2026-12-01", ends_on="2026-12-31", actor_code="JONAS",
+        created_at=clock.now(),
+    )  # fmt: skip
+    Notice.objects.create(
+        person_code="MIRA", project=project, kind="hold_cancelled", bottle_code="GPA-1", line=1,
+        reservation_code=uuid.UUID(int=7), detail="d", created_at=clock.now(),
     )  # fmt: skip
     with suppress(LoginFailed):
         log_in(person_code="MIRA", password="not this one", address="192.0.2.1")
