@@ -6,15 +6,22 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import date
 from decimal import Decimal
+from typing import Any
 
 from inventory import locks
 from inventory.errors import Shortfall, StockShort
 from inventory.models import Balance, Movement
 from inventory.quantities import in_words
+from inventory.rows import insert_rows
 from labplan.base import clock
 from labplan.base.errors import FieldProblem
 from labplan.base.rights import Actor
 
+_COLUMNS = (
+    "bottle", "seq", "kind", "on_hand_change", "held_change", "on_hand_after", "held_after",
+    "entered_amount", "entered_unit", "density_g_per_ml", "density_source", "amount_nmol", "hold",
+    "operation", "part", "project", "actor_code", "reason", "booked_on", "recorded_at",
+)  # fmt: skip
 # What only a bottle in use may promise; all other kinds are facts, or give something back.
 _INTENTIONS = frozenset({"hold", "decant_out"})
 
@@ -57,24 +64,20 @@ def write_lines(
         raise _short({b: found for b, found in by_bottle.items() if b not in after})
     operation = operation_id or uuid.uuid4()
     booked_on, recorded_at = booked_on or clock.today(), clock.now()
-    rows: list[Movement] = []
+    rows: list[tuple[Any, ...]] = []
     for bottle_id in sorted(by_bottle):
         found = [line for _, line in by_bottle[bottle_id]]
         for line, seq, on_hand, held in _walk(found, after[bottle_id]):
             rows.append(
-                Movement(
-                    bottle_id=bottle_id, seq=seq, kind=line.kind,
-                    on_hand_change=line.on_hand_change, held_change=line.held_change,
-                    on_hand_after=on_hand, held_after=held,
-                    entered_amount=line.entered_amount, entered_unit=line.entered_unit,
-                    density_g_per_ml=line.density_g_per_ml, density_source=line.density_source,
-                    amount_nmol=line.amount_nmol, hold_id=line.hold_id, operation=operation,
-                    part=len(rows) + 1, project_id=line.project_id or project_id,
-                    actor_code=actor.code, reason=line.reason or reason, booked_on=booked_on,
-                    recorded_at=recorded_at,
+                (
+                    bottle_id, seq, line.kind, line.on_hand_change, line.held_change, on_hand,
+                    held, line.entered_amount, line.entered_unit, line.density_g_per_ml,
+                    line.density_source, line.amount_nmol, line.hold_id, operation, len(rows) + 1,
+                    line.project_id or project_id, actor.code, line.reason or reason, booked_on,
+                    recorded_at,
                 )
             )  # fmt: skip
-    Movement.objects.bulk_create(rows, batch_size=500)
+    insert_rows(Movement, _COLUMNS, rows)
     return operation
 
 

@@ -6,17 +6,25 @@ from dataclasses import dataclass
 from datetime import date
 from decimal import Decimal
 
+from django.db import connection
 from django.db.models import F
 
 from inventory import locks
 from inventory.errors import Shortfall, StockShort
 from inventory.models import Bottle, Hold, Reservation
 from inventory.quantities import own_quantity
+from inventory.rows import insert_rows
 from inventory.services.book import BookLine, write_lines
-from inventory.services.quotas import check_quotas
+from inventory.services.quotas import QUOTA_TODAY, check_quotas
 from labplan.base import clock
 from labplan.base.errors import NotFound, StateForbids
 from labplan.base.rights import LABPLAN, Actor, require
+
+_RESERVATION_COLUMNS = (
+    "code", "project_id", "actor_code", "purpose", "state", "is_firm", "expires_on", "created_at",
+    "version",
+)  # fmt: skip
+_HOLD_COLUMNS = ("reservation", "line", "bottle", "amount", "used", "given_back", "state")
 
 
 @dataclass(frozen=True)
@@ -44,24 +52,26 @@ def hold_lines(
     """
     locks.require_transaction()
     require(actor, operation, project_id=project_id)
-    bottles = _bottles_by_code(lines)
-    check_quotas(
-        project_id=project_id,
-        claims=[(bottles[line.bottle_code].pk, line.amount) for line in lines],
-    )
-    reservation = Reservation.objects.create(
+    bottles, has_quota = _sources(lines, project_id)
+    if has_quota:
+        check_quotas(
+            project_id=project_id,
+            claims=[(bottles[line.bottle_code].key, line.amount) for line in lines],
+        )
+    reservation = Reservation(
         code=uuid.uuid4(), project_id=project_id, actor_code=actor.code, purpose=purpose,
         expires_on=expires_on, created_at=clock.now(),
     )  # fmt: skip
-    holds = Hold.objects.bulk_create(
-        Hold(
-            reservation=reservation,
-            line=number,
-            bottle=bottles[line.bottle_code],
-            amount=line.amount,
-        )
-        for number, line in enumerate(lines, start=1)
-    )
+    values = [getattr(reservation, name) for name in _RESERVATION_COLUMNS]
+    [reservation.pk] = insert_rows(Reservation, _RESERVATION_COLUMNS, [values])
+    reservation._state.adding = False
+    holds = insert_rows(
+        Hold, _HOLD_COLUMNS,
+        [
+            (reservation.pk, number, bottles[line.bottle_code].key, line.amount, 0, 0, "open")
+            for number, line in enumerate(lines, start=1)
+        ],
+    )  # fmt: skip
     write_lines(
         [_book_line(line, hold, bottles) for line, hold in zip(lines, holds, strict=True)],
         actor=actor, project_id=project_id, reason=purpose, operation_id=operation_id,
@@ -131,10 +141,31 @@ def keep_still(bottle_codes: Sequence[str]) -> None:
     locks.lock_balances(Bottle.objects.filter(code__in=bottle_codes).values_list("pk", flat=True))
 
 
-def _bottles_by_code(lines: Sequence[HoldLine]) -> dict[str, Bottle]:
-    codes = {line.bottle_code for line in lines}
-    bottles = {bottle.code: bottle for bottle in Bottle.objects.filter(code__in=codes)}
-    missing = sorted(codes - bottles.keys())
+@dataclass(frozen=True)
+class _Source:
+    """What a hold has to know of its bottle."""
+
+    key: int
+    status: str
+    heel: int
+
+
+def _sources(lines: Sequence[HoldLine], project_id: int) -> tuple[dict[str, _Source], bool]:
+    """The bottles by code, and whether any quota limits the project today.
+
+    Every hold asks for both: hence in one statement and in plain SQL.
+    """
+    codes = list(dict.fromkeys(line.bottle_code for line in lines))
+    today = clock.today().isoformat()
+    with connection.cursor() as cursor:
+        cursor.execute(
+            f"SELECT code, id, status, heel, {QUOTA_TODAY} FROM inventory_bottle "
+            f"WHERE code IN ({', '.join(['%s'] * len(codes))})",
+            [project_id, today, today, *codes],
+        )
+        rows = cursor.fetchall()
+    bottles = {code: _Source(key, status, heel) for code, key, status, heel, _ in rows}
+    missing = sorted(set(codes) - bottles.keys())
     if missing:
         raise NotFound(f"There is no bottle {', '.join(missing)}.")
     unusable = sorted(c for c, b in bottles.items() if b.status != Bottle.Status.USABLE)
@@ -143,7 +174,7 @@ def _bottles_by_code(lines: Sequence[HoldLine]) -> dict[str, Bottle]:
             f"Set aside from use: {', '.join(unusable)}.",
             shortfalls=tuple(_none_usable(lines, code) for code in unusable),
         )
-    return bottles
+    return bottles, any(row[-1] for row in rows)
 
 
 def _none_usable(lines: Sequence[HoldLine], code: str) -> Shortfall:
@@ -153,14 +184,14 @@ def _none_usable(lines: Sequence[HoldLine], code: str) -> Shortfall:
     )
 
 
-def _book_line(line: HoldLine, hold: Hold, bottles: dict[str, Bottle]) -> BookLine:
+def _book_line(line: HoldLine, hold_id: int, bottles: dict[str, _Source]) -> BookLine:
     bottle = bottles[line.bottle_code]
     return BookLine(
-        bottle_id=bottle.pk, kind="hold", held_change=line.amount,
+        bottle_id=bottle.key, kind="hold", held_change=line.amount,
         entered_amount=line.entered_amount, entered_unit=line.entered_unit,
         density_g_per_ml=line.density_g_per_ml, density_source=line.density_source,
         amount_nmol=line.amount_nmol,
-        hold_id=hold.pk, keep_back=bottle.heel,
+        hold_id=hold_id, keep_back=bottle.heel,
     )  # fmt: skip
 
 

@@ -7,7 +7,7 @@ from datetime import date, datetime, time, timedelta
 from zoneinfo import ZoneInfo
 
 from django.conf import settings
-from django.db import connection, transaction
+from django.db import transaction
 from django.db.models import F, QuerySet, Sum
 
 from inventory import locks
@@ -21,6 +21,11 @@ from labplan.base.idempotency import Once, Unclaimed
 from labplan.base.models import Project
 from labplan.base.rights import Actor, require
 
+# Whether a project has any quota today: most have none. Parameters: project, today, today.
+QUOTA_TODAY = (
+    "EXISTS (SELECT 1 FROM inventory_quota q WHERE q.project_id = %s AND q.starts_on <= %s "
+    "AND q.ends_on >= %s)"
+)
 Claim = tuple[Bottle, int]  # an amount in the bottle's base unit
 
 
@@ -82,8 +87,6 @@ def check_quotas(*, project_id: int, claims: Iterable[tuple[int, int]]) -> None:
     counted one after the other.
     """
     locks.require_transaction()
-    if not _has_quota_today(project_id):
-        return
     amounts = list(claims)
     bottles = Bottle.objects.select_related("form__substance").in_bulk({pk for pk, _ in amounts})
     by_substance: dict[int, list[Claim]] = defaultdict(list)
@@ -101,18 +104,6 @@ def check_quotas(*, project_id: int, claims: Iterable[tuple[int, int]]) -> None:
     ]
     if errors:
         raise QuotaExceeded(" ".join(e.detail for e in errors), errors=tuple(errors))
-
-
-def _has_quota_today(project_id: int) -> bool:
-    """Most projects have none, and every hold asks: hence in plain SQL."""
-    today = clock.today().isoformat()
-    with connection.cursor() as cursor:
-        cursor.execute(
-            'SELECT 1 FROM "inventory_quota" WHERE project_id = %s AND starts_on <= %s '
-            "AND ends_on >= %s LIMIT 1",
-            [project_id, today, today],
-        )
-        return cursor.fetchone() is not None
 
 
 def claimed_of(quota: Quota) -> int:

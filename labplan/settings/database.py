@@ -17,6 +17,8 @@ SQLITE_PRAGMAS = (
 # A request does not wait longer than this for a row that somebody sits on.
 POSTGRESQL_PATIENCE = "-c lock_timeout=3000"
 
+PREPARE_AFTER = 3
+
 
 def database_from_url(url: str, *, sqlite_synchronous: str = "FULL") -> dict[str, Any]:
     """Return the settings for `sqlite:///path` or a libpq `postgresql://` address."""
@@ -61,5 +63,11 @@ def _postgresql(url: str) -> dict[str, Any]:
         "PORT": str(parts.pop("port", "")),
         "CONN_MAX_AGE": 60,
         "CONN_HEALTH_CHECKS": True,
-        "OPTIONS": {**parts, "options": server_options},
+        "OPTIONS": {
+            **parts,
+            "options": server_options,
+            # Values go beside the text, and the server plans a text it knows only once.
+            "server_side_binding": True,
+            "prepare_threshold": PREPARE_AFTER,
+        },
     }

@@ -49,7 +49,7 @@ def test_one_statement_locks_in_key_order_and_comes_before_the_lines(shelf: Shel
     assert len(inserts) == 1
     assert moving[0] < inserts[0]
     assert _only(statements, 'UPDATE "inventory_balance"') == []
-    quotas = [n for n, s in enumerate(statements) if 'FROM "inventory_quota"' in s]
+    quotas = [n for n, s in enumerate(statements) if "FROM inventory_quota" in s]
     assert len(quotas) == 1
     assert quotas < moving
     others = [n for n, s in enumerate(statements) if "FOR NO KEY UPDATE" in s or "FOR UPDATE" in s]
