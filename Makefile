@@ -27,8 +27,8 @@ check: setup-dev ## Style, types, import rules, migrations, nothing of this mach
 bench: setup-test ## Measure the speed of planning and of the ledger
 	@$(VENV_PYTHON) -m tests.bench $(ARGS)
 
-soak: setup-test ## The long forms of the tests that break things: 2,000 requests
-	@LABPLAN_REQUESTS=2000 $(VENV_PYTHON) tools/run_tests.py tests/simulation $(ARGS)
+soak: setup-test ## Hours: 2,000 requests and 1,000,000 stock commands while all is broken at random
+	@LABPLAN_SOAK=1 LABPLAN_REQUESTS=2000 $(VENV_PYTHON) tools/run_tests.py tests/simulation $(ARGS)
 
 openapi: setup-run ## Make docs/openapi.yaml again from the code
 	@$(VENV_PYTHON) tools/make_openapi.py
