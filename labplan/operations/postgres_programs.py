@@ -55,7 +55,12 @@ def run_program(name: str, command: Sequence[str], database: BaseDatabaseWrapper
     )  # fmt: skip
     if ended.returncode != 0:
         lines = ended.stderr.strip().splitlines()[-ERROR_LINES:]
-        raise OperationRefused(f"{name} failed:\n" + "\n".join(lines))
+        advice = (
+            f"\nSet LABPLAN_PG_BIN to the folder of a {name} as new as the server."
+            if any("version mismatch" in line for line in lines)
+            else ""
+        )
+        raise OperationRefused(f"{name} failed:\n" + "\n".join(lines) + advice)
     return ended.stdout
 
 
