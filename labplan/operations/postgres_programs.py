@@ -11,7 +11,7 @@ from django.db.backends.base.base import BaseDatabaseWrapper
 from psycopg.conninfo import make_conninfo
 
 from labplan.operations.errors import OperationRefused, ProgramMissing
-from labplan.settings.database import POSTGRESQL_PATIENCE
+from labplan.settings.database import OWN_OPTIONS, POSTGRESQL_PATIENCE
 
 FOLDER_VARIABLE = "LABPLAN_PG_BIN"
 ERROR_LINES = 12
@@ -26,7 +26,7 @@ def address_of(database: BaseDatabaseWrapper) -> str:
         "host": settings["HOST"], "port": settings["PORT"], **settings["OPTIONS"],
         "options": options,
     }  # fmt: skip
-    return make_conninfo(**{name: value for name, value in parts.items() if value})
+    return make_conninfo(**{n: v for n, v in parts.items() if v and n not in OWN_OPTIONS})
 
 
 def find_program(name: str, command: Sequence[str]) -> str:
