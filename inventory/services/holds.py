@@ -156,6 +156,8 @@ def _sources(lines: Sequence[HoldLine], project_id: int) -> tuple[dict[str, _Sou
     Every hold asks for both: hence in one statement and in plain SQL.
     """
     codes = list(dict.fromkeys(line.bottle_code for line in lines))
+    if not codes:
+        return {}, False
     today = clock.today().isoformat()
     with connection.cursor() as cursor:
         cursor.execute(

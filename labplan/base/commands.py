@@ -1,10 +1,12 @@
-"""What labplan's commands share: a database without tables is said in one sentence."""
+"""What labplan's commands share: a database that is not there is said in one sentence."""
 
 import re
 from typing import Any
 
 from django.core.management.base import BaseCommand, CommandError
 from django.db import OperationalError, ProgrammingError
+
+from labplan.base.problems import has_no_tables
 
 
 class LabCommand(BaseCommand):
@@ -18,12 +20,12 @@ class LabCommand(BaseCommand):
                 raise CommandError(
                     "The database has no tables yet: run 'manage.py migrate' first."
                 ) from error
-            raise
-
-
-def has_no_tables(error: Exception) -> bool:
-    """Whether the database refused because `migrate` has never run there."""
-    return "no such table" in str(error) or getattr(error.__cause__, "sqlstate", "") == "42P01"
+            if isinstance(error, ProgrammingError):
+                raise
+            raise CommandError(
+                f"The database does not do it: {error}\nIs it running, is there room on its disk, "
+                "does DATABASE_URL (or LABPLAN_DATA_DIR) name the right one?"
+            ) from error
 
 
 def checked_code(code: str) -> str:

@@ -3,12 +3,14 @@
 As a program (`python endings.py PROGRAM [ARGUMENTS]`) it becomes PROGRAM, tied to its parent.
 """
 
+import contextlib
 import ctypes
 import os
 import signal
 import subprocess
 import sys
-from collections.abc import Sequence
+import threading
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 
 PATIENCE_S = 10.0
@@ -35,6 +37,23 @@ def end_process(process: subprocess.Popen[bytes], *, patience_s: float = PATIENC
         except subprocess.TimeoutExpired:
             process.kill()
     process.wait()
+
+
+@contextlib.contextmanager
+def asked_to_stop_by_signals(event: threading.Event) -> Iterator[None]:
+    """Ctrl-C and SIGTERM set the event instead of breaking off.
+
+    Wait for it in short pieces: a signal may reach another thread than the one that waits.
+    """
+    before = {
+        number: signal.signal(number, lambda *_: event.set())
+        for number in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)
+    }
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
 
 
 if __name__ == "__main__":

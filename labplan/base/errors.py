@@ -134,6 +134,12 @@ class StillRunning(DomainError):
     status = 409
 
 
+class DatabaseAway(DomainError):
+    code = "database_away"
+    title = "The database does not answer"
+    status = 503
+
+
 class Busy(DomainError):
     code = "busy"
     title = "The stock is busy"

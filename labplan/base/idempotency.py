@@ -100,7 +100,9 @@ def claim_from(request: Any, *, route: str, render: Callable[[Result], Response]
         )
     key = given.strip('"')
     if not _KEY.fullmatch(key):
-        raise MalformedRequest("Idempotency-Key must be 8 to 128 printable characters.")
+        raise MalformedRequest(
+            "Idempotency-Key must be 8 to 128 printable characters without spaces."
+        )
     asked = json.dumps([request.path, request.data], sort_keys=True, default=str)
     return Claim(actor.person_id, route, key, sha256_hex(asked.encode()), render)
 

@@ -4,7 +4,7 @@ import logging
 from typing import Any
 
 from django.core.exceptions import PermissionDenied
-from django.db import OperationalError
+from django.db import InterfaceError, OperationalError
 from django.http import Http404, HttpRequest, JsonResponse
 from rest_framework import exceptions
 from rest_framework.response import Response
@@ -26,7 +26,7 @@ def problem_response(exception: Exception, context: dict[str, Any]) -> Response 
     headers = {}
     if error.status == 401:
         headers["WWW-Authenticate"] = 'Bearer realm="labplan"'
-    if isinstance(error, domain.StillRunning | domain.Busy):
+    if isinstance(error, domain.StillRunning | domain.Busy | domain.DatabaseAway):
         headers["Retry-After"] = "1"
     if "retry_after_s" in error.extra:
         headers["Retry-After"] = str(error.extra["retry_after_s"])
@@ -44,7 +44,9 @@ def as_domain_error(exception: Exception) -> domain.DomainError | None:
             return exception
         case Http404():
             return domain.NotFound("Check the address; the code may be mistyped.")
-        case exceptions.NotAuthenticated() | exceptions.AuthenticationFailed():
+        case exceptions.NotAuthenticated():
+            return domain.NotAuthenticated("Send a token as 'Authorization: Bearer <token>'.")
+        case exceptions.AuthenticationFailed():
             return domain.NotAuthenticated(str(exception.detail))
         case PermissionDenied() | exceptions.PermissionDenied():
             return domain.NotAllowed("Your token does not allow this.")
@@ -52,7 +54,18 @@ def as_domain_error(exception: Exception) -> domain.DomainError | None:
             return _from_framework(exception)
         case OperationalError() if is_lock_timeout(exception):
             return domain.Busy("Somebody else is moving the same bottles; send it again.")
+        case OperationalError() | InterfaceError() if not has_no_tables(exception):
+            logger.error("the database failed: %s: %s", type(exception).__name__, exception)
+            return domain.DatabaseAway(
+                "The database does not answer, or cannot write. Nothing was changed; send it again "
+                "later. /health/ready/ tells the operator what is wrong."
+            )
     return None
+
+
+def has_no_tables(error: Exception) -> bool:
+    """Whether the database refused because `migrate` has never run there."""
+    return "no such table" in str(error) or getattr(error.__cause__, "sqlstate", "") == "42P01"
 
 
 def is_lock_timeout(error: OperationalError) -> bool:
@@ -96,7 +109,8 @@ def server_error(request: HttpRequest) -> JsonResponse:
 
 
 def not_found(request: HttpRequest, exception: Exception) -> JsonResponse:
-    return plain_problem(404, "not_found", f"Nothing is served at {request.path}.")
+    detail = f"Nothing is served at {request.path}. The API is described at /api/v1/docs/."
+    return plain_problem(404, "not_found", detail)
 
 
 _TITLES = {

@@ -60,18 +60,22 @@ class BrokerServer:
         """As REDIS_URL wants it."""
         return f"redis+socket://{self.socket}"
 
+    @property
+    def arguments(self) -> list[str]:
+        """The command that starts it, with an empty memory."""
+        return [
+            str(self._program), "--port", "0", "--unixsocket", str(self.socket),
+            "--unixsocketperm", "700", "--save", "", "--appendonly", "no",
+            "--dir", str(self.socket.parent), "--loglevel", "warning",
+            "--logfile", str(self.socket.with_suffix(".log")),
+        ]  # fmt: skip
+
     def start(self) -> None:
         """Start with an empty memory and wait until it answers."""
         self.socket.unlink(missing_ok=True)
         self._process = subprocess.Popen(
-            tied([
-                str(self._program), "--port", "0", "--unixsocket", str(self.socket),
-                "--unixsocketperm", "700", "--save", "", "--appendonly", "no",
-                "--dir", str(self.socket.parent), "--loglevel", "warning",
-                "--logfile", str(self.socket.with_suffix(".log")),
-            ]),
-            stdin=subprocess.DEVNULL, start_new_session=True,
-        )  # fmt: skip
+            tied(self.arguments), stdin=subprocess.DEVNULL, start_new_session=True
+        )
         give_up = time.monotonic() + START_LIMIT_S
         while not self.is_up():
             if self._process.poll() is not None or time.monotonic() > give_up:
@@ -84,9 +88,6 @@ class BrokerServer:
                 return bool(client.ping())
         except redis.RedisError:
             return False
-
-    def has_ended(self) -> bool:
-        return self._process is None or self._process.poll() is not None
 
     def stop(self) -> None:
         if self._process is not None:

@@ -9,8 +9,8 @@ from django.db import DatabaseError
 from rich.console import Console
 from rich.progress import Progress
 
-from labplan.base.commands import has_no_tables
 from labplan.base.errors import DomainError
+from labplan.base.problems import has_no_tables
 from labplan.operations.files import Progress as Report
 
 

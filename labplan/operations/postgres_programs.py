@@ -11,7 +11,7 @@ from django.db.backends.base.base import BaseDatabaseWrapper
 from psycopg.conninfo import make_conninfo
 
 from labplan.operations.errors import OperationRefused, ProgramMissing
-from labplan.settings.database import POSTGRESQL_PATIENCE
+from labplan.settings.database import OWN_OPTIONS, POSTGRESQL_PATIENCE
 
 FOLDER_VARIABLE = "LABPLAN_PG_BIN"
 ERROR_LINES = 12
@@ -26,7 +26,7 @@ def address_of(database: BaseDatabaseWrapper) -> str:
         "host": settings["HOST"], "port": settings["PORT"], **settings["OPTIONS"],
         "options": options,
     }  # fmt: skip
-    return make_conninfo(**{name: value for name, value in parts.items() if value})
+    return make_conninfo(**{n: v for n, v in parts.items() if v and n not in OWN_OPTIONS})
 
 
 def find_program(name: str, command: Sequence[str]) -> str:
@@ -55,7 +55,12 @@ def run_program(name: str, command: Sequence[str], database: BaseDatabaseWrapper
     )  # fmt: skip
     if ended.returncode != 0:
         lines = ended.stderr.strip().splitlines()[-ERROR_LINES:]
-        raise OperationRefused(f"{name} failed:\n" + "\n".join(lines))
+        advice = (
+            f"\nSet LABPLAN_PG_BIN to the folder of a {name} as new as the server."
+            if any("version mismatch" in line for line in lines)
+            else ""
+        )
+        raise OperationRefused(f"{name} failed:\n" + "\n".join(lines) + advice)
     return ended.stdout
 
 

@@ -3,7 +3,6 @@
 import contextlib
 import logging
 import os
-import signal
 import subprocess
 import threading
 import time
@@ -111,17 +110,3 @@ def _start(program: Program) -> subprocess.Popen[bytes]:
         stdin=subprocess.DEVNULL,
         start_new_session=True,
     )
-
-
-@contextlib.contextmanager
-def asked_to_stop_by_signals(event: threading.Event) -> Iterator[None]:
-    """Ctrl-C and SIGTERM set the event instead of breaking off."""
-    before = {
-        number: signal.signal(number, lambda *_: event.set())
-        for number in (signal.SIGINT, signal.SIGTERM, signal.SIGHUP)
-    }
-    try:
-        yield
-    finally:
-        for number, handler in before.items():
-            signal.signal(number, handler)

@@ -238,5 +238,5 @@ def _print_expectations(console: Console, expected: dict[str, Any]) -> None:
             Text(f"{mass['planned']} mg from the whole route ({mass['low']} to {mass['high']} mg).")
         )
     for ion in expected["ions"]:
-        console.print(Text(f"  {ion['species']:28} {ion['ion']:10} {ion['mz']!s:>10}"))
+        console.print(Text(f"  {ion['species']:28} {ion['ion']:10} {float(ion['mz']):>10.4f}"))
     console.print(Text(expected["anomeric_signal"]["text"] + "."))

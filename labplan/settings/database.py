@@ -17,7 +17,9 @@ SQLITE_PRAGMAS = (
 # A request does not wait longer than this for a row that somebody sits on.
 POSTGRESQL_PATIENCE = "-c lock_timeout=3000"
 
-PREPARE_AFTER = 3
+# What Django and psycopg read and libpq does not know: values go beside the text of a statement,
+# and the server plans a text that comes again only once.
+OWN_OPTIONS = {"server_side_binding": True, "prepare_threshold": 3}
 
 
 def database_from_url(url: str, *, sqlite_synchronous: str = "FULL") -> dict[str, Any]:
@@ -63,11 +65,5 @@ def _postgresql(url: str) -> dict[str, Any]:
         "PORT": str(parts.pop("port", "")),
         "CONN_MAX_AGE": 60,
         "CONN_HEALTH_CHECKS": True,
-        "OPTIONS": {
-            **parts,
-            "options": server_options,
-            # Values go beside the text, and the server plans a text it knows only once.
-            "server_side_binding": True,
-            "prepare_threshold": PREPARE_AFTER,
-        },
+        "OPTIONS": {**OWN_OPTIONS, **parts, "options": server_options},
     }

@@ -21,7 +21,13 @@ from pathlib import Path
 
 from labplan.base import logs
 from labplan.settings.database import database_from_url
-from labplan.settings.environment import known_time_zone, one_of_words, whole_seconds
+from labplan.settings.environment import (
+    broker_address,
+    host_names,
+    known_time_zone,
+    one_of_words,
+    whole_seconds,
+)
 from labplan.settings.proxies import own_proxies
 from labplan.settings.secret import read_or_make_secret_key, read_seal_key
 
@@ -32,7 +38,7 @@ DEBUG = False
 SECRET_KEY = os.environ.get("LABPLAN_SECRET_KEY") or read_or_make_secret_key(DATA_DIR)
 # Whoever has it can make seals: keep it and its copies apart from those of the database.
 SEAL_KEY = read_seal_key(DATA_DIR)
-ALLOWED_HOSTS = os.environ.get("LABPLAN_HOSTS", "127.0.0.1,localhost,[::1]").split(",")
+ALLOWED_HOSTS = host_names("127.0.0.1,localhost,[::1]")
 
 INSTALLED_APPS = [
     "rest_framework",
@@ -65,7 +71,7 @@ DATABASES = {
     )
 }
 # The broker only carries messages to workers; losing it, or what it holds, loses no work.
-BROKER_URL = os.environ.get("REDIS_URL", "")
+BROKER_URL = broker_address()
 PLAN_LIMIT_S = whole_seconds("LABPLAN_PLAN_LIMIT_S", 30)
 OUTBOX_LEASE_S = whole_seconds("LABPLAN_LEASE_S", 120)
 DEFAULT_AUTO_FIELD = "django.db.models.BigAutoField"

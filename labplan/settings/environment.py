@@ -1,6 +1,7 @@
 """Check what the environment says; refuse nonsense at start, not in a request."""
 
 import os
+import re
 from zoneinfo import ZoneInfo
 
 from django.core.exceptions import ImproperlyConfigured
@@ -36,3 +37,24 @@ def one_of_words(variable: str, words: tuple[str, ...]) -> str:
     if given not in words:
         raise ImproperlyConfigured(f"{variable}={given!r}: give one of {', '.join(words)}.")
     return given
+
+
+def broker_address() -> str:
+    """Return REDIS_URL; empty when it is not set."""
+    given = os.environ.get("REDIS_URL") or ""
+    if given and not re.fullmatch(r"(redis|rediss|redis\+socket|unix)://\S+", given):
+        raise ImproperlyConfigured(
+            "REDIS_URL must look like redis://host:6379/0 or redis+socket:///path/of/the.sock."
+        )
+    return given
+
+
+def host_names(default: str) -> list[str]:
+    """Return the names that LABPLAN_HOSTS lists; a name alone, without port or spaces."""
+    names = [name.strip() for name in (os.environ.get("LABPLAN_HOSTS") or default).split(",")]
+    for name in names:
+        if not re.fullmatch(r"\.?[A-Za-z0-9][A-Za-z0-9.-]*|\[[0-9a-fA-F:.]+\]", name):
+            raise ImproperlyConfigured(
+                f"LABPLAN_HOSTS: {name!r} is no host name; give names with commas between them."
+            )
+    return names

@@ -15,7 +15,7 @@ def read_or_make_secret_key(folder: Path, name: str = "secret-key") -> str:
     path = folder / name
     if not path.exists():
         try:
-            folder.mkdir(parents=True, exist_ok=True)
+            folder.mkdir(mode=0o700, parents=True, exist_ok=True)
             # Written apart and then linked: a second process never reads half a key.
             handle, draft = tempfile.mkstemp(dir=folder)
         except OSError as error:

@@ -86,6 +86,13 @@ def _free_port() -> int:
         return port
 
 
+def _command_of(pid: int) -> str:
+    listed = subprocess.run(
+        ["ps", "-o", "comm=", "-p", str(pid)], capture_output=True, text=True, check=False
+    )
+    return listed.stdout
+
+
 def _gone(pids: list[int]) -> bool:
     give_up = time.monotonic() + LIMIT_S
     while any(is_alive(pid) for pid in pids):
@@ -109,8 +116,7 @@ def served(tmp_path: Path) -> Iterator[Served]:
 
 def test_a_person_starts_it_gets_a_token_asks_waits_and_stops_it(served: Served) -> None:
     said = served.read_until("create_token")
-    assert f"http://127.0.0.1:{served.port}/api/v1/ until Ctrl-C" in said
-    assert len(re.findall(r"http://[^/]+/api/v1/ ", said)) == 1
+    assert re.findall(r"http://\S+", said) == [f"http://127.0.0.1:{served.port}"]
     assert "manage.py create_person KIM" in said
     served.python("-c", FILL)
     token = served.python("manage.py", "create_token", "MIRA", "--name", "laptop")
@@ -141,6 +147,22 @@ def test_a_person_starts_it_gets_a_token_asks_waits_and_stops_it(served: Served)
     assert _gone(family)
 
 
+def test_a_broker_that_dies_is_started_again_and_what_waits_is_planned(served: Served) -> None:
+    served.read_until("create_token")
+    served.python("-c", FILL)
+    token = served.python("manage.py", "create_token", "MIRA", "--name", "laptop")
+    [broker] = [pid for pid in served.family() if "valkey-server" in _command_of(pid)]
+    os.kill(broker, signal.SIGKILL)
+    with served.ask(PROCEDURES, token, octyl_order(), **{"Idempotency-Key": "serve-0002"}) as got:
+        path = got.headers["Location"]
+    give_up = time.monotonic() + LIMIT_S
+    state = "queued"
+    while state == "queued" and time.monotonic() < give_up:
+        with served.ask(path, token, Prefer="wait=10") as got:
+            state = json.load(got)["state"]
+    assert state in {"planned", "short"}
+
+
 @pytest.mark.skipif(sys.platform != "linux", reason="only Linux ends children with their parent")
 def test_what_it_started_ends_with_it_when_it_is_killed(served: Served) -> None:
     served.read_until("create_token")
@@ -159,6 +181,7 @@ def test_what_it_started_ends_with_it_when_it_is_killed(served: Served) -> None:
         ([], {"DATABASE_URL": "sqlite:///{}/another.sqlite3"}, "run 'manage.py migrate'"),
         ([], {"LABPLAN_LEASE_S": "soon"}, "LABPLAN_LEASE_S='soon'"),
         ([], {"LABPLAN_LOG": "loud"}, "LABPLAN_LOG"),
+        ([], {"REDIS_URL": "redis://127.0.0.1:1/0"}, "does not answer"),
     ],
 )
 def test_what_it_cannot_do_is_said_at_once(

@@ -6,7 +6,7 @@ from typing import Any
 
 import pytest
 from django.core.exceptions import PermissionDenied
-from django.db import OperationalError
+from django.db import InterfaceError, OperationalError
 from django.http import Http404
 from django.test import RequestFactory
 from rest_framework import exceptions
@@ -43,6 +43,7 @@ CODES = {
     "idempotency_key_reused": 422,
     "request_running": 409,
     "busy": 503,
+    "database_away": 503,
     "stock_short": 409,
     "quota_exceeded": 422,
     "not_convertible": 422,
@@ -120,6 +121,9 @@ def caused_by(sqlstate: str) -> OperationalError:
         (caused_by("40P01"), 503, "busy"),
         (caused_by("40001"), 503, "busy"),
         (OperationalError("database is locked"), 503, "busy"),
+        (OperationalError("database or disk is full"), 503, "database_away"),
+        (caused_by("53300"), 503, "database_away"),  # too many connections
+        (InterfaceError("the connection is closed"), 503, "database_away"),
     ],
 )
 def test_what_the_frameworks_raise_gets_our_form(raised: Exception, status: int, code: str) -> None:
@@ -134,7 +138,7 @@ def test_what_the_frameworks_raise_gets_our_form(raised: Exception, status: int,
 
 
 @pytest.mark.parametrize(
-    "raised", [ValueError("a secret"), KeyError("x"), caused_by("53300"), OperationalError("gone")]
+    "raised", [ValueError("a secret"), KeyError("x"), OperationalError("no such table: x")]
 )
 def test_what_nobody_foresaw_is_left_to_the_server_error(raised: Exception) -> None:
     assert problems.problem_response(raised, {}) is None
@@ -181,4 +185,7 @@ def test_the_trace_of_a_server_error_is_the_id_of_the_request() -> None:
 
 def test_an_address_that_is_not_served_is_a_problem() -> None:
     body = body_of(problems.not_found(RequestFactory().get("/nowhere"), Http404()))
-    assert (body["status"], body["detail"]) == (404, "Nothing is served at /nowhere.")
+    assert body["status"] == 404
+    assert body["detail"] == (
+        "Nothing is served at /nowhere. The API is described at /api/v1/docs/."
+    )

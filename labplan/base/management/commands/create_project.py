@@ -30,7 +30,10 @@ class Command(LabCommand):
         members = [_read_member(text) for text in options["member"]]
         with transaction.atomic(durable=True):
             if Project.objects.filter(code=code).exists():
-                raise CommandError(f"There is a project {code} already.")
+                raise CommandError(
+                    f"There is a project {code} already; manage.py set_member says who may do "
+                    "what there."
+                )
             project = Project.objects.create(
                 code=code, title=checked_text(options["title"], 160), created_at=clock.now()
             )

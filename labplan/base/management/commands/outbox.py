@@ -50,6 +50,8 @@ class Command(LabCommand):
         numbers = options["numbers"]
         if options["all"]:
             numbers = list(outbox.list_dead().values_list("pk", flat=True))
+            if not numbers:
+                self.stdout.write("No dead letters.")
         elif not numbers:
             raise CommandError("Name the messages by their numbers, or give --all.")
         for number in numbers:

@@ -10,21 +10,20 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
+import redis
 from django.conf import settings
 from django.core.management import call_command
 from django.core.management.base import CommandError, CommandParser
 from django.db import connection
 from django.db.migrations.executor import MigrationExecutor
 
+from labplan.base import broker
 from labplan.base.commands import LabCommand
+from labplan.base.endings import asked_to_stop_by_signals
 from labplan.base.models import Person
 from labplan.operations import programs
 from labplan.operations.broker_server import BrokerServer, BrokerUnavailableError
-from labplan.operations.supervisor import (
-    ProgramFailsError,
-    Supervisor,
-    asked_to_stop_by_signals,
-)
+from labplan.operations.supervisor import Program, ProgramFailsError, Supervisor
 
 READY_LIMIT_S = 60
 
@@ -43,6 +42,8 @@ class Command(LabCommand):
     def handle(self, *args: Any, **options: Any) -> None:
         _check_numbers(options)
         _check_port(options["host"], options["port"])
+        if settings.BROKER_URL:
+            _require_broker()
         self._prepare_database()
         with tempfile.TemporaryDirectory(prefix="labplan-") as name:
             try:
@@ -54,14 +55,16 @@ class Command(LabCommand):
     def _serve(self, folder: Path, options: dict[str, Any]) -> None:
         listen = f"{options['host']}:{options['port']}"
         web_socket = folder / "web.sock"
-        with _broker(folder) as broker, _environment(folder, broker):
+        address, own_broker = _broker(folder)
+        with _environment(folder, address):
             supervisor = Supervisor(
                 [
+                    *own_broker,
                     programs.worker(processes=options["workers"]),
                     programs.scheduler(folder),
                     programs.relay(),
                     programs.web(web_socket, processes=options["web"]),
-                    programs.waiting(listen, web_socket, broker),
+                    programs.waiting(listen, web_socket, address),
                 ]
             )
             with asked_to_stop_by_signals(supervisor.stop_asked), supervisor.running():
@@ -97,11 +100,11 @@ class Command(LabCommand):
         call_command("migrate", verbosity=0)
 
     def _say_where(self, listen: str, options: dict[str, Any]) -> None:
-        broker = "the broker of REDIS_URL" if settings.BROKER_URL else "a broker of its own"
+        whose = "the broker of REDIS_URL" if settings.BROKER_URL else "a broker of its own"
         self.stdout.write(
-            f"\nlabplan serves at http://{listen}/api/v1/ until Ctrl-C\n"
-            f"({options['workers']} planning processes, {broker}).\n"
-            f"To read about it: http://{listen}/api/v1/docs/\n"
+            f"\nlabplan serves until Ctrl-C ({options['workers']} planning processes, {whose}):\n"
+            f"  ADDRESS=http://{listen}\n"
+            f"What it answers is described at /api/v1/docs/ there.\n"
         )
         python = _shown(os.environ.get("VIRTUAL_ENV", ".venv")) + "/bin/python"
         person = Person.objects.filter(is_active=True).order_by("pk").first()
@@ -117,18 +120,22 @@ class Command(LabCommand):
         self.stdout.write(f"  {python} manage.py create_token {code} --name laptop\n")
 
 
-@contextlib.contextmanager
-def _broker(folder: Path) -> Iterator[str]:
-    """The address of the broker that REDIS_URL names, else of one of our own."""
+def _broker(folder: Path) -> tuple[str, list[Program]]:
+    """The address of the broker that REDIS_URL names, else of one that is started with the rest."""
     if settings.BROKER_URL:
-        yield settings.BROKER_URL
-        return
+        return settings.BROKER_URL, []
     server = BrokerServer(folder)
-    server.start()
+    return server.address, [Program("broker", server.arguments)]
+
+
+def _require_broker() -> None:
     try:
-        yield server.address
-    finally:
-        server.stop()
+        broker.client().ping()
+    except redis.RedisError as error:
+        raise CommandError(
+            f"The broker that REDIS_URL names does not answer ({error}): start it, or unset "
+            "REDIS_URL and labplan starts one."
+        ) from error
 
 
 @contextlib.contextmanager
@@ -160,7 +167,11 @@ def _check_port(host: str, port: int) -> None:
         with socket.create_server((host, port)):
             return
     except (OSError, OverflowError) as error:
-        raise CommandError(f"{host}:{port} cannot be served on: {error}.") from error
+        why = error.strerror if isinstance(error, OSError) else str(error).rstrip(".")
+        raise CommandError(
+            f"{host}:{port} cannot be served on: {why}. Take another port: "
+            'make serve ARGS="--port 8001".'
+        ) from error
 
 
 def _is_ready(listen: str) -> bool:

@@ -12,6 +12,7 @@ from django.db import connection
 from rich.console import Console
 
 from labplan.base import clock
+from labplan.base.endings import asked_to_stop_by_signals
 from labplan.base.seal import seal_new
 from labplan.base.tokens import create_token
 from labplan.procedures.demo import scenario as demo_scenario
@@ -112,7 +113,8 @@ def _leave_files(console: Console, client: ApiClient, procedure: dict[str, Any])
 def _stay(console: Console, address: str, token: str) -> None:
     console.print(f"\nServing until Ctrl-C. For another terminal:\n  ADDRESS={address}")
     console.print(f"  TOKEN={token}", soft_wrap=True)
-    try:
-        threading.Event().wait()
-    except KeyboardInterrupt:
-        console.print("Stopped.")
+    stop = threading.Event()
+    with asked_to_stop_by_signals(stop):
+        while not stop.wait(0.2):
+            pass
+    console.print("Stopped.")
