@@ -67,6 +67,8 @@ class Customer(threading.Thread):
             if answer.status_code == 202:
                 return str(answer.json()["code"])
             assert answer.status_code in {409, 503}, answer.content
+            # What a web server does at the end of a request, and Django's test client does not.
+            connections.close_all()
             self.asked_again += 1
         raise AssertionError("a hundred times without an answer")
 
