@@ -100,8 +100,8 @@ def wanted_from_shelf(target: Target, wishes: Wishes = NO_WISHES) -> Wanted:
 
 
 _SUBSTANCE_FIELDS = (
-    "substance", "bicarbonate", "extraction_solvent", "brine_salt", "drying_agent",
-    "drying_solvent", "silica", "filter_aid", "reducing_agent",
+    "substance", "bicarbonate", "extraction_solvent", "acid_extraction_solvent",
+    "brine_salt", "drying_agent", "drying_solvent", "silica", "filter_aid", "reducing_agent",
 )  # fmt: skip
 
 

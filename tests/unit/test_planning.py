@@ -160,9 +160,9 @@ def test_all_shortages_are_listed_at_once() -> None:
 
 
 def test_one_bottle_used_twice_counts_once() -> None:
-    """One bottle of dichloromethane for reaction (73), rinse (14.6) and extraction (110 mL)."""
+    """One bottle of dichloromethane: reaction 73, syringe 3, rinse 14.6 and extraction 110 mL."""
     shelf = without(demo_shelf(), "DCM-2", "DCM-3")
-    enough, short = changed(shelf, "DCM-1", usable=197.6), changed(shelf, "DCM-1", usable=197.5)
+    enough, short = changed(shelf, "DCM-1", usable=200.6), changed(shelf, "DCM-1", usable=200.5)
     assert plan(enough).route.is_available  # type: ignore[union-attr]
     assert [s.role for s in plan(short).route.shortages] == ["rinse"]  # type: ignore[union-attr]
 
@@ -215,6 +215,36 @@ def test_what_peracetate_coupling_cannot_do_is_vetoed(smiles: str, code: str) ->
     assert planned.verdict == "not_plannable"
     assert code in [reason.code for reason in planned.reasons]
     assert planned.route is None
+
+
+FREE_GLUCOSIDE = "OC[C@H]1O[C@@H](O{})[C@H](O)[C@@H](O)[C@@H]1O"
+
+
+@pytest.mark.parametrize(
+    ("aglycone", "reason"),
+    [
+        ("CCCOC(C)=O", "Methoxide takes an acyl group off"),
+        ("CCCOC(=O)c2ccccc2", "Methoxide takes an acyl group off"),
+        ("CCCCC(=O)OCC", "Methoxide takes an acyl group off"),
+        ("CCCCC(=O)OC(C)C", "Methoxide takes an acyl group off"),
+        ("CCN2C(=O)c3ccccc3C2=O", "Methoxide opens the phthalimide"),
+        ("CCNC(=O)C(F)(F)F", "Methoxide takes off the trifluoroacetyl"),
+        ("CCOC(=O)OCC", "Methoxide opens the carbonate"),
+    ],
+)
+def test_what_methoxide_takes_is_refused_free_and_planned_acetylated(
+    aglycone: str, reason: str
+) -> None:
+    planned = plan(demo_shelf(), smiles=FREE_GLUCOSIDE.format(aglycone))
+    assert planned.verdict == "not_plannable"
+    assert [r.code for r in planned.reasons] == ["group_does_not_survive_deacetylation"]
+    assert planned.reasons[0].detail.startswith(reason)
+    assert plan(demo_shelf(), smiles=GLUCOSIDE.format(aglycone)).verdict == "plannable"
+
+
+@pytest.mark.parametrize("aglycone", ["CCCCC(=O)OC", "CCCCCCCC", "CCNC(C)=O"])
+def test_a_methyl_ester_and_an_acetamide_stand_methoxide(aglycone: str) -> None:
+    assert plan(demo_shelf(), smiles=FREE_GLUCOSIDE.format(aglycone)).verdict == "plannable"
 
 
 def test_a_refused_cis_target_names_what_does_it_elsewhere() -> None:

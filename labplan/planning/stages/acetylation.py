@@ -8,6 +8,7 @@ from labplan.planning import vessels
 from labplan.planning.methods import Method
 from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
+    BICARBONATE_G_PER_MOL,
     brine_salt_need,
     bulk_need,
     extraction_need,
@@ -26,6 +27,7 @@ HEAT_CAPACITY_J_PER_G_K = 2.0
 REVIEW_RISE_K = 50.0
 FLASK_FILL = 0.25  # room for the exotherm and for portions
 THIOSULFATE_G_PER_MOL = 248.18  # the pentahydrate
+WASTE_BASE_EXCESS = 1.1
 
 
 @dataclass(frozen=True)
@@ -141,7 +143,7 @@ def _add_work_up(
     brine_ml = ice_ml * float(work_up["brine_volume_share"])
     drying_mmol = plan.donor_mmol * float(work_up["drying_ml_per_mmol"])
     needs = [
-        extraction_need(work_up, extraction_ml),
+        extraction_need(work_up["extraction_solvent"], extraction_ml),
         bulk_need(
             "wash_base",
             "wash",
@@ -176,9 +178,31 @@ def _add_work_up(
         )
     for need in needs:
         sizer.add(need)
+    sizer.add(_waste_base_need(plan, sizer.charges))
     sizer.add_supply(water_need("ice_water", "quench, as ice and water", ice_ml))
     sizer.add_supply(water_need("wash_water", "wash", base_ml))
     sizer.add_supply(water_need("brine_water", "brine", brine_ml))
+
+
+def _waste_base_need(plan: AcetylationPlan, charges: dict[str, Charge]) -> Need:
+    """Bicarbonate for what acetic acid the wash does not take, and a tenth more."""
+    wash = charges.get("wash_base")
+    washed_mmol = (wash.mass_mg or 0.0) / BICARBONATE_G_PER_MOL if wash else 0.0
+    left_mmol = max(acetic_acid_mmol(plan, charges) - washed_mmol, 0.0)
+    return bulk_need(
+        "waste_base",
+        "neutralisation",
+        plan.method["work_up"]["bicarbonate"],
+        mass_mg=left_mmol * WASTE_BASE_EXCESS * BICARBONATE_G_PER_MOL,
+    )
+
+
+def acetic_acid_mmol(plan: AcetylationPlan, charges: dict[str, Charge]) -> float:
+    """All that the anhydride becomes in water, less the acetyls that stay on the sugar."""
+    anhydride, sugar = charges.get("anhydride"), charges.get("sugar")
+    acetyl = 2 * ((anhydride.amount_mmol if anhydride else None) or 0.0)
+    kept = plan.hydroxyls * ((sugar.amount_mmol if sugar else None) or 0.0)
+    return max(acetyl - kept, 0.0)
 
 
 def _stage(

@@ -67,13 +67,9 @@ def extraction_volume_ml(work_up: WorkUp, aqueous_ml: float) -> float:
     return aqueous_ml * float(work_up["extraction_volume_share"]) * int(work_up["extractions"])
 
 
-def extraction_need(work_up: WorkUp, volume_ml: float) -> Need:
+def extraction_need(solvent: str, volume_ml: float) -> Need:
     return bulk_need(
-        "extraction_solvent",
-        "extraction",
-        work_up["extraction_solvent"],
-        volume_ml=volume_ml,
-        outward=True,
+        "extraction_solvent", "extraction", solvent, volume_ml=volume_ml, outward=True
     )
 
 

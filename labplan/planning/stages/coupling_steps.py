@@ -7,11 +7,11 @@ open, stirred bicarbonate, never the reverse; peracetates show by charring only.
 import math
 
 from labplan.planning.figures import mass_text, three_figures
-from labplan.planning.stages.common import acceptor_carbons
+from labplan.planning.stages.common import acceptor_carbons, liquid_ml
 from labplan.planning.stages.coupling import CouplingPlan, eluent_kind
 from labplan.planning.steps import DO_NOT_STOP, MAY_STAND, UNATTENDED, Writer
 from labplan.planning.values import Quench, ShelfBottle, Stage, Step
-from labplan.planning.vessels import funnel_ml
+from labplan.planning.vessels import funnel_ml, quench_beaker_ml
 
 UV_GROUPS = frozenset({"Fmoc", "Cbz", "benzyl ester", "benzyl ether", "4-methoxybenzyl ether"})
 
@@ -140,8 +140,8 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
             if by_syringe
             else "in one portion, quickly: it takes up water from the air."
         ),
-        "Empty and rinse syringe and needle into the open quench at once." if by_syringe else "",
-        uses=("promoter",),
+        _rinse_syringe(writer),
+        uses=("promoter", "syringe_solvent"),
         watch="inside not above 5 °C; slow the addition if it climbs"
         if cold
         else "a rise of more than 5 K inside: cool",
@@ -161,6 +161,19 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         watch="stop as soon as the donor has gone or stays the same between two samples: longer "
         "contact turns product into its 1,2-cis form and takes off acetyl",
         pause=UNATTENDED,
+    )
+
+
+def _rinse_syringe(writer: Writer) -> str:
+    """Into bicarbonate, never into plain water, with which the promoter reacts violently."""
+    if not writer.has("syringe_solvent"):
+        return ""
+    where = "open quench, stirred"
+    if writer.has("syringe_base"):
+        where = "stirred bicarbonate that stands ready for it, never into the quench of plain water"
+    return (
+        f"Rinse syringe and needle at once with {writer.text('syringe_solvent')}, in two portions, "
+        f"dropwise into the {where}."
     )
 
 
@@ -208,7 +221,8 @@ def _make_quench_ready(writer: Writer, plan: CouplingPlan, quench: Quench) -> No
             "Make the quench ready",
             f"Put {writer.text('quench_water')} into an open {quench.vessel_ml} mL plastic beaker "
             "in an ice bath: the product is an acid and would be lost in bicarbonate.",
-            uses=("quench_water",),
+            _syringe_beaker(writer),
+            uses=("quench_water", "syringe_base", "syringe_water"),
         )
         return
     writer.add(
@@ -216,7 +230,18 @@ def _make_quench_ready(writer: Writer, plan: CouplingPlan, quench: Quench) -> No
         f"Stir {writer.text('quench_base')} with {writer.text('quench_water')} in an open "
         f"{quench.vessel_ml} mL beaker in an ice bath{_slurry(writer, quench)}.",
         uses=("quench_base", "quench_water"),
-        pause=MAY_STAND,
+    )
+
+
+def _syringe_beaker(writer: Writer) -> str:
+    """The quench of an acid is plain water: what the syringe holds needs a base of its own."""
+    if not writer.has("syringe_base"):
+        return ""
+    liquid = [writer.by_key[key] for key in ("syringe_water", "syringe_solvent")]
+    return (
+        f"Stir {writer.text('syringe_base')} with {writer.text('syringe_water')} in a second, open "
+        f"{quench_beaker_ml(liquid_ml(liquid))} mL plastic beaker, for the syringe and for spills: "
+        "the promoter reacts violently with plain water."
     )
 
 
@@ -225,8 +250,11 @@ def _quench(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
         writer.add(
             "Quench",
             f"{_filtering(writer)} Do this before any water: hydrogen fluoride etches glass.",
+            f"Thin the filtrate with {writer.text('dilution_solvent')}, so that it parts from water."
+            if writer.has("dilution_solvent")
+            else "",
             POUR,
-            uses=("filter_aid", "rinse_solvent"),
+            uses=("filter_aid", "rinse_solvent", "dilution_solvent"),
             watch="from here to the neutralised water layers: the water is strongly acid and holds "
             "hydrogen fluoride; plastic vessels and funnels only, laminate gloves, face shield",
         )
@@ -259,44 +287,66 @@ def _has_fluoride(plan: CouplingPlan) -> bool:
 
 def _extract(writer: Writer, plan: CouplingPlan) -> None:
     charges = writer.by_key
-    organic_ml = (charges["solvent"].volume_ml or 0) + (
-        charges["extraction_solvent"].volume_ml or 0
-    )
+    organic_ml = liquid_ml(
+        [c for key, c in charges.items() if key in ("solvent", "dilution_solvent")]
+    ) + (charges["extraction_solvent"].volume_ml or 0)
     largest_ml = organic_ml + max(
         charges["quench_water"].volume_ml or 0, charges["brine_water"].volume_ml or 0
     )
-    filtering = "" if plan.has_acid else _filtering(writer)
-    material = "plastic " if plan.has_acid else ""
-    funnel = f"in a {funnel_ml(largest_ml)} mL {material}funnel, venting it often"
-    mixes_with_water = charges["solvent"].substance == "acetonitrile"
+    if plan.has_acid:
+        _extract_acid(writer, plan, largest_ml)
+        return
+    funnel = f"in a {funnel_ml(largest_ml)} mL funnel, venting it often"
     writer.add(
         "Extract",
-        filtering,
+        _filtering(writer),
         "Evaporate the acetonitrile at 40 °C or below (from 230 mbar on): it mixes with water and "
         f"would hold the product there. Then work {funnel}."
-        if mixes_with_water
+        if plan.mixes_with_water
         else f"Separate the layers {funnel}.",
         "Extract the water layer three times with a third each of "
         f"{writer.text('extraction_solvent')}, and wash the combined organic layers once with "
-        f"brine made from {writer.text('brine_salt')} and {writer.text('brine_water')}.",
-        "An emulsion: let it stand, add a little brine, or filter it again."
-        if not plan.has_acid
-        else "Use water and brine only, no base.",
+        f"{_brine(writer)}.",
+        "An emulsion: let it stand, add a little brine, or filter it again.",
         "Then wash in three equal portions with "
         f"{writer.text('azide_water')}, to take out what is left of the azido alcohol."
         if writer.has("azide_water")
         else "",
         uses=(
-            *(() if plan.has_acid else ("filter_aid", "rinse_solvent")),
-            "extraction_solvent",
-            "brine_salt",
-            "brine_water",
-            "azide_water",
+            *("filter_aid", "rinse_solvent", "extraction_solvent"),
+            *("brine_salt", "brine_water", "azide_water"),
         ),
-        watch="the layers may change places with toluene: test with a drop of water"
-        if charges["solvent"].substance == "toluene"
-        else "dichloromethane is the lower layer",
+        watch=_layers(plan),
     )
+
+
+def _extract_acid(writer: Writer, plan: CouplingPlan, largest_ml: float) -> None:
+    """No base, since the product is an acid; acid fluoride is washed out before any vacuum."""
+    writer.add(
+        "Extract",
+        f"Separate the layers in a {funnel_ml(largest_ml)} mL plastic funnel, venting it often. "
+        "Extract the water layer three times with a third each of "
+        f"{writer.text('extraction_solvent')}. Wash the combined organic layers in three equal "
+        f"portions with {writer.text('acid_wash_water')}, then once with {_brine(writer)}. Use "
+        "water and brine only, no base.",
+        "The last wash must show pH 4 or above on paper: if it does not, wash again with water. "
+        "Evaporate nothing before: acid fluoride in it would go into flask and pump as hydrogen "
+        "fluoride.",
+        uses=("extraction_solvent", "acid_wash_water", "brine_salt", "brine_water"),
+        watch=f"keep all water layers for the next step; {_layers(plan)}",
+    )
+
+
+def _brine(writer: Writer) -> str:
+    return f"brine made from {writer.text('brine_salt')} and {writer.text('brine_water')}"
+
+
+def _layers(plan: CouplingPlan) -> str:
+    if plan.is_diluted:
+        return "ethyl acetate is the upper layer; with no second layer add brine"
+    if plan.solvent["substance"] == "toluene":
+        return "the layers may change places with toluene: test with a drop of water"
+    return "dichloromethane is the lower layer"
 
 
 def _filtering(writer: Writer) -> str:
