@@ -259,7 +259,7 @@ def test_an_azide_is_worked_behind_a_shield_and_never_stands() -> None:
     (stage,) = planned.route.stages  # type: ignore[union-attr]
     text = " ".join(step.text for step in stage.steps)
     assert "behind a shield" in text
-    assert "Azide waste apart" in text
+    assert "Azide waste, in a container of its own" in text
     assert "2-azidoethanol, solution, 1 mol/L in toluene (bottle AZE-1)" in text
     concentrate = next(step for step in stage.steps if step.title == "Dry and concentrate")
     assert concentrate.pause == "do not stop"
@@ -340,7 +340,8 @@ def test_equivalents_are_met_within_the_step_of_the_syringe(mass_mg: float, agly
             continue
         step = rounding.volume_step_ml(charge.volume_ml)
         off = abs(charge.equivalents / charge.equivalents_planned - 1)  # type: ignore[operator]
-        assert off <= 0.5 * step / charge.volume_ml * 1.02 + 1e-9
+        least_exact_ml = charge.volume_ml - 0.5 * step  # what was rounded up to the volume
+        assert off <= 0.5 * step / least_exact_ml * 1.001 + 1e-9
 
 
 @given(st.floats(min_value=1e-3, max_value=1e6), st.sampled_from([0.01, 0.1, 1.0, 10.0]))
@@ -368,7 +369,7 @@ def test_steps_name_no_amount_that_is_not_in_the_table() -> None:
     allowed = {amount_text(charge) for charge in stage.charges}
     # vessels, the funnel, the bed of the column, the gas, what a clear quench would take
     allowed |= {f"{stage.vessel_ml} mL", f"{stage.quench.vessel_ml} mL", "500 mL", "304 mL"}
-    allowed |= {"1.77 L", f"{stage.quench.clear_solution_ml:.0f} mL"}
+    allowed |= {"1.8 L", f"{stage.quench.clear_solution_ml:.0f} mL"}
     allowed |= {"3.804 g", "2.000 g", "1.667 g", "2.333 g"}
     named = {
         amount

@@ -1,10 +1,11 @@
 """Size the peracetylation of a free sugar: hydrate water eats anhydride, the heat is counted."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from labplan.chemistry.amounts import Content
 from labplan.chemistry.coupling import Target
 from labplan.planning import vessels
+from labplan.planning.bottles import check_no_crystal_water
 from labplan.planning.methods import Method
 from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
@@ -88,7 +89,7 @@ def size_acetylation(
     sugar = sizer.add(sugar_need(plan.target, plan.sugar_mmol))
     sugar_n = (sugar.amount_mmol if sugar else None) or plan.sugar_mmol
     anhydride = sizer.add(_anhydride_need(plan, sugar_n, _water_per_sugar(sugar)))
-    sizer.add(_reagent_need(plan, sugar_n))
+    _add_reagent(plan, sizer, sugar_n)
     anhydride_ml = (anhydride.volume_ml if anhydride else None) or 1.0
     _add_work_up(plan, sizer, anhydride_ml, sugar_n)
     if not {"sugar", "anhydride", "reagent"} <= set(sizer.charges):
@@ -119,6 +120,13 @@ def _anhydride_need(plan: AcetylationPlan, sugar_mmol: float, water: float) -> N
     )
 
 
+def _add_reagent(plan: AcetylationPlan, sizer: Sizer, sugar_mmol: float) -> None:
+    """The salt of the hot way is named anhydrous: its trihydrate is the commoner bottle."""
+    reagent = sizer.add(_reagent_need(plan, sugar_mmol))
+    if reagent is not None and plan.method["order"] == "hot":
+        sizer.charges["reagent"] = replace(reagent, name=f"{reagent.name}, anhydrous")
+
+
 def _reagent_need(plan: AcetylationPlan, sugar_mmol: float) -> Need:
     reagent = plan.method["reagent"]
     return Need(
@@ -130,6 +138,7 @@ def _reagent_need(plan: AcetylationPlan, sugar_mmol: float) -> Need:
         amount_mmol=sugar_mmol * float(reagent["equiv"]),
         equivalents_planned=float(reagent["equiv"]),
         equivalents_of="sugar",
+        checks=(check_no_crystal_water,) if plan.method["order"] == "hot" else (),
     )
 
 

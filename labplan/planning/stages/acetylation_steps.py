@@ -1,13 +1,23 @@
 """The peracetylation as numbered steps: hot salt and anhydride first, sugar in portions."""
 
+import math
+
+from labplan.planning.evaporation import from_pressures
 from labplan.planning.figures import mass_text, two_figures
 from labplan.planning.stages.acetylation import AcetylationPlan, acetic_acid_mmol
 from labplan.planning.stages.common import MOLAR_VOLUME_25C_L_PER_MOL, liquid_ml
-from labplan.planning.steps import MAY_STAND, UNATTENDED, Writer
+from labplan.planning.steps import (
+    BREATHED_IN,
+    MAY_STAND,
+    UNATTENDED,
+    Writer,
+    toxic_sentence,
+)
 from labplan.planning.values import Stage, Step
 from labplan.planning.vessels import BEAKERS_ML, funnel_ml, smallest_that_holds
 
 PORTIONS = 5
+BATH_C = 40
 LATE_HEAT = (
     "If a portion gives no rise within 10 min or stays undissolved, add no more until it has gone: "
     "the heat can come late"
@@ -33,7 +43,7 @@ def _prepare(writer: Writer, stage: Stage) -> None:
         "Before you start",
         "Read the supplier's safety data sheet of every bottle named here and compare codes and "
         "labels with the table. Work in a hood with goggles and gloves; acetic anhydride burns "
-        "eyes and skin and its vapour is harmful.",
+        f"eyes and skin. {toxic_sentence(writer.by_key['anhydride'])} {BREATHED_IN}",
         f"Fit a {stage.vessel_ml} mL three-necked flask with stirring bar, reflux condenser, "
         "internal thermometer and a stopper, a drying tube on the condenser, on a bath that can be "
         "dropped at once.",
@@ -73,6 +83,7 @@ def _hot(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
 
 
 def _in_portions(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+    room_c = plan.method["temperature_c"]
     hours = plan.method["duration_h"]
     writer.add(
         "Dissolve the iodine",
@@ -89,8 +100,8 @@ def _in_portions(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
     )
     writer.add(
         "Let it come to room temperature",
-        "After the last portion keep it in the ice bath until the inside has stayed below 10 °C "
-        f"for 30 min. Then take the bath away and let it come to {plan.method['temperature_c']} °C; "
+        "After the last portion keep it in the ice bath until the inside has stayed below "
+        f"10 °C for 30 min. Then take the bath away and let it come to {room_c} °C; "
         "stay with it and watch the thermometer until the inside has not climbed for 1 h, with the "
         "ice bath ready beneath.",
         watch="inside above 30 °C, or climbing faster than 1 K in a minute: back into the ice. "
@@ -153,12 +164,16 @@ def _neutralise_water_layers(writer: Writer, plan: AcetylationPlan) -> None:
 
 def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
     times = int(plan.method["work_up"]["drying_times"])
+    share_ml = math.floor((writer.by_key["drying_solvent"].volume_ml or 0.0) / times)
+    solvents = tuple(
+        writer.by_key[key].substance for key in ("extraction_solvent", "drying_solvent")
+    )
     writer.add(
         "Dry the peracetate",
-        f"Dry over {writer.text('drying_agent')} for 15 min, filter and evaporate at 40 °C or "
-        f"below. Take it down {times} times with a share each of {writer.text('drying_solvent')}: "
-        "water or an alcohol left in it would take part in the coupling. Dry to constant mass in "
-        "vacuum.",
+        f"Dry over {writer.text('drying_agent')} for 15 min, filter and evaporate at {BATH_C} °C "
+        f"or below ({from_pressures(solvents, BATH_C)}). Take it down with "
+        f"{writer.text('drying_solvent')}, {times} × {share_ml:.0f} mL: water or an alcohol left "
+        "in it would take part in the coupling. Dry to constant mass in vacuum.",
         uses=("drying_agent", "drying_solvent"),
         watch="foams in vacuum: open the pump slowly",
         pause=MAY_STAND,

@@ -16,6 +16,7 @@ from labplan.planning.stages.common import (
     bulk_need,
     extraction_need,
     extraction_volume_ml,
+    leaves_in_work_up,
     liquid_ml,
     readable,
     salt_ions,
@@ -168,6 +169,7 @@ def _dry_solvent_need(key: str, group: str, plan: CouplingPlan, volume_ml: float
             bottles.check_water_at_most(float(str(plan.solvent["water_ppm_max"]))),
         ),
         prefer_dry=True,
+        as_another=key != "solvent",
     )
 
 
@@ -277,13 +279,34 @@ def _add_filtration(sizer: Sizer, plan: CouplingPlan, reaction_ml: float) -> Non
 
 
 def _gross_crude_mg(plan: CouplingPlan, sizer: Sizer, donor_mmol: float) -> float:
-    """All product that could form and the alcohol left over: what the column has to carry."""
+    """All that could be left: product in full, the alcohol that stays, the 1,2-cis donor."""
     target, acceptor = plan.target, sizer.charges.get("acceptor")
     left_over_mg = 0.0
-    if acceptor and acceptor.amount_mmol:
+    if acceptor and acceptor.amount_mmol and not leaves_in_work_up(target):
         left_over = max(acceptor.amount_mmol - donor_mmol, 0.0)
         left_over_mg = left_over * target.acceptor.molar_mass_g_per_mol
-    return donor_mmol * target.glycoside.molar_mass_g_per_mol + left_over_mg
+    cis_mmol = donor_mmol * (100 / _active_share_pct(plan, sizer) - 1)
+    return (
+        donor_mmol * target.glycoside.molar_mass_g_per_mol
+        + left_over_mg
+        + cis_mmol * target.donor.molar_mass_g_per_mol
+    )
+
+
+def _active_share_pct(plan: CouplingPlan, sizer: Sizer) -> float:
+    """The share of the donor that reacts; the rest, mostly 1,2-cis, comes out as it went in."""
+    donor = sizer.charges.get("donor")
+    content = donor.bottle.content if donor and donor.bottle else plan.made_donor
+    return (content.active_share_pct if content else None) or 100.0
+
+
+def _gross_means(plan: CouplingPlan, sizer: Sizer) -> str:
+    parts = ["product in full"]
+    if not leaves_in_work_up(plan.target):
+        parts.append("the alcohol that is left over")
+    if _active_share_pct(plan, sizer) < 100:
+        parts.append("the donor in its forms that do not react")
+    return " and ".join((", ".join(parts[:-1]), parts[-1])) if parts[1:] else parts[0]
 
 
 def _add_purification(sizer: Sizer, plan: CouplingPlan, gross_mg: float) -> None:
@@ -328,7 +351,6 @@ def _stage(
         promoter_mmol=charges["promoter"].amount_mmol or 0.0,
         donor_mmol=donor_mmol,
         as_of=sizer.as_of,
-        used_up_per_water=float(method["promoter"]["used_up_per_water"]),
     )
     stage = Stage(
         number=plan.stage_number,
@@ -344,13 +366,17 @@ def _stage(
         vessel_ml=vessels.reaction_flask_ml(liquid_ml(reaction)),
         yield_pct=yield_triple(method["yield_pct"]),
         gross_mass_mg=gross_mg,
-        gross_means="product in full, and the alcohol that is left over",
+        gross_means=_gross_means(plan, sizer),
         water=water,
         quench=_quench(plan, charges, reaction, acid_mmol),
         ions=_ions(target),
     )
     warnings = dryness.dryness_warnings(
-        water, charges, catalytic=bool(method["promoter"]["catalytic"])
+        water,
+        charges,
+        catalytic=bool(method["promoter"]["catalytic"]),
+        used_up_per_water=float(method["promoter"]["used_up_per_water"]),
+        yield_pct=stage.yield_pct[1],
     )
     return stage, [*warnings, *_method_warnings(method), *_stage_warnings(stage, method)]
 

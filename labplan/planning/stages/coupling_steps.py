@@ -6,11 +6,24 @@ open, stirred bicarbonate, never the reverse; peracetates show by charring only.
 
 import math
 
-from labplan.planning.figures import mass_text, three_figures
-from labplan.planning.stages.common import acceptor_carbons, liquid_ml
-from labplan.planning.stages.coupling import CouplingPlan, eluent_kind
-from labplan.planning.steps import DO_NOT_STOP, MAY_STAND, UNATTENDED, Writer
-from labplan.planning.values import Quench, ShelfBottle, Stage, Step
+from labplan.planning.evaporation import from_pressures, pressure_mbar
+from labplan.planning.figures import in_sentence, mass_text, two_figures
+from labplan.planning.stages.common import (
+    WATER_SOLUBLE_CARBONS,
+    acceptor_carbons,
+    leaves_in_work_up,
+    liquid_ml,
+)
+from labplan.planning.stages.coupling import WATER_MISCIBLE, CouplingPlan, eluent_kind
+from labplan.planning.steps import (
+    BREATHED_IN,
+    DO_NOT_STOP,
+    MAY_STAND,
+    UNATTENDED,
+    Writer,
+    toxic_sentence,
+)
+from labplan.planning.values import Charge, Quench, ShelfBottle, Stage, Step
 from labplan.planning.vessels import funnel_ml, quench_beaker_ml
 
 UV_GROUPS = frozenset({"Fmoc", "Cbz", "benzyl ester", "benzyl ether", "4-methoxybenzyl ether"})
@@ -30,6 +43,7 @@ def coupling_steps(plan: CouplingPlan, stage: Stage, gel: ShelfBottle | None) ->
         _neutralise_water_layers(writer, stage.quench)
     _concentrate(writer, plan, stage)
     _purify(writer, plan, stage)
+    _sort_waste(writer, plan)
     _finish(writer, plan, stage)
     return tuple(writer.steps)
 
@@ -66,8 +80,8 @@ def _gel_sentence(plan: CouplingPlan, gel: ShelfBottle | None) -> str:
         where = f"Calcium gluconate gel stands in {gel.place} (bottle {gel.code}{until})"
     return (
         f"{where}: BF3 etherate gives hydrogen fluoride with water. On skin: flush at once, rub in "
-        "the gel, then a doctor. In the eyes: rinse for 15 min, no gel, then a doctor. Breathed "
-        "in: fresh air, then a doctor. Wear a face shield while it is transferred."
+        "the gel, then a doctor. In the eyes: rinse for 15 min, no gel, then a doctor. "
+        f"{BREATHED_IN} Wear a face shield while it is transferred."
     )
 
 
@@ -98,6 +112,7 @@ def _charge_flask(writer: Writer, plan: CouplingPlan) -> None:
         "Charge donor and alcohol",
         _before_the_azide(plan),
         f"Weigh {donor}, into the flask and purge with argon. {provisional}".strip(),
+        toxic_sentence(acceptor),
         f"Add {writer.text('solvent')}, then {writer.text('acceptor')}, {how}.",
         sieves,
         "Stir for 30 min at room temperature under a slow stream of argon.",
@@ -134,6 +149,7 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
     writer.add(
         "Add the promoter",
         "Cool to 0 °C (inside) in an ice bath." if cold else "",
+        toxic_sentence(promoter),
         f"Add {writer.text('promoter')} "
         + (
             f"by syringe, dropwise over about {minutes} min."
@@ -142,9 +158,7 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         ),
         _rinse_syringe(writer),
         uses=("promoter", "syringe_solvent"),
-        watch="inside not above 5 °C; slow the addition if it climbs"
-        if cold
-        else "a rise of more than 5 K inside: cool",
+        watch=_rise(by_syringe, cold),
     )
     hours = method["duration_h"]
     writer.add(
@@ -162,6 +176,15 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         "contact turns product into its 1,2-cis form and takes off acetyl",
         pause=UNATTENDED,
     )
+
+
+def _rise(by_syringe: bool, cold: bool) -> str:
+    """A solid that goes in at once cannot be slowed: only cooled."""
+    if cold and by_syringe:
+        return "inside not above 5 °C; slow the addition if it climbs"
+    if cold:
+        return "inside not above 10 °C: more ice to the bath, which stands ready before you add"
+    return "a rise of more than 5 K inside: cool"
 
 
 def _rinse_syringe(writer: Writer) -> str:
@@ -201,10 +224,13 @@ def _is_aromatic(plan: CouplingPlan) -> bool:
     return "c1" in plan.target.acceptor.smiles
 
 
-POUR = (
-    "Cool the reaction back to 0 °C and pour it INTO the stirred, open quench in portions of "
-    "about a tenth, over 10 to 15 min; never the reverse, never in a closed vessel."
-)
+def _pour(plan: CouplingPlan) -> str:
+    was_cold = plan.method["temperature_c"]["addition"] < 10
+    start = "Cool the reaction back to 0 °C and pour it" if was_cold else "Pour the reaction"
+    return (
+        f"{start} INTO the stirred, open quench in portions of about a tenth, over 10 to 15 min; "
+        "never the reverse, never in a closed vessel."
+    )
 
 
 def _slurry(writer: Writer, quench: Quench) -> str:
@@ -250,10 +276,10 @@ def _quench(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
         writer.add(
             "Quench",
             f"{_filtering(writer)} Do this before any water: hydrogen fluoride etches glass.",
-            f"Thin the filtrate with {writer.text('dilution_solvent')}, so that it parts from water."
+            f"Thin the filtrate with {writer.text('dilution_solvent')}: so it parts from water."
             if writer.has("dilution_solvent")
             else "",
-            POUR,
+            _pour(plan),
             uses=("filter_aid", "rinse_solvent", "dilution_solvent"),
             watch="from here to the neutralised water layers: the water is strongly acid and holds "
             "hydrogen fluoride; plastic vessels and funnels only, laminate gloves, face shield",
@@ -261,8 +287,8 @@ def _quench(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
         return
     writer.add(
         "Quench",
-        POUR,
-        f"Up to {three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
+        _pour(plan),
+        f"Up to {two_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
         "Stir until the gas has stopped and the water layer is at pH 7 or above; if it is not, add "
         "solid sodium hydrogencarbonate by the spatula.",
         watch="foam: wait between portions"
@@ -274,8 +300,9 @@ def _neutralise_water_layers(writer: Writer, quench: Quench) -> None:
     writer.add(
         "Neutralise the water layers",
         f"Stir {writer.text('quench_base')} with {writer.text('neutralising_water')} in an open "
-        f"{quench.vessel_ml} mL plastic beaker and pour the water layers INTO it in portions. Up "
-        f"to {three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
+        f"{quench.vessel_ml} mL plastic beaker and pour the water layers, and what rinsed the "
+        f"syringe, INTO it in portions. Up to {two_figures(quench.carbon_dioxide_l)} L of carbon "
+        "dioxide leaves.",
         uses=("quench_base", "neutralising_water"),
         watch="foam; pH 7 or above at the end",
     )
@@ -300,7 +327,8 @@ def _extract(writer: Writer, plan: CouplingPlan) -> None:
     writer.add(
         "Extract",
         _filtering(writer),
-        "Evaporate the acetonitrile at 40 °C or below (from 230 mbar on): it mixes with water and "
+        f"Evaporate the acetonitrile at {_bath_c(plan)} °C or below (from "
+        f"{pressure_mbar(WATER_MISCIBLE, _bath_c(plan)):.0f} mbar on): it mixes with water and "
         f"would hold the product there. Then work {funnel}."
         if plan.mixes_with_water
         else f"Separate the layers {funnel}.",
@@ -358,59 +386,80 @@ def _filtering(writer: Writer) -> str:
     )
 
 
+def _bath_c(plan: CouplingPlan) -> int:
+    return 30 if _has_azide(plan) else 40
+
+
 def _concentrate(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
     azide = _has_azide(plan)
     writer.add(
         "Dry and concentrate",
         f"Dry the organic layer over {writer.text('drying_agent')} for 15 min, filter, and "
-        "evaporate: bath "
-        + ("30 °C or below, behind the shield." if azide else "40 °C or below.")
-        + " Dichloromethane from 800 mbar on"
-        + (", toluene from 80 mbar on" if writer.by_key["solvent"].substance == "toluene" else "")
-        + "; then 1 h at the oil pump.",
+        f"evaporate: bath {_bath_c(plan)} °C or below"
+        + (", behind the shield" if azide else "")
+        + f"; {from_pressures(_organic_solvents(writer, plan), _bath_c(plan))}; then 1 h at the "
+        "oil pump.",
         "What the condenser and the pump trap hold contains azido alcohol: azide waste."
         if azide
         else "",
-        f"Weigh the crude: about {mass_text(round(stage.gross_mass_mg))} "
-        f"({stage.gross_means}); much more means that solvent is left.",
+        f"Weigh the crude: at most {mass_text(round(stage.gross_mass_mg))} "
+        f"({stage.gross_means}); more means that solvent is left.",
         uses=("drying_agent",),
         watch="the crude does not keep in contact with acid; dry and cold it does",
         pause=DO_NOT_STOP if azide else MAY_STAND,
     )
 
 
+def _organic_solvents(writer: Writer, plan: CouplingPlan) -> tuple[str, ...]:
+    """What the organic layer is made of; a solution of the acceptor brings its solvent."""
+    charges = writer.by_key
+    found = [charges["extraction_solvent"].substance]
+    if not plan.mixes_with_water or plan.is_diluted:
+        found.append(charges["solvent"].substance)
+    acceptor = charges["acceptor"].bottle
+    if acceptor is not None and acceptor.solvent:
+        found.append(acceptor.solvent)
+    return tuple(dict.fromkeys(found))
+
+
 def _purify(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
     column = plan.method["purification"]
-    eluents = tuple(key for key in writer.by_key if key.startswith("eluent_"))
+    eluents = _eluents(writer)
     silica_g = (writer.by_key["silica"].mass_mg or 0.0) / 1000
     bed_ml = silica_g * float(column["bed_ml_per_g_silica"])
     height = float(column["bed_height_cm"])
-    diameter_cm = math.sqrt(4 * bed_ml / (math.pi * height))
+    diameter_cm = round(2 * math.sqrt(4 * bed_ml / (math.pi * height))) / 2
     gradient = column["gradient" if eluent_kind(plan.target) == "eluent" else "polar_gradient"]
     writer.add(
         "Purify",
         f"Take {writer.text('silica')}: dry-load the crude on about a twentieth of it, the rest "
-        f"packed to {height:.0f} cm ({bed_ml:.0f} mL) in a column of {diameter_cm:.1f} cm.",
-        f"Elute with {' and '.join(writer.text(key) for key in eluents)}, mixed {gradient} by "
-        f"volume, a third of the whole each; fractions of a tenth of the bed.",
+        f"packed to {height:.0f} cm ({bed_ml:.0f} mL) in a column of about "
+        f"{diameter_cm:g} cm inner diameter.",
+        f"Elute with {' and '.join(writer.text(charge.key) for charge in eluents)}, mixed as "
+        f"{'/'.join(_plain(charge.substance) for charge in eluents)} {gradient} by volume, a third "
+        "of the whole each; fractions of a tenth of the bed.",
         "A free acid streaks: put 0.5 % of acetic acid into the eluent." if plan.has_acid else "",
         alcohol_left_over(plan),
         " ".join(plan.method["left_over"]),
-        uses=("silica", *eluents),
+        uses=("silica", *(charge.key for charge in eluents)),
         watch="acetate of the alcohol runs in front of the product, donor and hemiacetal behind "
         "it, the alcohol where a reference shows it; do not leave the product on the silica; pool "
         "only what shows one spot",
     )
 
 
+def _plain(substance: str) -> str:
+    return substance.removeprefix("n-").replace("-", " ")
+
+
 def alcohol_left_over(plan: CouplingPlan) -> str:
-    """What becomes of the excess acceptor, by its size and polarity (common practice)."""
+    """What becomes of the excess acceptor, by its size and boiling point (common practice)."""
     target = plan.target
     if _is_amino_acid(plan):
         return "The protected amino acid that is left can run with its glycoside: check by LC-MS."
-    if acceptor_carbons(target) <= 4:
+    if acceptor_carbons(target) <= WATER_SOLUBLE_CARBONS:
         return "What is left of the alcohol has gone with the water layers."
-    if acceptor_carbons(target) <= 7:
+    if leaves_in_work_up(target):
         return "What is left of the alcohol goes partly with the water, the rest at the oil pump."
     return (
         "What is left of the alcohol can run close to the product and does not leave at the oil "
@@ -418,26 +467,94 @@ def alcohol_left_over(plan: CouplingPlan) -> str:
     )
 
 
-def _finish(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
+_METALS = {"indium-tribromide": "indium", "bismuth-triflate": "bismuth"}
+
+
+def _sort_waste(writer: Writer, plan: CouplingPlan) -> None:
+    """Every liquid and solid that the stage leaves, each into one kind of waste."""
     writer.add(
-        "Dry, weigh and record",
-        "Evaporate the pure fractions at 30 °C or below behind the shield, dry in vacuum and weigh."
-        if _has_azide(plan)
-        else "Evaporate the pure fractions at 40 °C or below, dry to constant mass in vacuum and "
-        "weigh.",
-        f"Expected: {mass_text(round(stage.expected_mass_mg))} of {stage.product_name} "
-        f"({mass_text(round(stage.expected_low_mg))} to "
-        f"{mass_text(round(stage.expected_high_mg))}). Enter what was really weighed and measured.",
-        "Waste: dichloromethane distillate and rinses to halogenated; heptane and ethyl acetate to "
-        "non-halogenated flammable"
-        + (
-            "; water layers to aqueous fluoride, not acidified; sieves, filter cake and drying "
-            "agent carry fluoride too"
-            if _has_fluoride(plan)
-            else "; water layers to aqueous metal waste"
-        )
-        + "; silica to solid waste once the solvent is off."
-        + (" Azide waste apart, never to acid, copper or lead." if _has_azide(plan) else ""),
+        "Sort the waste",
+        _azide_waste(plan) if _has_azide(plan) else _distillates(writer, plan),
+        "" if _has_azide(plan) else _water_waste(writer, plan),
+        _solid_waste(writer, plan),
         watch="the waste rules of your house come first",
         pause=MAY_STAND,
     )
+
+
+def _left_in_waste(plan: CouplingPlan) -> str:
+    return "fluoride" if _has_fluoride(plan) else _METALS[plan.method["promoter"]["substance"]]
+
+
+def _azide_waste(plan: CouplingPlan) -> str:
+    return (
+        "Azide waste, in a container of its own (label: azide, dichloromethane, "
+        f"{_left_in_waste(plan)}): the water layers and all that condenser and pump trap hold; "
+        "never to acid, copper or lead, never into the halogenated drum. Heptane and ethyl acetate "
+        "without azide to non-halogenated flammable."
+    )
+
+
+def _distillates(writer: Writer, plan: CouplingPlan) -> str:
+    if plan.is_diluted:
+        return (
+            "Ethyl acetate, with what is left of the acetonitrile, and heptane to non-halogenated "
+            "flammable."
+        )
+    solvents = _organic_solvents(writer, plan)
+    beside = " and ".join(name for name in solvents if name != "dichloromethane")
+    return (
+        f"Dichloromethane distillate{f', with the {beside} in it,' if beside else ''} and rinses "
+        "to halogenated; "
+        + ("acetonitrile distillate, " if plan.mixes_with_water else "")
+        + "heptane and ethyl acetate to non-halogenated flammable."
+    )
+
+
+def _water_waste(writer: Writer, plan: CouplingPlan) -> str:
+    text = (
+        "Water layers, neutralised, to aqueous fluoride, never acidified"
+        if _has_fluoride(plan)
+        else f"Water layers to aqueous metal waste ({_left_in_waste(plan)})"
+    )
+    if leaves_in_work_up(plan.target):
+        alcohol = in_sentence(writer.by_key["acceptor"].name)
+        text += (
+            f"; they and the distillate hold the {alcohol} that is left: write it on both labels"
+        )
+    return f"{text}."
+
+
+def _solid_waste(writer: Writer, plan: CouplingPlan) -> str:
+    solids = [
+        name
+        for key, name in (("sieves", "sieves"), ("filter_aid", "filter cake"))
+        if writer.has(key)
+    ]
+    cake = " and ".join([*([", ".join(solids)] if solids else []), "drying agent"])
+    carry = "they carry" if solids else "it carries"
+    kind = "fluoride" if _has_fluoride(plan) else "metal"
+    return (
+        f"{cake[0].upper()}{cake[1:]} to solid {kind} waste: {carry} {_left_in_waste(plan)}. "
+        "Silica to solid waste once the solvent is off."
+    )
+
+
+def _finish(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
+    solvents = tuple(charge.substance for charge in _eluents(writer))
+    where = ", behind the shield" if _has_azide(plan) else ""
+    writer.add(
+        "Dry, weigh and record",
+        f"Evaporate the pure fractions at {_bath_c(plan)} °C or below{where} "
+        f"({from_pressures(solvents, _bath_c(plan))}), dry "
+        + ("in vacuum" if _has_azide(plan) else "to constant mass in vacuum")
+        + " and weigh.",
+        f"Expected: {mass_text(round(stage.expected_mass_mg))} of {stage.product_name} "
+        f"({mass_text(round(stage.expected_low_mg))} to "
+        f"{mass_text(round(stage.expected_high_mg))}). Enter what was really weighed and measured.",
+        pause=MAY_STAND,
+    )
+
+
+def _eluents(writer: Writer) -> list[Charge]:
+    return [charge for key, charge in writer.by_key.items() if key.startswith("eluent_")]
