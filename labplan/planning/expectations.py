@@ -88,9 +88,11 @@ def _side_products(target: Target, halide: str | None) -> tuple[SideProduct, ...
 
 def _tells_the_acetate(target: Target) -> str:
     """A protected amino acid ionises, absorbs, and is too polar to run at the front."""
+    is_amino_acid = bool({"Fmoc", "Cbz"} & set(target.acceptor_groups))
     if target.acceptor_acids:
-        return "seen by ESI and at 254 nm; an acid: streaks, near the acceptor"
-    if {"Fmoc", "Cbz"} & set(target.acceptor_groups):
+        at_254 = " and at 254 nm" if is_amino_acid else ""
+        return f"seen by ESI{at_254}; an acid: streaks, near the acceptor"
+    if is_amino_acid:
         return "seen by ESI ([M+Na]+) and at 254 nm; runs between the acceptor and the front"
     return "often unseen by ESI; runs at the front"
 

@@ -27,7 +27,10 @@ def toxic_sentence(charge: Charge) -> str:
         return ""
     word, routes, codes = found
     how = " or ".join((", ".join(routes[:-1]), routes[-1])) if routes[1:] else routes[0]
-    return f"{charge.name} is {word} {how} ({', '.join(codes)}): hood and the right gloves."
+    return (
+        f"{charge.name} is {word} {how} ({', '.join(codes)}): hood and the right gloves; after any "
+        "contact a doctor at once."
+    )
 
 
 def amount_text(charge: Charge) -> str:

@@ -1,6 +1,7 @@
 """Where everything goes that a coupling leaves, at which pressure, and what the crude weighs."""
 
 import re
+from itertools import product
 
 import pytest
 
@@ -34,11 +35,14 @@ def waste(stage: Stage) -> str:
     return next(step.text for step in stage.steps if step.title == "Sort the waste")
 
 
-@pytest.mark.parametrize("promoter", PROMOTERS[1:])
-@pytest.mark.parametrize("solvent", SOLVENTS)
+# The triflate alkylates toluene: there is no such method.
+PAIRS = [
+    pair for pair in product(PROMOTERS[1:], SOLVENTS) if pair != ("bismuth-triflate", "toluene")
+]
+
+
+@pytest.mark.parametrize(("promoter", "solvent"), PAIRS)
 def test_every_solvent_and_solid_of_a_coupling_has_its_waste(promoter: str, solvent: str) -> None:
-    if promoter == "bismuth-triflate" and solvent == "toluene":
-        return  # the triflate alkylates toluene: no such plan
     text = waste(coupling("OCT-1", promoter, solvent))
     assert solvent in text.lower()
     for part in ("dichloromethane", "heptane", "ethyl acetate", "filter cake", "drying agent"):

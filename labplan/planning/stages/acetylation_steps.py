@@ -33,8 +33,9 @@ def acetylation_steps(plan: AcetylationPlan, stage: Stage) -> tuple[Step, ...]:
     else:
         _in_portions(writer, plan, stage)
     _work_up(writer, plan)
+    _dry(writer, plan)
     _neutralise_water_layers(writer, plan)
-    _dry(writer, plan, stage)
+    _weigh(writer, plan, stage)
     return tuple(writer.steps)
 
 
@@ -162,7 +163,7 @@ def _neutralise_water_layers(writer: Writer, plan: AcetylationPlan) -> None:
     )
 
 
-def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+def _dry(writer: Writer, plan: AcetylationPlan) -> None:
     times = int(plan.method["work_up"]["drying_times"])
     share_ml = math.floor((writer.by_key["drying_solvent"].volume_ml or 0.0) / times)
     solvents = tuple(
@@ -178,6 +179,9 @@ def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
         watch="foams in vacuum: open the pump slowly",
         pause=MAY_STAND,
     )
+
+
+def _weigh(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
     writer.add(
         "Weigh, check and rescale",
         f"Expected: {mass_text(round(stage.expected_mass_mg))} of "
