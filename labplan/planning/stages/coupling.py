@@ -66,6 +66,18 @@ class CouplingPlan:
         return self.target.acceptor_acids > 0
 
     @property
+    def has_azide(self) -> bool:
+        return "azide" in self.target.acceptor_groups
+
+    @property
+    def is_amino_acid(self) -> bool:
+        return bool({"Fmoc", "Cbz"} & set(self.target.acceptor_groups))
+
+    @property
+    def has_fluoride(self) -> bool:
+        return bool(self.method["promoter"]["gel"])
+
+    @property
     def mixes_with_water(self) -> bool:
         return self.solvent["substance"] == WATER_MISCIBLE
 
@@ -238,7 +250,7 @@ def _add_work_up(sizer: Sizer, plan: CouplingPlan, reaction_ml: float, acid_mmol
         sizer.add(need)
     _add_filtration(sizer, plan, reaction_ml)
     sizer.add_supply(water_need("quench_water", "quench", reaction_ml))
-    if "azide" in plan.target.acceptor_groups:
+    if plan.has_azide:
         sizer.add_supply(water_need("azide_water", "wash", reaction_ml * AZIDE_WASHES_SHARE))
     if plan.has_acid:
         washes_ml = reaction_ml * ACID_WASHES_SHARE
