@@ -19,6 +19,9 @@ from labplan.chemistry.structures import Structure, describe, read_molecule
 from labplan.chemistry.sugars import SugarRing, find_residue_of, find_sugar_rings
 
 _ACETATE = Chem.MolFromSmarts("[OX2;!R]-[CX3](=[OX1])-[CH3]")
+_S_GLYCOSIDE = Chem.MolFromSmarts(
+    "[SX2]-[CX4;R1]1-[OX2;R1]-[CX4;R1]-[CX4;R1]([OX2,N])-[CX4;R1]([OX2,N])-[CX4;R1]1"
+)
 _HYDROXYL = Chem.MolFromSmarts("[OX2H]")
 _ACID = Chem.MolFromSmarts("[CX3](=O)[OX2H]")
 _ALCOHOL = Chem.MolFromSmarts("[OX2H;!$([OX2H]C=O)]")
@@ -68,6 +71,12 @@ def read_target(smiles: str) -> Target:
     """
     mol = read_molecule(smiles)
     rings = find_sugar_rings(mol)
+    if not rings and mol.HasSubstructMatch(_S_GLYCOSIDE):
+        raise TargetProblem(
+            "s_glycoside",
+            "The target is an S-glycoside (thioglycoside): sulfur stands at its anomeric carbon. "
+            "Only O-glycosides are planned so far.",
+        )
     if not rings:
         raise TargetProblem(
             "no_sugar",

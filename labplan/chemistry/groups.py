@@ -11,6 +11,13 @@ _GROUPS = {
     "benzyl ester": "[#6][CX3](=O)[OX2][CH2]c1ccccc1",
     "benzyl ether": "[CX4;!$(C(=O))][OX2;!$(O-C=O)][CH2]c1ccc([!$(O[CH3])])cc1",
     "allyl ester": "[#6][CX3](=O)[OX2][CH2][CH]=[CH2]",
+    # Of an acid or on an alcohol; methyl, tert-butyl, benzyl and allyl have their own rows.
+    "acyl or alkyl ester": "[CX3;$([CX3][#6]),$([CX3H1])](=O)[OX2][#6;!$([CH3]);!$([CX3]=O);"
+    "!$([CX4]([CH3])([CH3])[CH3]);!$([CH2]c1ccccc1);!$([CH2][CH]=[CH2])]",
+    "methyl ester": "[#6][CX3](=O)[OX2][CH3]",
+    "carbonate": "[OX2][CX3](=O)[OX2]",
+    "phthalimide": "[#7]1C(=O)c2ccccc2C1=O",
+    "trifluoroacetamide": "[#7][CX3](=O)C(F)(F)F",
     "alkene": "[CX3;!$(C=O)]=[CX3]",
     "alkyne": "C#C",
     "trityl": "[CX4](c1ccccc1)(c1ccccc1)c1ccccc1",

@@ -27,6 +27,7 @@ class ReferenceSubstance:
     density_g_per_ml: float | None
     density_temperature_c: float | None
     density_source: str | None
+    boiling_point_c: float | None
     search_keys: frozenset[str]
     tags: frozenset[str]
 
@@ -107,6 +108,7 @@ def _read(row: dict[str, object]) -> ReferenceSubstance:
         density_g_per_ml=density.get("value"),
         density_temperature_c=density.get("temperature_c"),
         density_source=density.get("source"),
+        boiling_point_c=properties.get("boiling_point_c", {}).get("value"),
         search_keys=frozenset(search_key(str(name)) for name in names),
         tags=frozenset(row["tags"]),  # type: ignore[call-overload]
     )

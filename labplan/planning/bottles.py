@@ -131,6 +131,13 @@ def check_no_alcohol_stabiliser(bottle: ShelfBottle, as_of: date) -> str | None:
     return None
 
 
+def check_no_crystal_water(bottle: ShelfBottle, as_of: date) -> str | None:
+    """Three moles of water a mole of sodium acetate would eat as much anhydride."""
+    if bottle.content is not None and bottle.content.hydrate_water > 0:
+        return "holds water of crystallisation, which takes the anhydride; take an anhydrous one"
+    return None
+
+
 def check_water_at_most(limit_ppm: float) -> Check:
     def check(bottle: ShelfBottle, as_of: date) -> str | None:
         water = water_now_ppm(bottle, as_of)

@@ -5,6 +5,7 @@ from datetime import date
 from labplan.chemistry.amounts import mass_mg_of_volume
 from labplan.chemistry.masses import WATER_MOLAR_MASS_G_PER_MOL
 from labplan.planning.bottles import water_now_ppm
+from labplan.planning.figures import in_sentence, mass_text
 from labplan.planning.values import Charge, RouteWarning, Water
 
 # Warn over 25 % of a stoichiometric promoter, 10 % of a catalytic one, 5 % of the donor
@@ -16,7 +17,6 @@ DONOR_LIMIT_PCT = 5
 
 def water_of(
     charges: list[Charge], *, promoter_mmol: float, donor_mmol: float, as_of: date,
-    used_up_per_water: float,
 ) -> Water:  # fmt: skip
     """Sum the water [mmol] that the liquid and measured charges bring."""
     lines = tuple(
@@ -26,7 +26,7 @@ def water_of(
     return Water(
         lines=lines,
         total_mmol=total,
-        promoter_share_pct=100 * total * used_up_per_water / promoter_mmol,
+        promoter_share_pct=100 * total / promoter_mmol,
         donor_share_pct=100 * total / donor_mmol,
     )
 
@@ -60,28 +60,40 @@ def _water_mmol(charge: Charge, as_of: date) -> float | None:
 
 
 def dryness_warnings(
-    water: Water, charges: dict[str, Charge], *, catalytic: bool
+    water: Water,
+    charges: dict[str, Charge],
+    *,
+    catalytic: bool,
+    used_up_per_water: float,
+    yield_pct: float,
 ) -> list[RouteWarning]:
-    """Say what the water costs where it matters, and where no reading counts."""
+    """Say what the water costs where it matters, what to dry, and where no reading counts."""
     limit = CATALYTIC_LIMIT_PCT if catalytic else STOICHIOMETRIC_LIMIT_PCT
     found = []
     if water.promoter_share_pct > limit:
+        costs = (
+            f"The water counted takes {water.promoter_share_pct:.1f} % of the promoter"
+            if used_up_per_water
+            else f"The water counted is {water.promoter_share_pct:.0f} % of the promoter by "
+            "amount: it does not use it up but slows it and makes a protic acid of it"
+        )
         found.append(
             RouteWarning(
                 "water_takes_promoter",
                 "caution",
-                f"The water counted takes {water.promoter_share_pct:.1f} % of the promoter "
-                f"(limit {limit} %): dry the solvent over activated sieves first.",
+                f"{costs} (limit {limit} %): {_what_to_dry(water, charges)}.",
             )
         )
     if water.donor_share_pct > DONOR_LIMIT_PCT:
+        left_pct = yield_pct * max(1 - water.donor_share_pct / 100, 0.0)
         found.append(
             RouteWarning(
                 "water_takes_donor",
                 "caution",
                 f"The water counted could take {water.donor_share_pct:.1f} % of the donor as "
-                f"hemiacetal (limit {DONOR_LIMIT_PCT} %): dry what brings it first; a hydrated "
-                "salt to constant mass in vacuum at 100 °C.",
+                f"hemiacetal (limit {DONOR_LIMIT_PCT} %). The yield printed is that of a dry run: "
+                f"as charged it may be {left_pct:.0f} % instead of {yield_pct:.0f} %. First "
+                f"{_what_to_dry(water, charges)}.",
             )
         )
     unknown = [charges[key] for key, mmol in water.lines if mmol is None]
@@ -96,3 +108,20 @@ def dryness_warnings(
             )
         )
     return found
+
+
+def _what_to_dry(water: Water, charges: dict[str, Charge]) -> str:
+    """The charge that brings the most water; of a dried hydrate, what is then weighed."""
+    key, _ = max(water.lines, key=lambda line: line[1] or 0.0)
+    charge = charges[key]
+    bottle = charge.bottle
+    code = f" ({bottle.code})" if bottle else ""
+    name = in_sentence(charge.name)
+    if not _hydrate_mmol(charge) or bottle is None or bottle.content is None:
+        return f"dry the {name}{code} over activated sieves, or take a drier bottle"
+    dry_mg = (charge.amount_mmol or 0.0) * bottle.content.molar_mass_g_per_mol
+    return (
+        f"dry the {name}{code} to constant mass in vacuum at 100 °C and then weigh "
+        f"{mass_text(dry_mg)} of it in place of {mass_text(charge.mass_mg or 0.0)}, or take a "
+        "bottle without water of crystallisation"
+    )

@@ -80,10 +80,21 @@ def _side_products(target: Target, halide: str | None) -> tuple[SideProduct, ...
         ),
         SideProduct(
             "acetate of the acceptor", _shift(acceptor.formula, C=2, H=2, O=1),
-            acceptor.monoisotopic_mass_da + acetyl, "often unseen by ESI; runs at the front",
+            acceptor.monoisotopic_mass_da + acetyl, _tells_the_acetate(target),
         ),
         *_glycosyl_halide(donor, halide),
     )  # fmt: skip
+
+
+def _tells_the_acetate(target: Target) -> str:
+    """A protected amino acid ionises, absorbs, and is too polar to run at the front."""
+    is_amino_acid = bool({"Fmoc", "Cbz"} & set(target.acceptor_groups))
+    if target.acceptor_acids:
+        at_254 = " and at 254 nm" if is_amino_acid else ""
+        return f"seen by ESI{at_254}; an acid: streaks, near the acceptor"
+    if is_amino_acid:
+        return "seen by ESI ([M+Na]+) and at 254 nm; runs between the acceptor and the front"
+    return "often unseen by ESI; runs at the front"
 
 
 def _glycosyl_halide(donor: Structure, halide: str | None) -> tuple[SideProduct, ...]:

@@ -36,6 +36,15 @@ def volume_text(volume_ml: float) -> str:
     return f"{volume_ml:.1f} mL" if volume_ml <= 50 else f"{volume_ml:.0f} mL"
 
 
+def two_figures(value: float) -> str:
+    """For what is only an upper bound.
+
+    >>> two_figures(2.208), two_figures(12.7), two_figures(0.342)
+    ('2.2', '13', '0.34')
+    """
+    return f"{float(f'{value:.2g}'):g}"
+
+
 def three_figures(value: float) -> str:
     return f"{value:.3g}"
 

@@ -1,6 +1,7 @@
 """From a target, a scale and a shelf to routes. A pure function of its arguments and the data."""
 
-from collections.abc import Callable
+import math
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass, replace
 from datetime import date
 
@@ -9,6 +10,7 @@ from labplan.chemistry.donors import difference_from_donor
 from labplan.planning import vessels
 from labplan.planning.bottles import check_usable
 from labplan.planning.expectations import expect
+from labplan.planning.figures import in_sentence, mass_text
 from labplan.planning.methods import (
     Method,
     acetylation_for,
@@ -19,7 +21,8 @@ from labplan.planning.methods import (
     method_row,
     solvent_of,
 )
-from labplan.planning.sizing import Sizer
+from labplan.planning.rounding import LEAST_WEIGHABLE_MG, SOLID_STEP_MG, round_to_step
+from labplan.planning.sizing import Sizer, TooSmall
 from labplan.planning.stages.acetylation import (
     AcetylationPlan,
     made_donor_content,
@@ -100,8 +103,8 @@ def wanted_from_shelf(target: Target, wishes: Wishes = NO_WISHES) -> Wanted:
 
 
 _SUBSTANCE_FIELDS = (
-    "substance", "bicarbonate", "extraction_solvent", "brine_salt", "drying_agent",
-    "drying_solvent", "silica", "filter_aid", "reducing_agent",
+    "substance", "bicarbonate", "extraction_solvent", "acid_extraction_solvent",
+    "brine_salt", "drying_agent", "drying_solvent", "silica", "filter_aid", "reducing_agent",
 )  # fmt: skip
 
 
@@ -178,6 +181,7 @@ class _Attempt:
         method: Method,
     ) -> None:
         self.target, self.method, self.as_of = target, method, as_of
+        self.scale = scale
         self.sizer = Sizer(shelf, as_of)
         self.solvent = solvent_of(method, wishes)
         self.after = deacetylation_method() if target.needs_deacetylation else None
@@ -213,7 +217,7 @@ class _Attempt:
     def route(self) -> tuple[Route | None, tuple[Reason, ...]]:
         """The sized route, with its shortages; None with the reasons when the scale is unfit."""
         stages, warnings = self._stages()
-        unfit = _too_small(self.sizer.too_small) + _too_large(stages)
+        unfit = _too_small(self.sizer.too_small, self.scale) + _too_large(stages)
         if unfit:
             return None, unfit
         route = Route(
@@ -333,16 +337,40 @@ class _Attempt:
         return found
 
 
-def _too_small(names: list[str]) -> tuple[Reason, ...]:
-    if not names:
+def _too_small(found: list[TooSmall], scale: Scale) -> tuple[Reason, ...]:
+    """Which charges are too small, and from which scale on none of them would be."""
+    if not found:
         return ()
-    return (
-        Reason(
-            "below_least_weighable",
-            f"Too little to weigh well (under 20 mg): {', '.join(dict.fromkeys(names))}. Ask for "
-            "more.",
-        ),
+    weighed = _names(line for line in found if not line.is_solution)
+    measured = _names(line for line in found if line.is_solution)
+    # The least that each can have been before it was rounded.
+    half_step = SOLID_STEP_MG / 2
+    factor = LEAST_WEIGHABLE_MG / min(max(line.mass_mg - half_step, half_step) for line in found)
+    parts = (
+        f"Too little to weigh well (under 20 mg): {weighed}." if weighed else "",
+        f"Too little to measure (under 0.05 mL and 20 mg): the solution of {measured}; thin it "
+        "with its own dry solvent and book that as a bottle."
+        if measured
+        else "",
+        f"Ask for about {_least_scale(scale, factor)} or more.",
     )
+    return (Reason("below_least_weighable", " ".join(part for part in parts if part)),)
+
+
+def _names(found: Iterable[TooSmall]) -> str:
+    return ", ".join(dict.fromkeys(in_sentence(line.name) for line in found))
+
+
+def _least_scale(scale: Scale, factor: float) -> str:
+    """The scale times a factor, to two figures and upwards: every charge goes with it."""
+    wanted = scale.product_mass_mg or scale.acceptor_amount_mmol or 0.0
+    # A little more: what it is reckoned from is rounded too.
+    exact = wanted * factor * 1.02
+    step = 10.0 ** (math.floor(math.log10(exact)) - 1)
+    least = round_to_step(exact, step, outward=True)
+    if scale.product_mass_mg is not None:
+        return f"{mass_text(least)} of product"
+    return f"{least:g} mmol of acceptor"
 
 
 def _too_large(stages: list[Stage]) -> tuple[Reason, ...]:

@@ -36,6 +36,16 @@ class Need:
     checks: tuple[Check, ...] = ()
     prefer_dry: bool = False
     optional: bool = False
+    as_another: bool = False  # a second share of another need: what is passed over is said there
+
+
+@dataclass(frozen=True)
+class TooSmall:
+    """A charge under the least weighable mass, a solution too small for the syringe among them."""
+
+    name: str
+    mass_mg: float
+    is_solution: bool
 
 
 class Sizer:
@@ -52,7 +62,7 @@ class Sizer:
         self.charges: dict[str, Charge] = {}
         self.shortages: list[Shortage] = []
         self.passed_over: list[PassedOver] = []
-        self.too_small: list[str] = []
+        self.too_small: list[TooSmall] = []
 
     def begin_stage(self, kind: str) -> None:
         """Start a new set of charges; what earlier stages took stays taken."""
@@ -70,7 +80,8 @@ class Sizer:
     def add(self, need: Need) -> Charge | None:
         """Choose a bottle and size the charge; without a bottle note the shortage, size it bare."""
         choice = self._choose(need)
-        self.passed_over += choice.passed_over
+        if not need.as_another:
+            self.passed_over += choice.passed_over
         if choice.bottle is None:
             if not need.optional:
                 self.shortages.append(_shortage(self._stage, need, choice))
@@ -118,7 +129,10 @@ class Sizer:
     def _keep(self, charge: Charge) -> None:
         self.charges[charge.key] = charge
         if is_too_small(charge):
-            self.too_small.append(charge.name)
+            form = charge.bottle.content.form if charge.bottle and charge.bottle.content else ""
+            self.too_small.append(
+                TooSmall(charge.name, charge.mass_mg or 0.0, is_solution=form == "solution")
+            )
 
     def _choose(self, need: Need) -> Choice:
         return choose_bottle(

@@ -8,10 +8,29 @@ from labplan.planning.figures import (
     volume_text,
 )
 from labplan.planning.values import Charge, Step
+from labplan.safety.hazards import acute_toxicity
 
 MAY_STAND = "may stand overnight"
 DO_NOT_STOP = "do not stop"
 UNATTENDED = "may stir overnight, under your house's rule for unattended reactions"
+
+
+BREATHED_IN = (
+    "Breathed in: fresh air and a doctor at once, even if well (the lungs can fill hours later)."
+)
+
+
+def toxic_sentence(charge: Charge) -> str:
+    """What the step that opens a bottle says of a substance that is fatal or toxic, else ""."""
+    found = acute_toxicity(charge.substance)
+    if found is None:
+        return ""
+    word, routes, codes = found
+    how = " or ".join((", ".join(routes[:-1]), routes[-1])) if routes[1:] else routes[0]
+    return (
+        f"{charge.name} is {word} {how} ({', '.join(codes)}): hood and the right gloves; after any "
+        "contact a doctor at once."
+    )
 
 
 def amount_text(charge: Charge) -> str:

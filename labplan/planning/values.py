@@ -126,7 +126,7 @@ class Charge:
 
 @dataclass(frozen=True)
 class Water:
-    """Where the water comes from and what it costs, in % of promoter (or reagent) and substrate."""
+    """Where the water comes from, and its amount in % of that of the promoter and of the donor."""
 
     lines: tuple[tuple[str, float | None], ...]  # (charge key, mmol or None when unknown)
     total_mmol: float

@@ -74,6 +74,22 @@ def hazards_of(substance: str, name: str) -> Hazards:
     )
 
 
+_ROUTES = {
+    "fatal": {"H300": "if swallowed", "H310": "in contact with skin", "H330": "if inhaled"},
+    "toxic": {"H301": "if swallowed", "H311": "in contact with skin", "H331": "if inhaled"},
+}
+
+
+def acute_toxicity(substance: str) -> tuple[str, list[str], list[str]] | None:
+    """The worst word that counts ("fatal", "toxic"), by which ways, and their codes; else None."""
+    codes = {s.code for s in hazards_of(substance, substance).hazard_statements}
+    for word, ways in _ROUTES.items():
+        found = [code for code in ways if code in codes]
+        if found:
+            return word, [ways[code] for code in found], found
+    return None
+
+
 def _unknown(substance: str, name: str, row: dict[str, Any] | None) -> Hazards:
     return Hazards(
         substance=substance,

@@ -122,7 +122,7 @@ def test_the_sheet_is_given_whatever_is_accepted(lab: Laboratory, planned: dict[
 def test_the_sheet_names_every_charge_with_amount_and_bottle(
     lab: Laboratory, planned: dict[str, Any]
 ) -> None:
-    assert_every_charge_is_on(sheet_of(lab, planned), planned["document"], count=16)
+    assert_every_charge_is_on(sheet_of(lab, planned), planned["document"], count=17)
 
 
 def test_the_sheet_of_three_stages_names_all_their_charges(lab: Laboratory) -> None:
@@ -130,7 +130,7 @@ def test_the_sheet_of_three_stages_names_all_their_charges(lab: Laboratory) -> N
     stages = shown["document"]["route"]["stages"]
     assert [stage["number"] for stage in stages] == [1, 2, 3]
     source = sheet_of(lab, shown)
-    assert_every_charge_is_on(source, shown["document"], count=33)
+    assert_every_charge_is_on(source, shown["document"], count=35)
     text = Page(source).text
     for stage in stages:
         assert squeezed(stage["product"]["name"]) in squeezed(text)

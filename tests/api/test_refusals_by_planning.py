@@ -201,7 +201,7 @@ def test_what_cannot_be_weighed_is_refused(scale: dict[str, Any], lab: Laborator
     assert shown["state"] == "refused"
     assert [reason["code"] for reason in shown["reasons"]] == ["below_least_weighable"]
     assert "under 20 mg" in shown["reasons"][0]["detail"]
-    assert "Penta-O-acetyl-beta-D-glucopyranose" in shown["reasons"][0]["detail"]
+    assert "penta-O-acetyl-beta-D-glucopyranose" in shown["reasons"][0]["detail"]
     assert_nothing_held(lab, before, shown)
 
 

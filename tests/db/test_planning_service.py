@@ -392,11 +392,11 @@ def test_a_refusal_by_the_rules_of_chemistry_is_no_shortage(live_lab: Laboratory
     assert Movement.objects.count() == movements
 
 
-@pytest.mark.parametrize(("left_ml", "end"), [(200, "planned"), (150, "short")])
+@pytest.mark.parametrize(("left_ml", "end"), [(201, "planned"), (150, "short")])
 def test_one_bottle_for_two_lines_is_counted_for_both(
     live_lab: Laboratory, left_ml: int, end: str
 ) -> None:
-    """73 mL as the solvent, 110 to extract, 14.6 to rinse: each fits into 150 mL, all do not."""
+    """73 mL to react in, 3 for the syringe, 110 to extract, 14.6 to rinse: 150 mL hold each."""
     for code, left_nl in (("DCM-3", 1_000), ("DCM-2", 1_000), ("DCM-1", left_ml * 1_000_000)):
         bottle = live_lab.bottle(code)
         free = bottle.balance.on_hand - bottle.balance.held - bottle.heel
@@ -412,7 +412,7 @@ def test_one_bottle_for_two_lines_is_counted_for_both(
     assert (procedure.state, procedure.attempt) == (end, 1)
     holds = Hold.objects.filter(reservation__code=procedure.reservation_code, bottle_id=before.pk)
     amounts = list(holds.order_by("line").values_list("amount", flat=True))
-    assert amounts == ([73_000_000, 110_000_000, 14_600_000] if end == "planned" else [])
+    assert amounts == ([73_000_000, 3_000_000, 110_000_000, 14_600_000] if end == "planned" else [])
     after = live_lab.bottle("DCM-1").balance
     assert (after.held - before.held, after.seq - before.seq) == (sum(amounts), len(amounts))
 

@@ -7,6 +7,7 @@ from rdkit import Chem
 
 from labplan.chemistry.coupling import read_target
 from labplan.chemistry.errors import TargetProblem
+from labplan.chemistry.groups import find_groups
 from labplan.chemistry.structures import describe_smiles
 from tests.targets import OCTYL_GLUCOSIDE
 
@@ -171,3 +172,26 @@ def test_numbers_on_atoms_are_no_part_of_the_structure() -> None:
     assert ":17]" in numbered
     assert read_target(numbered) == plain
     assert read_target(OCTYL_GLUCOSIDE.replace("CCCCCCCCO", "[CH3:5]CCCCCCCO", 1)) == plain
+
+
+@pytest.mark.parametrize(
+    ("smiles", "groups"),
+    [
+        ("OCCCOC(C)=O", {"acyl or alkyl ester"}),
+        ("OCCCC(=O)OCC", {"acyl or alkyl ester"}),
+        ("OCCC1CCC(=O)O1", {"acyl or alkyl ester"}),
+        ("OCCc1ccc(OC(C)=O)cc1", {"acyl or alkyl ester"}),
+        ("OCCCC(=O)OC", {"methyl ester"}),
+        ("OCCCC(=O)OC(C)(C)C", {"tert-butyl ester or ether"}),
+        ("OCCCC(=O)OCc1ccccc1", {"benzyl ester"}),
+        ("OCCCC(=O)OCC=C", {"allyl ester", "alkene"}),
+        ("OCCCC(=O)O", {"carboxylic acid"}),
+        ("OCCNC(=O)OCc1ccccc1", {"Cbz"}),
+        ("OCCOC(=O)OCC", {"carbonate"}),
+        ("OCCN1C(=O)c2ccccc2C1=O", {"phthalimide"}),
+        ("OCCNC(=O)C(F)(F)F", {"trifluoroacetamide"}),
+        ("OCCNC(C)=O", set()),
+    ],
+)
+def test_each_ester_and_amide_has_its_own_group(smiles: str, groups: set[str]) -> None:
+    assert set(find_groups(Chem.MolFromSmiles(smiles))) == groups

@@ -160,9 +160,9 @@ def test_all_shortages_are_listed_at_once() -> None:
 
 
 def test_one_bottle_used_twice_counts_once() -> None:
-    """One bottle of dichloromethane for reaction (73), rinse (14.6) and extraction (110 mL)."""
+    """One bottle of dichloromethane: reaction 73, syringe 3, rinse 14.6 and extraction 110 mL."""
     shelf = without(demo_shelf(), "DCM-2", "DCM-3")
-    enough, short = changed(shelf, "DCM-1", usable=197.6), changed(shelf, "DCM-1", usable=197.5)
+    enough, short = changed(shelf, "DCM-1", usable=200.6), changed(shelf, "DCM-1", usable=200.5)
     assert plan(enough).route.is_available  # type: ignore[union-attr]
     assert [s.role for s in plan(short).route.shortages] == ["rinse"]  # type: ignore[union-attr]
 
@@ -217,6 +217,36 @@ def test_what_peracetate_coupling_cannot_do_is_vetoed(smiles: str, code: str) ->
     assert planned.route is None
 
 
+FREE_GLUCOSIDE = "OC[C@H]1O[C@@H](O{})[C@H](O)[C@@H](O)[C@@H]1O"
+
+
+@pytest.mark.parametrize(
+    ("aglycone", "reason"),
+    [
+        ("CCCOC(C)=O", "Methoxide takes an acyl group off"),
+        ("CCCOC(=O)c2ccccc2", "Methoxide takes an acyl group off"),
+        ("CCCCC(=O)OCC", "Methoxide takes an acyl group off"),
+        ("CCCCC(=O)OC(C)C", "Methoxide takes an acyl group off"),
+        ("CCN2C(=O)c3ccccc3C2=O", "Methoxide opens the phthalimide"),
+        ("CCNC(=O)C(F)(F)F", "Methoxide takes off the trifluoroacetyl"),
+        ("CCOC(=O)OCC", "Methoxide opens the carbonate"),
+    ],
+)
+def test_what_methoxide_takes_is_refused_free_and_planned_acetylated(
+    aglycone: str, reason: str
+) -> None:
+    planned = plan(demo_shelf(), smiles=FREE_GLUCOSIDE.format(aglycone))
+    assert planned.verdict == "not_plannable"
+    assert [r.code for r in planned.reasons] == ["group_does_not_survive_deacetylation"]
+    assert planned.reasons[0].detail.startswith(reason)
+    assert plan(demo_shelf(), smiles=GLUCOSIDE.format(aglycone)).verdict == "plannable"
+
+
+@pytest.mark.parametrize("aglycone", ["CCCCC(=O)OC", "CCCCCCCC", "CCNC(C)=O"])
+def test_a_methyl_ester_and_an_acetamide_stand_methoxide(aglycone: str) -> None:
+    assert plan(demo_shelf(), smiles=FREE_GLUCOSIDE.format(aglycone)).verdict == "plannable"
+
+
 def test_a_refused_cis_target_names_what_does_it_elsewhere() -> None:
     alpha = GLUCOSIDE.format("CC").replace("[C@@H](OCC)", "[C@H](OCC)")
     (reason,) = plan(demo_shelf(), smiles=alpha).reasons
@@ -229,7 +259,7 @@ def test_an_azide_is_worked_behind_a_shield_and_never_stands() -> None:
     (stage,) = planned.route.stages  # type: ignore[union-attr]
     text = " ".join(step.text for step in stage.steps)
     assert "behind a shield" in text
-    assert "Azide waste apart" in text
+    assert "Azide waste, in a container of its own" in text
     assert "2-azidoethanol, solution, 1 mol/L in toluene (bottle AZE-1)" in text
     concentrate = next(step for step in stage.steps if step.title == "Dry and concentrate")
     assert concentrate.pause == "do not stop"
@@ -310,7 +340,8 @@ def test_equivalents_are_met_within_the_step_of_the_syringe(mass_mg: float, agly
             continue
         step = rounding.volume_step_ml(charge.volume_ml)
         off = abs(charge.equivalents / charge.equivalents_planned - 1)  # type: ignore[operator]
-        assert off <= 0.5 * step / charge.volume_ml * 1.02 + 1e-9
+        least_exact_ml = charge.volume_ml - 0.5 * step  # what was rounded up to the volume
+        assert off <= 0.5 * step / least_exact_ml * 1.001 + 1e-9
 
 
 @given(st.floats(min_value=1e-3, max_value=1e6), st.sampled_from([0.01, 0.1, 1.0, 10.0]))
@@ -338,7 +369,7 @@ def test_steps_name_no_amount_that_is_not_in_the_table() -> None:
     allowed = {amount_text(charge) for charge in stage.charges}
     # vessels, the funnel, the bed of the column, the gas, what a clear quench would take
     allowed |= {f"{stage.vessel_ml} mL", f"{stage.quench.vessel_ml} mL", "500 mL", "304 mL"}
-    allowed |= {"1.77 L", f"{stage.quench.clear_solution_ml:.0f} mL"}
+    allowed |= {"1.8 L", f"{stage.quench.clear_solution_ml:.0f} mL"}
     allowed |= {"3.804 g", "2.000 g", "1.667 g", "2.333 g"}
     named = {
         amount

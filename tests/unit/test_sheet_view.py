@@ -75,7 +75,7 @@ def test_the_head_names_target_project_person_hash_and_versions() -> None:
     assert facts["Project"] == "LECTIN-07, Lectin probes"
     assert facts["Requested by"] == "MIRA, Mira Example"
     assert facts["Document"] == "ab" * 32
-    assert facts["Newest seal"] == "none yet"
+    assert facts["Book seal (for the stock keeper)"] == "none yet"
     assert facts["Made with"].startswith("engine ")
     assert shown["smiles"] == lactoside()["target"]["smiles"]
 

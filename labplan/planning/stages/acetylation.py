@@ -1,13 +1,15 @@
 """Size the peracetylation of a free sugar: hydrate water eats anhydride, the heat is counted."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from labplan.chemistry.amounts import Content
 from labplan.chemistry.coupling import Target
 from labplan.planning import vessels
+from labplan.planning.bottles import check_no_crystal_water
 from labplan.planning.methods import Method
 from labplan.planning.sizing import Need, Sizer
 from labplan.planning.stages.common import (
+    BICARBONATE_G_PER_MOL,
     brine_salt_need,
     bulk_need,
     extraction_need,
@@ -26,6 +28,7 @@ HEAT_CAPACITY_J_PER_G_K = 2.0
 REVIEW_RISE_K = 50.0
 FLASK_FILL = 0.25  # room for the exotherm and for portions
 THIOSULFATE_G_PER_MOL = 248.18  # the pentahydrate
+WASTE_BASE_EXCESS = 1.1
 
 
 @dataclass(frozen=True)
@@ -86,7 +89,7 @@ def size_acetylation(
     sugar = sizer.add(sugar_need(plan.target, plan.sugar_mmol))
     sugar_n = (sugar.amount_mmol if sugar else None) or plan.sugar_mmol
     anhydride = sizer.add(_anhydride_need(plan, sugar_n, _water_per_sugar(sugar)))
-    sizer.add(_reagent_need(plan, sugar_n))
+    _add_reagent(plan, sizer, sugar_n)
     anhydride_ml = (anhydride.volume_ml if anhydride else None) or 1.0
     _add_work_up(plan, sizer, anhydride_ml, sugar_n)
     if not {"sugar", "anhydride", "reagent"} <= set(sizer.charges):
@@ -117,6 +120,13 @@ def _anhydride_need(plan: AcetylationPlan, sugar_mmol: float, water: float) -> N
     )
 
 
+def _add_reagent(plan: AcetylationPlan, sizer: Sizer, sugar_mmol: float) -> None:
+    """The salt of the hot way is named anhydrous: its trihydrate is the commoner bottle."""
+    reagent = sizer.add(_reagent_need(plan, sugar_mmol))
+    if reagent is not None and plan.method["order"] == "hot":
+        sizer.charges["reagent"] = replace(reagent, name=f"{reagent.name}, anhydrous")
+
+
 def _reagent_need(plan: AcetylationPlan, sugar_mmol: float) -> Need:
     reagent = plan.method["reagent"]
     return Need(
@@ -128,6 +138,7 @@ def _reagent_need(plan: AcetylationPlan, sugar_mmol: float) -> Need:
         amount_mmol=sugar_mmol * float(reagent["equiv"]),
         equivalents_planned=float(reagent["equiv"]),
         equivalents_of="sugar",
+        checks=(check_no_crystal_water,) if plan.method["order"] == "hot" else (),
     )
 
 
@@ -141,7 +152,7 @@ def _add_work_up(
     brine_ml = ice_ml * float(work_up["brine_volume_share"])
     drying_mmol = plan.donor_mmol * float(work_up["drying_ml_per_mmol"])
     needs = [
-        extraction_need(work_up, extraction_ml),
+        extraction_need(work_up["extraction_solvent"], extraction_ml),
         bulk_need(
             "wash_base",
             "wash",
@@ -176,9 +187,31 @@ def _add_work_up(
         )
     for need in needs:
         sizer.add(need)
+    sizer.add(_waste_base_need(plan, sizer.charges))
     sizer.add_supply(water_need("ice_water", "quench, as ice and water", ice_ml))
     sizer.add_supply(water_need("wash_water", "wash", base_ml))
     sizer.add_supply(water_need("brine_water", "brine", brine_ml))
+
+
+def _waste_base_need(plan: AcetylationPlan, charges: dict[str, Charge]) -> Need:
+    """Bicarbonate for what acetic acid the wash does not take, and a tenth more."""
+    wash = charges.get("wash_base")
+    washed_mmol = (wash.mass_mg or 0.0) / BICARBONATE_G_PER_MOL if wash else 0.0
+    left_mmol = max(acetic_acid_mmol(plan, charges) - washed_mmol, 0.0)
+    return bulk_need(
+        "waste_base",
+        "neutralisation",
+        plan.method["work_up"]["bicarbonate"],
+        mass_mg=left_mmol * WASTE_BASE_EXCESS * BICARBONATE_G_PER_MOL,
+    )
+
+
+def acetic_acid_mmol(plan: AcetylationPlan, charges: dict[str, Charge]) -> float:
+    """All that the anhydride becomes in water, less the acetyls that stay on the sugar."""
+    anhydride, sugar = charges.get("anhydride"), charges.get("sugar")
+    acetyl = 2 * ((anhydride.amount_mmol if anhydride else None) or 0.0)
+    kept = plan.hydroxyls * ((sugar.amount_mmol if sugar else None) or 0.0)
+    return max(acetyl - kept, 0.0)
 
 
 def _stage(

@@ -1,12 +1,27 @@
 """The peracetylation as numbered steps: hot salt and anhydride first, sugar in portions."""
 
-from labplan.planning.figures import mass_text
-from labplan.planning.stages.acetylation import AcetylationPlan
-from labplan.planning.steps import MAY_STAND, Writer
+import math
+
+from labplan.planning.evaporation import from_pressures
+from labplan.planning.figures import mass_text, two_figures
+from labplan.planning.stages.acetylation import AcetylationPlan, acetic_acid_mmol
+from labplan.planning.stages.common import MOLAR_VOLUME_25C_L_PER_MOL, liquid_ml
+from labplan.planning.steps import (
+    BREATHED_IN,
+    MAY_STAND,
+    UNATTENDED,
+    Writer,
+    toxic_sentence,
+)
 from labplan.planning.values import Stage, Step
 from labplan.planning.vessels import BEAKERS_ML, funnel_ml, smallest_that_holds
 
 PORTIONS = 5
+BATH_C = 40
+LATE_HEAT = (
+    "If a portion gives no rise within 10 min or stays undissolved, add no more until it has gone: "
+    "the heat can come late"
+)
 
 
 def acetylation_steps(plan: AcetylationPlan, stage: Stage) -> tuple[Step, ...]:
@@ -18,7 +33,9 @@ def acetylation_steps(plan: AcetylationPlan, stage: Stage) -> tuple[Step, ...]:
     else:
         _in_portions(writer, plan, stage)
     _work_up(writer, plan)
-    _dry(writer, plan, stage)
+    _dry(writer, plan)
+    _neutralise_water_layers(writer, plan)
+    _weigh(writer, plan, stage)
     return tuple(writer.steps)
 
 
@@ -27,7 +44,7 @@ def _prepare(writer: Writer, stage: Stage) -> None:
         "Before you start",
         "Read the supplier's safety data sheet of every bottle named here and compare codes and "
         "labels with the table. Work in a hood with goggles and gloves; acetic anhydride burns "
-        "eyes and skin and its vapour is harmful.",
+        f"eyes and skin. {toxic_sentence(writer.by_key['anhydride'])} {BREATHED_IN}",
         f"Fit a {stage.vessel_ml} mL three-necked flask with stirring bar, reflux condenser, "
         "internal thermometer and a stopper, a drying tube on the condenser, on a bath that can be "
         "dropped at once.",
@@ -55,8 +72,7 @@ def _hot(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
         f"of the one before has fallen. {_exotherm(stage)} Never charge everything cold and heat "
         "it.",
         uses=("sugar",),
-        watch="inside not above 120 °C: drop the bath. If a portion gives no rise within 10 min or "
-        "stays undissolved, add no more until it has gone: the heat can come late",
+        watch=f"inside not above 120 °C: drop the bath. {LATE_HEAT}",
     )
     writer.add(
         "Finish the acetylation",
@@ -68,24 +84,37 @@ def _hot(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
 
 
 def _in_portions(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+    room_c = plan.method["temperature_c"]
     hours = plan.method["duration_h"]
     writer.add(
         "Dissolve the iodine",
-        f"Stir {writer.text('reagent')} in {writer.text('anhydride')} in an ice bath.",
+        f"Stir {writer.text('reagent')} in {writer.text('anhydride')} in an ice bath until the "
+        "inside is at 5 °C.",
         uses=("reagent", "anhydride"),
     )
     writer.add(
         "Add the sugar in portions",
-        f"Add {writer.text('sugar')} in at least {PORTIONS} portions, each after the exotherm of "
-        f"the one before has fallen. {_exotherm(stage)}",
+        f"From 5 °C inside add {writer.text('sugar')} in at least {PORTIONS} portions, each after "
+        f"the exotherm of the one before has fallen to below 10 °C. {_exotherm(stage)}",
         uses=("sugar",),
-        watch="inside not above 30 °C",
+        watch=f"inside not above 30 °C: no more sugar, more ice. {LATE_HEAT}",
+    )
+    writer.add(
+        "Let it come to room temperature",
+        "After the last portion keep it in the ice bath until the inside has stayed below "
+        f"10 °C for 30 min. Then take the bath away and let it come to {room_c} °C; "
+        "stay with it and watch the thermometer until the inside has not climbed for 1 h, with the "
+        "ice bath ready beneath.",
+        watch="inside above 30 °C, or climbing faster than 1 K in a minute: back into the ice. "
+        "Undissolved sugar is heat that is still to come",
     )
     writer.add(
         "Finish the acetylation",
         f"Stir at {plan.method['temperature_c']} °C for {hours['low']} to {hours['high']} h, until "
         "TLC (heptane/ethyl acetate 1:1, charred) shows one main spot.",
-        pause=MAY_STAND,
+        watch="leave it alone only when all the sugar has dissolved and the inside stands at room "
+        "temperature",
+        pause=UNATTENDED,
     )
 
 
@@ -116,18 +145,43 @@ def _work_up(writer: Writer, plan: AcetylationPlan) -> None:
     )
 
 
-def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
+def _neutralise_water_layers(writer: Writer, plan: AcetylationPlan) -> None:
+    """Acid layers and the bicarbonate wash in one closed canister would burst it."""
+    charges = writer.by_key
+    water_ml = liquid_ml([charges[key] for key in ("ice_water", "wash_water", "brine_water")])
+    gas_l = acetic_acid_mmol(plan, charges) * MOLAR_VOLUME_25C_L_PER_MOL / 1000
+    writer.add(
+        "Neutralise the water layers",
+        "Combine all water layers in an open, stirred "
+        f"{smallest_that_holds(BEAKERS_ML, water_ml * 2)} mL beaker in the hood: the bicarbonate "
+        f"wash gives gas with the acid ones. Add {writer.text('waste_base')} in portions. In all "
+        f"up to {two_figures(gas_l)} L of carbon dioxide leaves. Bottle it as waste only when the "
+        "gas has stopped and paper shows pH 7 or above, and keep the cap loose for a day.",
+        uses=("waste_base",),
+        watch="never acid and bicarbonate layers into one closed canister: it bursts; foam",
+        pause=MAY_STAND,
+    )
+
+
+def _dry(writer: Writer, plan: AcetylationPlan) -> None:
     times = int(plan.method["work_up"]["drying_times"])
+    share_ml = math.floor((writer.by_key["drying_solvent"].volume_ml or 0.0) / times)
+    solvents = tuple(
+        writer.by_key[key].substance for key in ("extraction_solvent", "drying_solvent")
+    )
     writer.add(
         "Dry the peracetate",
-        f"Dry over {writer.text('drying_agent')} for 15 min, filter and evaporate at 40 °C or "
-        f"below. Take it down {times} times with a share each of {writer.text('drying_solvent')}: "
-        "water or an alcohol left in it would take part in the coupling. Dry to constant mass in "
-        "vacuum.",
+        f"Dry over {writer.text('drying_agent')} for 15 min, filter and evaporate at {BATH_C} °C "
+        f"or below ({from_pressures(solvents, BATH_C)}). Take it down with "
+        f"{writer.text('drying_solvent')}, {times} × {share_ml:.0f} mL: water or an alcohol left "
+        "in it would take part in the coupling. Dry to constant mass in vacuum.",
         uses=("drying_agent", "drying_solvent"),
         watch="foams in vacuum: open the pump slowly",
         pause=MAY_STAND,
     )
+
+
+def _weigh(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
     writer.add(
         "Weigh, check and rescale",
         f"Expected: {mass_text(round(stage.expected_mass_mg))} of "
@@ -135,8 +189,8 @@ def _dry(writer: Writer, plan: AcetylationPlan, stage: Stage) -> None:
         f"{mass_text(round(stage.expected_high_mg))}), {mass_text(round(stage.gross_mass_mg))} as "
         f"{stage.gross_means}. {_signals(plan)}What is weighed here sets every "
         "charge of the next stage. Enter it, and the anhydride really used.",
-        "Waste: the water layers are dilute acetic acid"
-        f"{', with iodide and thiosulfate' if writer.has('reducing_agent') else ''}; "
+        "Waste: the neutralised water layers hold sodium acetate"
+        f"{', iodide and thiosulfate' if writer.has('reducing_agent') else ''}; "
         "dichloromethane to halogenated, toluene to non-halogenated.",
         watch="the waste rules of your house come first",
         pause=MAY_STAND,

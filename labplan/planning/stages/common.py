@@ -4,7 +4,7 @@ from typing import Any
 
 from labplan.chemistry.coupling import Target
 from labplan.chemistry.masses import adduct_mz
-from labplan.chemistry.reference import find_by_key
+from labplan.chemistry.reference import find_by_inchikey, find_by_key
 from labplan.chemistry.structures import Structure
 from labplan.planning.figures import in_sentence
 from labplan.planning.sizing import Need
@@ -14,6 +14,8 @@ WorkUp = dict[str, Any]  # the work_up of a method
 
 MOLAR_VOLUME_25C_L_PER_MOL = 24.465  # ideal gas at 25 °C and 101.325 kPa
 BICARBONATE_G_PER_MOL = 84.006
+WATER_SOLUBLE_CARBONS = 4
+LOW_BOILING_C = 150.0
 
 
 def readable(key: str) -> str:
@@ -67,14 +69,8 @@ def extraction_volume_ml(work_up: WorkUp, aqueous_ml: float) -> float:
     return aqueous_ml * float(work_up["extraction_volume_share"]) * int(work_up["extractions"])
 
 
-def extraction_need(work_up: WorkUp, volume_ml: float) -> Need:
-    return bulk_need(
-        "extraction_solvent",
-        "extraction",
-        work_up["extraction_solvent"],
-        volume_ml=volume_ml,
-        outward=True,
-    )
+def extraction_need(solvent: str, volume_ml: float) -> Need:
+    return bulk_need("extraction_solvent", "extraction", solvent, volume_ml=volume_ml, outward=True)
 
 
 def brine_salt_need(work_up: WorkUp, brine_ml: float) -> Need:
@@ -89,6 +85,18 @@ def brine_salt_need(work_up: WorkUp, brine_ml: float) -> Need:
 def acceptor_carbons(target: Target) -> int:
     """Carbon atoms of the alcohol: what decides whether it, or its glycoside, likes water."""
     return sum(letter in "Cc" for letter in target.acceptor.smiles)
+
+
+def leaves_in_work_up(target: Target) -> bool:
+    """Whether the alcohol that is left goes with water, evaporator and oil pump (common practice).
+
+    Up to four carbons it goes with the water, under 150 °C with the solvent.
+    """
+    if acceptor_carbons(target) <= WATER_SOLUBLE_CARBONS:
+        return True
+    known = find_by_inchikey(target.acceptor.inchikey)
+    boils_at_c = known.boiling_point_c if known else None
+    return boils_at_c is not None and boils_at_c < LOW_BOILING_C
 
 
 def water_need(key: str, role: str, volume_ml: float) -> Need:

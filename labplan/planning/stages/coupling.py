@@ -1,5 +1,6 @@
 """Size one coupling: peracetate, alcohol, Lewis acid, solvent, and what the work-up needs."""
 
+import math
 from dataclasses import dataclass
 
 from labplan.chemistry.amounts import Content
@@ -15,6 +16,7 @@ from labplan.planning.stages.common import (
     bulk_need,
     extraction_need,
     extraction_volume_ml,
+    leaves_in_work_up,
     liquid_ml,
     readable,
     salt_ions,
@@ -22,11 +24,20 @@ from labplan.planning.stages.common import (
     water_need,
     yield_triple,
 )
-from labplan.planning.values import Ion, Quench, RouteWarning, Stage
+from labplan.planning.values import Charge, Ion, Quench, RouteWarning, Stage
 
 REVIEW_LIMITING_MG = 20_000
 AZIDE_WASHES_SHARE = 1.5  # three washes of half the reaction volume (common practice)
 BICARBONATE_M_AT_0C = 0.8  # saturated, common practice (1.1 at 20 °C)
+ACID_WASHES_SHARE = 1.5  # three washes of half the reaction volume take out acid fluoride
+# Acetonitrile mixes with water; four volumes of ethyl acetate and water part from it again.
+DILUTION_SHARE = 3.0
+# What a syringe and its needle may still hold of the promoter (common practice).
+LEAST_SYRINGE_MMOL = 4.0
+SYRINGE_SHARE = 0.2
+LEAST_SYRINGE_RINSE_ML = 2.0
+WATER_MISCIBLE = "acetonitrile"
+_NEUTRALISED_WATER = ("quench_water", "acid_wash_water", "brine_water", "neutralising_water")
 
 
 @dataclass(frozen=True)
@@ -53,6 +64,33 @@ class CouplingPlan:
     @property
     def has_acid(self) -> bool:
         return self.target.acceptor_acids > 0
+
+    @property
+    def has_azide(self) -> bool:
+        return "azide" in self.target.acceptor_groups
+
+    @property
+    def is_amino_acid(self) -> bool:
+        return bool({"Fmoc", "Cbz"} & set(self.target.acceptor_groups))
+
+    @property
+    def has_fluoride(self) -> bool:
+        return bool(self.method["promoter"]["gel"])
+
+    @property
+    def mixes_with_water(self) -> bool:
+        return self.solvent["substance"] == WATER_MISCIBLE
+
+    @property
+    def is_diluted(self) -> bool:
+        """An acid quench must be free of acid fluoride before anything of it is evaporated."""
+        return self.has_acid and self.mixes_with_water
+
+    @property
+    def extraction_solvent(self) -> str:
+        work_up = self.method["work_up"]
+        key = "acid_extraction_solvent" if self.is_diluted else "extraction_solvent"
+        return str(work_up[key])
 
 
 def acceptor_equivalents(target: Target, method: Method) -> float:
@@ -83,6 +121,8 @@ def size_coupling(plan: CouplingPlan, sizer: Sizer) -> tuple[Stage | None, list[
     for reaction_need in _reaction_needs(plan, donor_n):
         sizer.add(reaction_need)
     solvent = sizer.charges.get("solvent")
+    if plan.method["promoter"]["by"] == "syringe":
+        _add_syringe_rinse(sizer, plan, donor_n)
     reaction_ml = (solvent.volume_ml if solvent else None) or _solvent_ml(plan, donor_n)
     if plan.method["sieves"] is not None:
         sizer.add(_sieve_need(plan.method, reaction_ml))
@@ -121,21 +161,51 @@ def _reaction_needs(plan: CouplingPlan, donor_mmol: float) -> tuple[Need, ...]:
             equivalents_planned=plan.promoter_equiv,
             equivalents_of=promoter["basis"],
         ),
-        Need(
-            key="solvent",
-            role="solvent",
-            group="reaction",
-            substances=(str(plan.solvent["substance"]),),
-            name=readable(str(plan.solvent["substance"])),
-            bulk_volume_ml=_solvent_ml(plan, donor_mmol),
-            outward=True,
-            checks=(
-                bottles.check_no_alcohol_stabiliser,
-                bottles.check_water_at_most(float(str(plan.solvent["water_ppm_max"]))),
-            ),
-            prefer_dry=True,
-        ),
+        _dry_solvent_need("solvent", "reaction", plan, _solvent_ml(plan, donor_mmol)),
     )
+
+
+def _dry_solvent_need(key: str, group: str, plan: CouplingPlan, volume_ml: float) -> Need:
+    """The solvent of the coupling: no alcohol in it, and dry."""
+    substance = str(plan.solvent["substance"])
+    return Need(
+        key=key,
+        role="solvent" if key == "solvent" else "rinse of the syringe",
+        group=group,
+        substances=(substance,),
+        name=readable(substance),
+        bulk_volume_ml=volume_ml,
+        outward=True,
+        checks=(
+            bottles.check_no_alcohol_stabiliser,
+            bottles.check_water_at_most(float(str(plan.solvent["water_ppm_max"]))),
+        ),
+        prefer_dry=True,
+        as_another=key != "solvent",
+    )
+
+
+def _add_syringe_rinse(sizer: Sizer, plan: CouplingPlan, donor_mmol: float) -> None:
+    """Dry solvent for the syringe of the promoter, and bicarbonate where the quench has none."""
+    promoter = sizer.charges.get("promoter")
+    promoter_ml = (promoter.volume_ml if promoter else None) or 0.0
+    rinse_ml = max(math.ceil(promoter_ml), LEAST_SYRINGE_RINSE_ML)
+    sizer.add(_dry_solvent_need("syringe_solvent", "work-up", plan, rinse_ml))
+    if not plan.has_acid:
+        return
+    held_back = max(LEAST_SYRINGE_MMOL, SYRINGE_SHARE * donor_mmol * plan.promoter_equiv)
+    base_mmol = _bicarbonate_mmol(plan, held_back * float(plan.method["promoter"]["acid_anions"]))
+    bicarbonate = plan.method["work_up"]["bicarbonate"]
+    sizer.add(
+        bulk_need(
+            "syringe_base",
+            "quench of the syringe",
+            bicarbonate,
+            mass_mg=base_mmol * BICARBONATE_G_PER_MOL,
+        )
+    )
+    water_ml = base_mmol / BICARBONATE_M_AT_0C
+    sizer.add_supply(water_need("syringe_water", "quench of the syringe", water_ml))
 
 
 def _sieve_need(method: Method, reaction_ml: float) -> Need:
@@ -169,25 +239,39 @@ def _add_work_up(sizer: Sizer, plan: CouplingPlan, reaction_ml: float, acid_mmol
     brine_ml = reaction_ml * float(work_up["brine_volume_share"])
     extraction_ml = extraction_volume_ml(work_up, reaction_ml)
     base_mg = _bicarbonate_mmol(plan, acid_mmol) * BICARBONATE_G_PER_MOL
-    drying_mg = (reaction_ml + extraction_ml) * float(work_up["drying_g_per_100_ml"]) * 10
+    organic_ml = reaction_ml * (1 + (DILUTION_SHARE if plan.is_diluted else 0)) + extraction_ml
+    drying_mg = organic_ml * float(work_up["drying_g_per_100_ml"]) * 10
     for need in (
         bulk_need("quench_base", "quench", work_up["bicarbonate"], mass_mg=base_mg),
-        extraction_need(work_up, extraction_ml),
+        extraction_need(plan.extraction_solvent, extraction_ml),
         brine_salt_need(work_up, brine_ml),
         bulk_need("drying_agent", "drying agent", work_up["drying_agent"], mass_mg=drying_mg),
     ):
         sizer.add(need)
-    _add_filtration(sizer, work_up, reaction_ml)
+    _add_filtration(sizer, plan, reaction_ml)
     sizer.add_supply(water_need("quench_water", "quench", reaction_ml))
-    if "azide" in plan.target.acceptor_groups:
+    if plan.has_azide:
         sizer.add_supply(water_need("azide_water", "wash", reaction_ml * AZIDE_WASHES_SHARE))
     if plan.has_acid:
+        washes_ml = reaction_ml * ACID_WASHES_SHARE
+        sizer.add_supply(water_need("acid_wash_water", "wash", washes_ml))
         sizer.add_supply(water_need("neutralising_water", "neutralisation", reaction_ml))
+    if plan.is_diluted:
+        sizer.add(
+            bulk_need(
+                "dilution_solvent",
+                "dilution",
+                plan.extraction_solvent,
+                volume_ml=reaction_ml * DILUTION_SHARE,
+                outward=True,
+            )
+        )
     sizer.add_supply(water_need("brine_water", "brine", brine_ml))
 
 
-def _add_filtration(sizer: Sizer, work_up: dict[str, object], reaction_ml: float) -> None:
+def _add_filtration(sizer: Sizer, plan: CouplingPlan, reaction_ml: float) -> None:
     """Powdered sieves and basic bismuth salts block a frit: a pad, and solvent for the cake."""
+    work_up = plan.method["work_up"]
     sieves = sizer.charges.get("sieves")
     pad_mg = reaction_ml * 1000 * float(str(work_up.get("pad_g_per_ml", 0)))
     if sieves is not None:
@@ -199,7 +283,7 @@ def _add_filtration(sizer: Sizer, work_up: dict[str, object], reaction_ml: float
         bulk_need(
             "rinse_solvent",
             "rinse",
-            str(work_up["extraction_solvent"]),
+            plan.extraction_solvent,
             volume_ml=reaction_ml * float(str(work_up["rinse_volume_share"])),
             outward=True,
         )
@@ -207,13 +291,34 @@ def _add_filtration(sizer: Sizer, work_up: dict[str, object], reaction_ml: float
 
 
 def _gross_crude_mg(plan: CouplingPlan, sizer: Sizer, donor_mmol: float) -> float:
-    """All product that could form and the alcohol left over: what the column has to carry."""
+    """All that could be left: product in full, the alcohol that stays, the 1,2-cis donor."""
     target, acceptor = plan.target, sizer.charges.get("acceptor")
     left_over_mg = 0.0
-    if acceptor and acceptor.amount_mmol:
+    if acceptor and acceptor.amount_mmol and not leaves_in_work_up(target):
         left_over = max(acceptor.amount_mmol - donor_mmol, 0.0)
         left_over_mg = left_over * target.acceptor.molar_mass_g_per_mol
-    return donor_mmol * target.glycoside.molar_mass_g_per_mol + left_over_mg
+    cis_mmol = donor_mmol * (100 / _active_share_pct(plan, sizer) - 1)
+    return (
+        donor_mmol * target.glycoside.molar_mass_g_per_mol
+        + left_over_mg
+        + cis_mmol * target.donor.molar_mass_g_per_mol
+    )
+
+
+def _active_share_pct(plan: CouplingPlan, sizer: Sizer) -> float:
+    """The share of the donor that reacts; the rest, mostly 1,2-cis, comes out as it went in."""
+    donor = sizer.charges.get("donor")
+    content = donor.bottle.content if donor and donor.bottle else plan.made_donor
+    return (content.active_share_pct if content else None) or 100.0
+
+
+def _gross_means(plan: CouplingPlan, sizer: Sizer) -> str:
+    parts = ["product in full"]
+    if not leaves_in_work_up(plan.target):
+        parts.append("the alcohol that is left over")
+    if _active_share_pct(plan, sizer) < 100:
+        parts.append("the donor in its forms that do not react")
+    return " and ".join((", ".join(parts[:-1]), parts[-1])) if parts[1:] else parts[0]
 
 
 def _add_purification(sizer: Sizer, plan: CouplingPlan, gross_mg: float) -> None:
@@ -258,7 +363,6 @@ def _stage(
         promoter_mmol=charges["promoter"].amount_mmol or 0.0,
         donor_mmol=donor_mmol,
         as_of=sizer.as_of,
-        used_up_per_water=float(method["promoter"]["used_up_per_water"]),
     )
     stage = Stage(
         number=plan.stage_number,
@@ -274,21 +378,31 @@ def _stage(
         vessel_ml=vessels.reaction_flask_ml(liquid_ml(reaction)),
         yield_pct=yield_triple(method["yield_pct"]),
         gross_mass_mg=gross_mg,
-        gross_means="product in full, and the alcohol that is left over",
+        gross_means=_gross_means(plan, sizer),
         water=water,
-        quench=_quench(plan, charges["quench_water"].volume_ml or 0.0, reaction, acid_mmol),
+        quench=_quench(plan, charges, reaction, acid_mmol),
         ions=_ions(target),
     )
     warnings = dryness.dryness_warnings(
-        water, charges, catalytic=bool(method["promoter"]["catalytic"])
+        water,
+        charges,
+        catalytic=bool(method["promoter"]["catalytic"]),
+        used_up_per_water=float(method["promoter"]["used_up_per_water"]),
+        yield_pct=stage.yield_pct[1],
     )
     return stage, [*warnings, *_method_warnings(method), *_stage_warnings(stage, method)]
 
 
-def _quench(plan: CouplingPlan, water_ml: float, reaction: list, acid_mmol: float) -> Quench:  # type: ignore[type-arg]
+def _quench(
+    plan: CouplingPlan, charges: dict[str, Charge], reaction: list[Charge], acid_mmol: float
+) -> Quench:
+    """The beaker holds reaction, water and what thins them; of an acid, also the water layers."""
     bicarbonate = _bicarbonate_mmol(plan, acid_mmol)
+    met = [charges[key] for key in ("quench_water", "dilution_solvent") if key in charges]
+    water = [c for key, c in charges.items() if key in _NEUTRALISED_WATER]
+    largest_ml = max(liquid_ml([*reaction, *met]), liquid_ml(water) if plan.has_acid else 0.0)
     return Quench(
-        vessel_ml=vessels.quench_beaker_ml(liquid_ml(reaction) + water_ml),
+        vessel_ml=vessels.quench_beaker_ml(largest_ml),
         acid_mmol=acid_mmol,
         bicarbonate_mmol=bicarbonate,
         clear_solution_ml=bicarbonate / BICARBONATE_M_AT_0C,

@@ -4,14 +4,16 @@ Order and cautions are common practice: promoter last and in the cold, the react
 open, stirred bicarbonate, never the reverse; peracetates show by charring only.
 """
 
-import math
-
-from labplan.planning.figures import mass_text, three_figures
-from labplan.planning.stages.common import acceptor_carbons
 from labplan.planning.stages.coupling import CouplingPlan, eluent_kind
-from labplan.planning.steps import DO_NOT_STOP, MAY_STAND, UNATTENDED, Writer
-from labplan.planning.values import Quench, ShelfBottle, Stage, Step
-from labplan.planning.vessels import funnel_ml
+from labplan.planning.stages.coupling_work_up_steps import make_quench_ready, work_up_steps
+from labplan.planning.steps import (
+    BREATHED_IN,
+    MAY_STAND,
+    UNATTENDED,
+    Writer,
+    toxic_sentence,
+)
+from labplan.planning.values import ShelfBottle, Stage, Step
 
 UV_GROUPS = frozenset({"Fmoc", "Cbz", "benzyl ester", "benzyl ether", "4-methoxybenzyl ether"})
 
@@ -22,15 +24,9 @@ def coupling_steps(plan: CouplingPlan, stage: Stage, gel: ShelfBottle | None) ->
     writer = Writer(stage.charges)
     _prepare(writer, plan, stage, gel)
     _charge_flask(writer, plan)
-    _make_quench_ready(writer, plan, stage.quench)
+    make_quench_ready(writer, plan, stage.quench)
     _react(writer, plan)
-    _quench(writer, plan, stage.quench)
-    _extract(writer, plan)
-    if plan.has_acid:
-        _neutralise_water_layers(writer, stage.quench)
-    _concentrate(writer, plan, stage)
-    _purify(writer, plan, stage)
-    _finish(writer, plan, stage)
+    work_up_steps(writer, plan, stage)
     return tuple(writer.steps)
 
 
@@ -43,7 +39,7 @@ def _prepare(writer: Writer, plan: CouplingPlan, stage: Stage, gel: ShelfBottle 
         "through thin nitrile in a minute or two; change them at once when wetted.",
         _gel_sentence(plan, gel),
         "Start early: the coupling wants to be watched for most of a day.",
-        "Work behind a shield from the moment the azide is opened." if _has_azide(plan) else "",
+        "Work behind a shield from the moment the azide is opened." if plan.has_azide else "",
         watch="a bottle that differs from the table: stop and plan again",
         pause=MAY_STAND,
     )
@@ -66,8 +62,8 @@ def _gel_sentence(plan: CouplingPlan, gel: ShelfBottle | None) -> str:
         where = f"Calcium gluconate gel stands in {gel.place} (bottle {gel.code}{until})"
     return (
         f"{where}: BF3 etherate gives hydrogen fluoride with water. On skin: flush at once, rub in "
-        "the gel, then a doctor. In the eyes: rinse for 15 min, no gel, then a doctor. Breathed "
-        "in: fresh air, then a doctor. Wear a face shield while it is transferred."
+        "the gel, then a doctor. In the eyes: rinse for 15 min, no gel, then a doctor. "
+        f"{BREATHED_IN} Wear a face shield while it is transferred."
     )
 
 
@@ -98,26 +94,19 @@ def _charge_flask(writer: Writer, plan: CouplingPlan) -> None:
         "Charge donor and alcohol",
         _before_the_azide(plan),
         f"Weigh {donor}, into the flask and purge with argon. {provisional}".strip(),
+        toxic_sentence(acceptor),
         f"Add {writer.text('solvent')}, then {writer.text('acceptor')}, {how}.",
         sieves,
         "Stir for 30 min at room temperature under a slow stream of argon.",
         uses=("donor", "solvent", "acceptor", "sieves"),
         watch="a protected amino acid may stay a slurry until the promoter is in"
-        if _is_amino_acid(plan)
+        if plan.is_amino_acid
         else "donor and alcohol dissolve; weigh back what stays on the paper",
     )
 
 
-def _has_azide(plan: CouplingPlan) -> bool:
-    return "azide" in plan.target.acceptor_groups
-
-
-def _is_amino_acid(plan: CouplingPlan) -> bool:
-    return bool({"Fmoc", "Cbz"} & set(plan.target.acceptor_groups))
-
-
 def _before_the_azide(plan: CouplingPlan) -> str:
-    if not _has_azide(plan):
+    if not plan.has_azide:
         return ""
     return (
         "Behind a shield, with no metal spatula. The azide must be free of inorganic azide, which "
@@ -134,17 +123,16 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
     writer.add(
         "Add the promoter",
         "Cool to 0 °C (inside) in an ice bath." if cold else "",
+        toxic_sentence(promoter),
         f"Add {writer.text('promoter')} "
         + (
             f"by syringe, dropwise over about {minutes} min."
             if by_syringe
             else "in one portion, quickly: it takes up water from the air."
         ),
-        "Empty and rinse syringe and needle into the open quench at once." if by_syringe else "",
-        uses=("promoter",),
-        watch="inside not above 5 °C; slow the addition if it climbs"
-        if cold
-        else "a rise of more than 5 K inside: cool",
+        _rinse_syringe(writer),
+        uses=("promoter", "syringe_solvent"),
+        watch=_rise(by_syringe, cold),
     )
     hours = method["duration_h"]
     writer.add(
@@ -152,7 +140,7 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         ("Let it come to room temperature" if cold else "Keep it at room temperature")
         + f" (about {temperature['reaction']} °C) and stir under "
         f"argon for {hours['low']} to {hours['high']} h, usually {hours['usual']} h."
-        + (" Keep it at or below 20 °C: it is an azide." if _has_azide(plan) else ""),
+        + (" Keep it at or below 20 °C: it is an azide." if plan.has_azide else ""),
         "After 1 h and then every hour shake two drops with "
         + ("water" if plan.has_acid else "saturated sodium hydrogencarbonate")
         + " and ethyl acetate and spot the upper layer beside donor and alcohol.",
@@ -161,6 +149,28 @@ def _react(writer: Writer, plan: CouplingPlan) -> None:
         watch="stop as soon as the donor has gone or stays the same between two samples: longer "
         "contact turns product into its 1,2-cis form and takes off acetyl",
         pause=UNATTENDED,
+    )
+
+
+def _rise(by_syringe: bool, cold: bool) -> str:
+    """A solid that goes in at once cannot be slowed: only cooled."""
+    if cold and by_syringe:
+        return "inside not above 5 °C; slow the addition if it climbs"
+    if cold:
+        return "inside not above 10 °C: more ice to the bath, which stands ready before you add"
+    return "a rise of more than 5 K inside: cool"
+
+
+def _rinse_syringe(writer: Writer) -> str:
+    """Into bicarbonate, never into plain water, with which the promoter reacts violently."""
+    if not writer.has("syringe_solvent"):
+        return ""
+    where = "open quench, stirred"
+    if writer.has("syringe_base"):
+        where = "stirred bicarbonate that stands ready for it, never into the quench of plain water"
+    return (
+        f"Rinse syringe and needle at once with {writer.text('syringe_solvent')}, in two portions, "
+        f"dropwise into the {where}."
     )
 
 
@@ -186,208 +196,3 @@ def _seeing(plan: CouplingPlan) -> str:
 
 def _is_aromatic(plan: CouplingPlan) -> bool:
     return "c1" in plan.target.acceptor.smiles
-
-
-POUR = (
-    "Cool the reaction back to 0 °C and pour it INTO the stirred, open quench in portions of "
-    "about a tenth, over 10 to 15 min; never the reverse, never in a closed vessel."
-)
-
-
-def _slurry(writer: Writer, quench: Quench) -> str:
-    """A stoichiometric promoter takes more bicarbonate than dissolves in the cold."""
-    if (writer.by_key["quench_water"].volume_ml or 0.0) >= quench.clear_solution_ml:
-        return ""
-    return f"; it stays a slurry (clear at 0 °C it would take {quench.clear_solution_ml:.0f} mL)"
-
-
-def _make_quench_ready(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
-    """Before the promoter is opened: a spill of it goes there too."""
-    if plan.has_acid:
-        writer.add(
-            "Make the quench ready",
-            f"Put {writer.text('quench_water')} into an open {quench.vessel_ml} mL plastic beaker "
-            "in an ice bath: the product is an acid and would be lost in bicarbonate.",
-            uses=("quench_water",),
-        )
-        return
-    writer.add(
-        "Make the quench ready",
-        f"Stir {writer.text('quench_base')} with {writer.text('quench_water')} in an open "
-        f"{quench.vessel_ml} mL beaker in an ice bath{_slurry(writer, quench)}.",
-        uses=("quench_base", "quench_water"),
-        pause=MAY_STAND,
-    )
-
-
-def _quench(writer: Writer, plan: CouplingPlan, quench: Quench) -> None:
-    if plan.has_acid:
-        writer.add(
-            "Quench",
-            f"{_filtering(writer)} Do this before any water: hydrogen fluoride etches glass.",
-            POUR,
-            uses=("filter_aid", "rinse_solvent"),
-            watch="from here to the neutralised water layers: the water is strongly acid and holds "
-            "hydrogen fluoride; plastic vessels and funnels only, laminate gloves, face shield",
-        )
-        return
-    writer.add(
-        "Quench",
-        POUR,
-        f"Up to {three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
-        "Stir until the gas has stopped and the water layer is at pH 7 or above; if it is not, add "
-        "solid sodium hydrogencarbonate by the spatula.",
-        watch="foam: wait between portions"
-        + ("; the water contains fluoride, never acidify it" if _has_fluoride(plan) else ""),
-    )
-
-
-def _neutralise_water_layers(writer: Writer, quench: Quench) -> None:
-    writer.add(
-        "Neutralise the water layers",
-        f"Stir {writer.text('quench_base')} with {writer.text('neutralising_water')} in an open "
-        f"{quench.vessel_ml} mL plastic beaker and pour the water layers INTO it in portions. Up "
-        f"to {three_figures(quench.carbon_dioxide_l)} L of carbon dioxide leaves.",
-        uses=("quench_base", "neutralising_water"),
-        watch="foam; pH 7 or above at the end",
-    )
-
-
-def _has_fluoride(plan: CouplingPlan) -> bool:
-    return bool(plan.method["promoter"]["gel"])
-
-
-def _extract(writer: Writer, plan: CouplingPlan) -> None:
-    charges = writer.by_key
-    organic_ml = (charges["solvent"].volume_ml or 0) + (
-        charges["extraction_solvent"].volume_ml or 0
-    )
-    largest_ml = organic_ml + max(
-        charges["quench_water"].volume_ml or 0, charges["brine_water"].volume_ml or 0
-    )
-    filtering = "" if plan.has_acid else _filtering(writer)
-    material = "plastic " if plan.has_acid else ""
-    funnel = f"in a {funnel_ml(largest_ml)} mL {material}funnel, venting it often"
-    mixes_with_water = charges["solvent"].substance == "acetonitrile"
-    writer.add(
-        "Extract",
-        filtering,
-        "Evaporate the acetonitrile at 40 °C or below (from 230 mbar on): it mixes with water and "
-        f"would hold the product there. Then work {funnel}."
-        if mixes_with_water
-        else f"Separate the layers {funnel}.",
-        "Extract the water layer three times with a third each of "
-        f"{writer.text('extraction_solvent')}, and wash the combined organic layers once with "
-        f"brine made from {writer.text('brine_salt')} and {writer.text('brine_water')}.",
-        "An emulsion: let it stand, add a little brine, or filter it again."
-        if not plan.has_acid
-        else "Use water and brine only, no base.",
-        "Then wash in three equal portions with "
-        f"{writer.text('azide_water')}, to take out what is left of the azido alcohol."
-        if writer.has("azide_water")
-        else "",
-        uses=(
-            *(() if plan.has_acid else ("filter_aid", "rinse_solvent")),
-            "extraction_solvent",
-            "brine_salt",
-            "brine_water",
-            "azide_water",
-        ),
-        watch="the layers may change places with toluene: test with a drop of water"
-        if charges["solvent"].substance == "toluene"
-        else "dichloromethane is the lower layer",
-    )
-
-
-def _filtering(writer: Writer) -> str:
-    if not writer.has("filter_aid"):
-        return ""
-    return (
-        f"Filter through a pad of {writer.text('filter_aid')} in a sintered funnel and rinse the "
-        f"cake in two portions with {writer.text('rinse_solvent')}."
-    )
-
-
-def _concentrate(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
-    azide = _has_azide(plan)
-    writer.add(
-        "Dry and concentrate",
-        f"Dry the organic layer over {writer.text('drying_agent')} for 15 min, filter, and "
-        "evaporate: bath "
-        + ("30 °C or below, behind the shield." if azide else "40 °C or below.")
-        + " Dichloromethane from 800 mbar on"
-        + (", toluene from 80 mbar on" if writer.by_key["solvent"].substance == "toluene" else "")
-        + "; then 1 h at the oil pump.",
-        "What the condenser and the pump trap hold contains azido alcohol: azide waste."
-        if azide
-        else "",
-        f"Weigh the crude: about {mass_text(round(stage.gross_mass_mg))} "
-        f"({stage.gross_means}); much more means that solvent is left.",
-        uses=("drying_agent",),
-        watch="the crude does not keep in contact with acid; dry and cold it does",
-        pause=DO_NOT_STOP if azide else MAY_STAND,
-    )
-
-
-def _purify(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
-    column = plan.method["purification"]
-    eluents = tuple(key for key in writer.by_key if key.startswith("eluent_"))
-    silica_g = (writer.by_key["silica"].mass_mg or 0.0) / 1000
-    bed_ml = silica_g * float(column["bed_ml_per_g_silica"])
-    height = float(column["bed_height_cm"])
-    diameter_cm = math.sqrt(4 * bed_ml / (math.pi * height))
-    gradient = column["gradient" if eluent_kind(plan.target) == "eluent" else "polar_gradient"]
-    writer.add(
-        "Purify",
-        f"Take {writer.text('silica')}: dry-load the crude on about a twentieth of it, the rest "
-        f"packed to {height:.0f} cm ({bed_ml:.0f} mL) in a column of {diameter_cm:.1f} cm.",
-        f"Elute with {' and '.join(writer.text(key) for key in eluents)}, mixed {gradient} by "
-        f"volume, a third of the whole each; fractions of a tenth of the bed.",
-        "A free acid streaks: put 0.5 % of acetic acid into the eluent." if plan.has_acid else "",
-        alcohol_left_over(plan),
-        " ".join(plan.method["left_over"]),
-        uses=("silica", *eluents),
-        watch="acetate of the alcohol runs in front of the product, donor and hemiacetal behind "
-        "it, the alcohol where a reference shows it; do not leave the product on the silica; pool "
-        "only what shows one spot",
-    )
-
-
-def alcohol_left_over(plan: CouplingPlan) -> str:
-    """What becomes of the excess acceptor, by its size and polarity (common practice)."""
-    target = plan.target
-    if _is_amino_acid(plan):
-        return "The protected amino acid that is left can run with its glycoside: check by LC-MS."
-    if acceptor_carbons(target) <= 4:
-        return "What is left of the alcohol has gone with the water layers."
-    if acceptor_carbons(target) <= 7:
-        return "What is left of the alcohol goes partly with the water, the rest at the oil pump."
-    return (
-        "What is left of the alcohol can run close to the product and does not leave at the oil "
-        "pump: take a reference spot of it; acetylating the crude first would send it to the front."
-    )
-
-
-def _finish(writer: Writer, plan: CouplingPlan, stage: Stage) -> None:
-    writer.add(
-        "Dry, weigh and record",
-        "Evaporate the pure fractions at 30 °C or below behind the shield, dry in vacuum and weigh."
-        if _has_azide(plan)
-        else "Evaporate the pure fractions at 40 °C or below, dry to constant mass in vacuum and "
-        "weigh.",
-        f"Expected: {mass_text(round(stage.expected_mass_mg))} of {stage.product_name} "
-        f"({mass_text(round(stage.expected_low_mg))} to "
-        f"{mass_text(round(stage.expected_high_mg))}). Enter what was really weighed and measured.",
-        "Waste: dichloromethane distillate and rinses to halogenated; heptane and ethyl acetate to "
-        "non-halogenated flammable"
-        + (
-            "; water layers to aqueous fluoride, not acidified; sieves, filter cake and drying "
-            "agent carry fluoride too"
-            if _has_fluoride(plan)
-            else "; water layers to aqueous metal waste"
-        )
-        + "; silica to solid waste once the solvent is off."
-        + (" Azide waste apart, never to acid, copper or lead." if _has_azide(plan) else ""),
-        watch="the waste rules of your house come first",
-        pause=MAY_STAND,
-    )

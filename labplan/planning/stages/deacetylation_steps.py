@@ -1,5 +1,6 @@
 """The removal of the acetates as numbered steps."""
 
+from labplan.planning.evaporation import from_pressures
 from labplan.planning.figures import mass_text
 from labplan.planning.stages.deacetylation import DeacetylationPlan
 from labplan.planning.steps import DO_NOT_STOP, MAY_STAND, UNATTENDED, Writer
@@ -43,8 +44,7 @@ def deacetylation_steps(plan: DeacetylationPlan, stage: Stage) -> tuple[Step, ..
     )
     writer.add(
         "Neutralise",
-        f"If a solid has come out, add {writer.text('water')} until it is clear; otherwise add the "
-        "water all the same before the resin."
+        f"Add {writer.text('water')}: it keeps the product dissolved."
         if writer.has("water")
         else "If a solid has come out, warm to 40 °C until it is clear: a long chain hardly "
         "dissolves in water.",
@@ -56,7 +56,7 @@ def deacetylation_steps(plan: DeacetylationPlan, stage: Stage) -> tuple[Step, ..
     )
     writer.add(
         "Concentrate, weigh and record",
-        f"Evaporate at {_bath(plan)} (methanol from 300 mbar on), "
+        f"Evaporate at {_bath(plan)} ({from_pressures(('methanol',), _bath_c(plan))}), "
         + (
             "take up in water, filter and freeze-dry, or dry to constant mass in vacuum."
             if writer.has("water")
@@ -74,7 +74,10 @@ def deacetylation_steps(plan: DeacetylationPlan, stage: Stage) -> tuple[Step, ..
     return tuple(writer.steps)
 
 
+def _bath_c(plan: DeacetylationPlan) -> int:
+    return 30 if "azide" in plan.target.acceptor_groups else 40
+
+
 def _bath(plan: DeacetylationPlan) -> str:
-    if "azide" in plan.target.acceptor_groups:
-        return "30 °C or below behind a shield, with no metal spatula"
-    return "40 °C or below"
+    how = " behind a shield, with no metal spatula" if _bath_c(plan) < 40 else ""
+    return f"{_bath_c(plan)} °C or below{how}"

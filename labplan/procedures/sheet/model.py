@@ -102,7 +102,11 @@ def _facts(document: dict[str, Any], heading: Heading) -> list[dict[str, str]]:
         ),
         ("InChIKey", document["target"]["inchikey"], "code"),
         ("Document", heading.sha256, "code"),
-        ("Newest seal", heading.seal or "none yet", "code" if heading.seal else ""),
+        (
+            "Book seal (for the stock keeper)",
+            heading.seal or "none yet",
+            "code" if heading.seal else "",
+        ),
     )
     return [{"label": label, "value": value, "style": style} for label, value, style in facts]
 

@@ -4,7 +4,7 @@ import re
 from decimal import Decimal
 from typing import Any
 
-from labplan.planning.figures import mass_text, three_figures, volume_text
+from labplan.planning.figures import mass_text, three_figures, two_figures, volume_text
 from labplan.procedures.sheet.typography import Rich, heading_name, set_formula, set_text
 
 SUPPLY = "supply"
@@ -123,8 +123,8 @@ def _figures(stage: dict[str, Any], charges: dict[str, Any]) -> list[dict[str, A
     if quench:
         text = (
             f"{quench['acid_mmol']} mmol of acid against {quench['bicarbonate_mmol']} mmol of "
-            f"bicarbonate, in an open {quench['vessel_ml']} mL beaker; carbon dioxide to "
-            f"{quench['carbon_dioxide_l']} L."
+            f"bicarbonate, in an open {quench['vessel_ml']} mL beaker; carbon dioxide "
+            f"up to {two_figures(float(quench['carbon_dioxide_l']))} L."
         )
         lines.append(_figure("Quench", text))
     if stage["water"]:
