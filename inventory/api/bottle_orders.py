@@ -153,8 +153,8 @@ def read_decant(data: Any) -> tuple[str, DecantOrder]:
     """Project code (may be empty) and order."""
     values = DecantSerializer(data=data).read()
     errors = RowErrors()
-    read_code(Row(1, {"code": values["code"]}, errors))
-    _refuse(errors)
+    read_code(Row(None, {"code": values["code"]}, errors))
+    errors.refuse()
     tare = values.get("tare_mg")
     return values.get("project", ""), DecantOrder(
         values["code"], one_asked(values), values["place"], values.get("reason", ""),
@@ -181,23 +181,11 @@ def _preparation(values: dict[str, Any]) -> Preparation | None:
         )
     errors = RowErrors()
     texts = {name: str(values.get(name) or "") for name in _PREPARATION_FIELDS}
-    row = Row(1, texts, errors)
+    row = Row(None, texts, errors)
     form, stabiliser = read_form(row, SubstanceFinder()), read_stabiliser(row)
-    _refuse(errors)
+    errors.refuse()
     fields = {n: values[n] for n in ("assay_pct", "density_g_per_ml") if n in values}
     return Preparation(values["preparation"], form, stabiliser, values["water_ppm"], fields)
-
-
-def _refuse(errors: RowErrors) -> None:
-    """What the reader of stock files found, without the row that there is not."""
-    if errors.found:
-        raise InvalidValue(
-            "Correct the fields listed in errors.",
-            errors=tuple(
-                FieldProblem(e.field.removeprefix("row 1, "), e.code, e.detail)
-                for e in errors.found
-            ),
-        )
 
 
 class CountSerializer(StrictSerializer):

@@ -1,4 +1,4 @@
-"""What happens to bottles, over HTTP: facts, decanting, counts, readings, minimum."""
+"""What happens to bottles, over HTTP: receipt, facts, decanting, counts, readings, minimum."""
 
 from functools import partial
 from typing import Any
@@ -8,13 +8,60 @@ from django.urls import reverse
 from rest_framework.response import Response
 
 from inventory import selectors, services
-from inventory.api import bottle_orders, orders, post_schema, schema, shapes
+from inventory.api import bottle_orders, orders, post_schema, receipt_orders, schema, shapes
+from inventory.api.filters import day_of, decimal_of, flag_of
 from inventory.api.writing import write
-from inventory.models import Movement, Reading, Substance
+from inventory.models import Bottle, Movement, Reading, Substance
 from labplan.base.models import Project
+from labplan.base.pagination import ByCodePagination
 from labplan.base.preconditions import require_match
 from labplan.base.rights import Actor, require
 from labplan.base.views import ListView, LookView
+
+
+@schema.bottle_list
+@post_schema.bottle_receive
+class BottleList(ListView):
+    filters = {
+        "substance", "place", "status", "expires_from", "expires_until", "water_ppm_above",
+        "under_minimum", "parent",
+    }  # fmt: skip
+    choices = {"status": Bottle.Status.values, "under_minimum": ("true", "false")}
+    pagination = ByCodePagination
+
+    def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Bottle]:
+        asked = {
+            **wanted,
+            "expires_from": day_of(wanted, "expires_from"),
+            "expires_until": day_of(wanted, "expires_until"),
+            "water_ppm_above": decimal_of(wanted, "water_ppm_above"),
+            "under_minimum": flag_of(wanted, "under_minimum"),
+        }
+        return selectors.list_bottles(actor=request.user, wanted=selectors.BottleFilter(**asked))
+
+    def show(self, row: Bottle) -> dict[str, Any]:
+        return shapes.show_bottle(row)
+
+    def post(self, request: Any) -> Response:
+        check = partial(require, request.user, "stock.receive")
+        check()
+        fields = receipt_orders.read_fields(request.data)
+        return write(
+            request, route="bottle.receive", check_rights=check,
+            render=partial(_new_bottle, request.user),
+            work=lambda claim: services.receive_bottle(
+                actor=request.user, fields=fields,
+                operation_id=services.operation_of(claim), once=claim,
+            ),
+        )  # fmt: skip
+
+
+def _new_bottle(actor: Actor, code: str) -> Response:
+    bottle = selectors.get_bottle(actor=actor, code=code)
+    headers = {
+        "Location": reverse("bottle-detail", args=[code]), "ETag": shapes.bottle_etag(bottle),
+    }  # fmt: skip
+    return Response(shapes.show_bottle(bottle), status=201, headers=headers)
 
 
 @schema.movement_list
@@ -90,20 +137,12 @@ class BottleDecant(LookView):
         check = partial(_project_charged, actor, project_code, "loss")
         return write(
             request, route="bottle.decant", check_rights=check,
-            render=partial(_decanted, actor),
+            render=partial(_new_bottle, actor),
             work=lambda claim: services.decant(
                 actor=actor, bottle_code=code, order=order, project=check(),
                 operation_id=services.operation_of(claim), once=claim,
             ),
         )  # fmt: skip
-
-
-def _decanted(actor: Actor, code: str) -> Response:
-    bottle = selectors.get_bottle(actor=actor, code=code)
-    headers = {
-        "Location": reverse("bottle-detail", args=[code]), "ETag": shapes.bottle_etag(bottle),
-    }  # fmt: skip
-    return Response(shapes.show_bottle(bottle), status=201, headers=headers)
 
 
 @post_schema.reading_list

@@ -3,9 +3,10 @@
 from collections.abc import Sequence
 from typing import Any
 
+from drf_spectacular.extensions import OpenApiSerializerFieldExtension
 from drf_spectacular.utils import OpenApiParameter, extend_schema_view
 
-from inventory.api import bottle_orders, orders
+from inventory.api import bottle_orders, orders, receipt_orders
 from inventory.api.schema import (
     BOTTLE,
     BOTTLE_CODE,
@@ -92,6 +93,17 @@ RESERVATION_USED = component(
     "A reservation after a use.",
     {**RESERVATION_FIELDS, "cancelled_holds": _CANCELLED},
 )
+
+
+class CellSchema(OpenApiSerializerFieldExtension):
+    """A cell of the stock file as what its column holds."""
+
+    target_class = receipt_orders.CellField
+
+    def map_serializer_field(self, auto_schema: Any, direction: str) -> dict[str, Any]:
+        return dict(self.target.schema)
+
+
 BOTTLE_MOVED = with_amounts(
     "BottleMoved",
     "A bottle after what has happened to it.",
@@ -235,6 +247,21 @@ notice_read = extend_schema_view(
         "notice-read", HOLDS_TAG, "Mark a notice as read", 200, NOTICE, "The notice.",
         description="Takes no body, or an empty object.", request=None, example={},
         parameters=[in_path("number", "Its number.", pattern="^[0-9]+$")],
+    )
+)  # fmt: skip
+bottle_receive = extend_schema_view(
+    post=_written(
+        "bottle-receive", TAG, "Receive a bottle", 201, BOTTLE, "The new bottle.",
+        description="By a stock keeper. The fields are the columns of the stock file, read by the "
+        "same rules: the substance is looked up by structure, CAS number or name, and made when "
+        "it is new; the place must be there; what cannot be got out follows from the size.",
+        request=receipt_orders.ReceiptSerializer,
+        example={
+            "code": "DCM-7", "substance": "dichloromethane", "amount": "2.5", "unit": "L",
+            "place": "CAB-A", "received_on": "2026-12-01", "stabiliser": "none",
+            "water_ppm": "18", "water_read_on": "2026-12-01",
+        },
+        parameters=[etag(201), answered("Location", "Address of the new bottle.", 201)],
     )
 )  # fmt: skip
 movement_write = extend_schema_view(

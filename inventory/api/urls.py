@@ -10,7 +10,7 @@ urlpatterns = [
         moving.SubstanceMinimum.as_view(),
         name="substance-minimum",
     ),
-    path("bottles/", views.BottleList.as_view(), name="bottle-list"),
+    path("bottles/", moving.BottleList.as_view(), name="bottle-list"),
     path("bottles/<str:code>/", views.BottleDetail.as_view(), name="bottle-detail"),
     path("bottles/<str:code>/movements/", moving.MovementList.as_view(), name="movement-list"),
     path("bottles/<str:code>/readings/", moving.ReadingList.as_view(), name="reading-list"),

@@ -7,8 +7,8 @@ from rest_framework.response import Response
 
 from inventory import selectors
 from inventory.api import schema, shapes
-from inventory.api.filters import day_of, decimal_of, flag_of
-from inventory.models import Bottle, Place, Substance
+from inventory.api.filters import flag_of
+from inventory.models import Place, Substance
 from labplan.base.pagination import ByCodePagination
 from labplan.base.preconditions import is_known
 from labplan.base.views import ListView, LookView
@@ -36,29 +36,6 @@ class SubstanceDetail(LookView):
         if is_known(request, headers["ETag"]):
             return Response(status=304, headers=headers)
         return Response(shapes.show_substance(found), headers=headers)
-
-
-@schema.bottle_list
-class BottleList(ListView):
-    filters = {
-        "substance", "place", "status", "expires_from", "expires_until", "water_ppm_above",
-        "under_minimum", "parent",
-    }  # fmt: skip
-    choices = {"status": Bottle.Status.values, "under_minimum": ("true", "false")}
-    pagination = ByCodePagination
-
-    def rows(self, request: Any, wanted: dict[str, str], **kwargs: Any) -> QuerySet[Bottle]:
-        asked = {
-            **wanted,
-            "expires_from": day_of(wanted, "expires_from"),
-            "expires_until": day_of(wanted, "expires_until"),
-            "water_ppm_above": decimal_of(wanted, "water_ppm_above"),
-            "under_minimum": flag_of(wanted, "under_minimum"),
-        }
-        return selectors.list_bottles(actor=request.user, wanted=selectors.BottleFilter(**asked))
-
-    def show(self, row: Bottle) -> dict[str, Any]:
-        return shapes.show_bottle(row)
 
 
 @schema.bottle_detail

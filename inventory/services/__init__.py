@@ -34,6 +34,7 @@ from inventory.services.picking import Wanted
 from inventory.services.projects import require_project
 from inventory.services.quotas import QuotaOrder, set_quota
 from inventory.services.receipt import BottleReceipt, receive_bottles
+from inventory.services.receiving import receive_bottle
 from inventory.services.reservations import (
     ReservationLine,
     ReservationOrder,
@@ -74,6 +75,7 @@ __all__ = [
     "mark_notice_read",
     "move_bottle",
     "operation_of",
+    "receive_bottle",
     "receive_bottles",
     "record_reading",
     "release_reservation",

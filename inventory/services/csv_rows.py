@@ -3,12 +3,13 @@
 import csv
 import io
 import re
+from collections.abc import Collection
 from dataclasses import dataclass, field
 from datetime import date
 from decimal import Decimal
 from pathlib import Path
 
-from labplan.base.errors import FieldProblem
+from labplan.base.errors import FieldProblem, InvalidValue
 
 # Python would also take 1_000, digits of other scripts, 20260615 and 2026-W25-1.
 _NUMBER = re.compile(r"[+-]?[0-9]+(\.[0-9]+)?")
@@ -24,17 +25,31 @@ class RowErrors:
     def add(self, where: str, code: str, detail: str) -> None:
         self.found.append(FieldProblem(where, code, detail))
 
+    def refuse(self) -> None:
+        """Raise InvalidValue when anything was found: for a row that came over the API."""
+        if self.found:
+            raise InvalidValue("Correct the fields listed in errors.", errors=tuple(self.found))
+
 
 @dataclass
 class Row:
-    """One line of a file; the readers note an error and return None instead of raising."""
+    """One line of a file; the readers note an error and return None instead of raising.
 
-    number: int
+    `number` is None for a row that stands in no file: then an error names the column alone.
+    """
+
+    number: int | None
     values: dict[str, str]
     errors: RowErrors
 
     def error(self, column: str, code: str, detail: str) -> None:
-        self.errors.add(f"row {self.number}, {column}", code, detail)
+        where = column if self.number is None else f"row {self.number}, {column}"
+        self.errors.add(where, code, detail)
+
+    def need(self, columns: Collection[str]) -> None:
+        for column in sorted(columns):
+            if not self.text(column):
+                self.error(column, "missing", "A value is needed here.")
 
     def text(self, column: str) -> str:
         return self.values.get(column, "")
@@ -86,7 +101,7 @@ class Row:
 
 
 def read_rows(
-    path: Path, columns: tuple[str, ...], *, required: set[str], errors: RowErrors
+    path: Path, columns: tuple[str, ...], *, required: Collection[str], errors: RowErrors
 ) -> list[Row]:
     """Read a file with a header line; unknown columns and missing values are errors."""
     try:
@@ -115,7 +130,11 @@ def read_rows(
 
 
 def _header_is_sound(
-    name: str, header: list[str], columns: tuple[str, ...], required: set[str], errors: RowErrors
+    name: str,
+    header: list[str],
+    columns: tuple[str, ...],
+    required: Collection[str],
+    errors: RowErrors,
 ) -> bool:
     before = len(errors.found)  # another file's errors are no fault of this header
     if len(header) == 1 and ";" in header[0]:
@@ -125,7 +144,7 @@ def _header_is_sound(
         errors.add(
             name, "unknown_column", f"{column!r} is not a column; known: {', '.join(columns)}."
         )
-    for column in sorted(required - set(header)):
+    for column in sorted(set(required) - set(header)):
         errors.add(name, "missing_column", f"The column {column!r} is needed.")
     if len(set(header)) != len(header):
         errors.add(name, "repeated_column", "A column is named twice.")
@@ -133,7 +152,7 @@ def _header_is_sound(
 
 
 def _rows(
-    lines: list[list[str]], header: list[str], required: set[str], errors: RowErrors
+    lines: list[list[str]], header: list[str], required: Collection[str], errors: RowErrors
 ) -> list[Row]:
     rows = []
     for number, line in enumerate(lines, start=2):
@@ -146,8 +165,6 @@ def _rows(
             continue
         values = {column: cell.strip() for column, cell in zip(header, line, strict=True)}
         row = Row(number, values, errors)
-        for column in sorted(required):
-            if not row.text(column):
-                row.error(column, "missing", "A value is needed here.")
+        row.need(required)
         rows.append(row)
     return rows

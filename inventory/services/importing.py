@@ -7,17 +7,17 @@ from pathlib import Path
 from django.db import transaction
 
 from inventory.errors import ImportRefused
-from inventory.models import Bottle, Place
+from inventory.models import Place
 from inventory.services.csv_rows import RowErrors, read_rows
-from inventory.services.receipt import BottleReceipt, receive_bottles
+from inventory.services.receipt import receive_bottles
+from inventory.services.receiving import read_receipts
 from inventory.services.stock_row import (
     PLACE_COLUMNS,
     STOCK_COLUMNS,
+    STOCK_NEEDED,
     read_code,
-    read_receipt,
     temperature_c,
 )
-from inventory.services.substances import SubstanceFinder
 from labplan.base.events import record_event
 from labplan.base.rights import Actor, require
 
@@ -43,7 +43,8 @@ def import_stock(
     errors = RowErrors()
     with transaction.atomic(durable=True):
         places = _import_places(places_file, errors) if places_file else 0
-        receipts = _read_receipts(bottles_file, errors, progress)
+        rows = read_rows(bottles_file, STOCK_COLUMNS, required=STOCK_NEEDED, errors=errors)
+        receipts = read_receipts(rows, progress)
         if errors.found:
             raise ImportRefused(
                 f"{len(errors.found)} error(s) in the file; correct them and import it again. "
@@ -75,28 +76,3 @@ def _import_places(path: Path, errors: RowErrors) -> int:
             _, made = Place.objects.update_or_create(code=code, defaults=values)
             count += made
     return count
-
-
-def _read_receipts(
-    path: Path, errors: RowErrors, progress: Callable[[int, int], None] | None
-) -> list[BottleReceipt]:
-    rows = read_rows(
-        path, STOCK_COLUMNS, errors=errors,
-        required={"code", "substance", "amount", "unit", "place", "received_on"},
-    )  # fmt: skip
-    places = {place.code: place for place in Place.objects.all()}
-    finder = SubstanceFinder()
-    codes = {row.text("code") for row in rows}
-    there = set(Bottle.objects.filter(code__in=codes).values_list("code", flat=True))
-    receipts, seen = [], set()
-    for number, row in enumerate(rows, start=1):
-        code = row.text("code")
-        if code and (code in there or code in seen):
-            row.error("code", "bottle_exists", f"There is a bottle {code} already.")
-        seen.add(code)
-        receipt = read_receipt(row, places, finder)
-        if receipt is not None:
-            receipts.append(receipt)
-        if progress:
-            progress(number, len(rows))
-    return receipts

@@ -1,5 +1,6 @@
 """Take bottles into the stock."""
 
+import uuid
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from datetime import date
@@ -39,10 +40,14 @@ class BottleReceipt:
     readings: tuple[tuple[str, Decimal, date], ...] = ()  # (kind, value, read on)
 
 
-def receive_bottles(receipts: Sequence[BottleReceipt], *, actor: Actor, reason: str) -> int:
+def receive_bottles(
+    receipts: Sequence[BottleReceipt], *, actor: Actor, reason: str,
+    operation_id: uuid.UUID | None = None,
+) -> int:  # fmt: skip
     """Create bottles, their balances and the first line of each book, in the open transaction.
 
-    Raises NotAllowed. The caller has checked that codes are new and values are sound.
+    Raises NotAllowed. The caller has checked that codes are new and values are sound. An operation
+    id that is in the book already raises IntegrityError, as write_lines does.
     """
     locks.require_transaction()
     require(actor, "stock.receive")
@@ -60,7 +65,7 @@ def receive_bottles(receipts: Sequence[BottleReceipt], *, actor: Actor, reason: 
     _write_readings(bottles, receipts, actor)
     write_lines(
         [_receipt_line(b, receipt) for b, receipt in zip(bottles, receipts, strict=True)],
-        actor=actor, project_id=None, reason=reason,
+        actor=actor, project_id=None, reason=reason, operation_id=operation_id,
     )  # fmt: skip
     return len(bottles)
 

@@ -24,6 +24,7 @@ STOCK_COLUMNS = (
     "stabiliser", "stabiliser_amount_pct", "stabiliser_basis",
     "lot", "supplier", "place", "received_on", "opened_on", "expires_on", "status", "note",
 )  # fmt: skip
+STOCK_NEEDED = frozenset({"code", "substance", "amount", "unit", "place", "received_on"})
 # unit -> (how the bottle is measured, base units in one)
 UNITS = {
     "mg": ("mass", 1_000),

@@ -76,6 +76,12 @@ class SubstanceFinder:
         except ValueError:
             row.error("smiles", "smiles_unreadable", "This SMILES cannot be read.")
             return None
+        if not structure.inchikey:
+            row.error(
+                "smiles", "no_inchikey",
+                "No InChIKey can be made of it: it has over 1023 atoms, or a wildcard (*).",
+            )  # fmt: skip
+            return None
         packaged = reference.find_by_inchikey(structure.inchikey)
         same_number = reference.find_by_cas(row.text("cas")) if row.text("cas") else None
         if same_number and same_number.inchikey not in (None, structure.inchikey):

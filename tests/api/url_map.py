@@ -64,7 +64,7 @@ EXPECTED: dict[str, Expected] = {
     "substance-list": Expected("stock"),
     "substance-detail": Expected("stock", ("substance",)),
     "substance-minimum": Expected("stock", ("substance",), ("POST", "OPTIONS"), 403),
-    "bottle-list": Expected("stock"),
+    "bottle-list": Expected("stock", (), (*READS, "POST"), 403),
     "bottle-detail": Expected("stock", ("bottle",)),
     "movement-list": Expected(
         "nothing", ("bottle",), (*READS, "POST"), 403, post_on_the_shelf=True

@@ -9,10 +9,20 @@ from urllib.parse import quote
 
 from django.db import connection, connections, transaction
 
-from inventory.models import Balance, Bottle, Hold, Movement, Place, Reservation, Substance
+from inventory.models import (
+    Balance,
+    Bottle,
+    Form,
+    Hold,
+    Movement,
+    Place,
+    Reading,
+    Reservation,
+    Substance,
+)
 from inventory.services import BottleReceipt, HoldLine, hold_lines, receive_bottles
 from labplan.base import clock
-from labplan.base.models import Membership, Person, Project
+from labplan.base.models import Event, Membership, Person, Project
 from labplan.base.rights import Actor, actor_for
 
 ON_POSTGRESQL = connection.vendor == "postgresql"
@@ -83,6 +93,12 @@ def whole_stock() -> list[Any]:
         list(kind.objects.order_by("pk").values_list())
         for kind in (Balance, Reservation, Hold, Movement)
     ]
+
+
+def received_stock() -> list[Any]:
+    """Everything that a receipt writes, to show that a refusal changed nothing."""
+    kinds = (Substance, Form, Place, Bottle, Balance, Movement, Reading, Event)
+    return [list(kind.objects.order_by("pk").values_list()) for kind in kinds]
 
 
 def run_sql(sql: str, parameters: Sequence[Any] = ()) -> None:

@@ -6,19 +6,18 @@ from collections import Counter
 from datetime import date
 from decimal import Decimal
 from pathlib import Path
-from typing import Any
 
 import pytest
 from django.core.management import CommandError, call_command
 
 from inventory.errors import ImportRefused
-from inventory.models import Balance, Bottle, Form, Movement, Place, Reading, Substance
+from inventory.models import Bottle, Movement, Place, Reading, Substance
 from inventory.services import import_stock
 from inventory.services.importing import ImportResult
 from inventory.services.receipt import heel_of
 from labplan.base.errors import NotAllowed
 from labplan.base.models import Event
-from tests.db.bench import Shelf, codes_of, make_shelf
+from tests.db.bench import Shelf, codes_of, make_shelf, received_stock
 from tests.laboratory import Laboratory
 
 SERVICES = Path(__file__).resolve().parents[2] / "inventory" / "services"
@@ -45,12 +44,6 @@ def _csv(*rows: dict[str, str]) -> str:
     return "\n".join(lines) + "\n"
 
 
-def _stored() -> list[Any]:
-    """Everything an import writes."""
-    kinds = (Substance, Form, Place, Bottle, Balance, Movement, Reading, Event)
-    return [list(kind.objects.order_by("pk").values_list()) for kind in kinds]
-
-
 def _import(shelf: Shelf, folder: Path, content: str | bytes, places: str = "") -> ImportResult:
     bottles_file, places_file = folder / "stock.csv", folder / "places.csv"
     bottles_file.write_bytes(content if isinstance(content, bytes) else content.encode())
@@ -66,10 +59,10 @@ def _refusal(
     shelf: Shelf, folder: Path, content: str | bytes, places: str = ""
 ) -> list[tuple[str, str]]:
     """(where, code) of each error; nothing may have been stored."""
-    before = _stored()
+    before = received_stock()
     with pytest.raises(ImportRefused, match="Nothing was changed") as refused:
         _import(shelf, folder, content, places)
-    assert _stored() == before
+    assert received_stock() == before
     return codes_of(refused.value.errors)
 
 
@@ -232,6 +225,8 @@ ROW_ERRORS: list[tuple[dict[str, str], str, str]] = [
     ({"cas": "108-88-4"}, "cas", "bad_check_digit"),
     ({"cas": "75-09-2"}, "cas", "cas_and_name_differ"),
     ({"smiles": "C1CC"}, "smiles", "smiles_unreadable"),
+    ({"smiles": "C*"}, "smiles", "no_inchikey"),
+    ({"smiles": "C" * 1100}, "smiles", "no_inchikey"),
     ({"smiles": "CCO", "cas": "108-88-3"}, "cas", "cas_and_structure_differ"),
 ]  # fmt: skip
 
@@ -276,11 +271,11 @@ def test_a_file_that_is_not_as_meant_is_refused(
 
 
 def test_a_file_that_is_not_there_is_named(shelf: Shelf, tmp_path: Path) -> None:
-    before = _stored()
+    before = received_stock()
     with pytest.raises(ImportRefused) as refused:
         import_stock(actor=shelf.actor("stock_keeper"), bottles_file=tmp_path / "no.csv")
     assert codes_of(refused.value.errors) == [("no.csv", "unreadable")]
-    assert _stored() == before
+    assert received_stock() == before
 
 
 PLACE_ERRORS = [
@@ -315,7 +310,7 @@ def test_two_lines_without_a_code_are_no_repetition(shelf: Shelf, tmp_path: Path
 def test_every_code_the_import_can_say_is_produced_here() -> None:
     """The codes are read from the sources, so that a new one needs a test."""
     said: set[str] = set()
-    for name in ("csv_rows", "stock_row", "substances", "importing"):
+    for name in ("csv_rows", "stock_row", "substances", "importing", "receiving"):
         text = (SERVICES / f"{name}.py").read_text()
         said |= set(re.findall(r'\.(?:error|add)\(\s*[^,()]+(?:\([^()]*\))?,\s*"(\w+)"', text))
         said |= set(re.findall(r'errors\.add\(\s*f"[^"]*",\s*"(\w+)"', text))
@@ -388,15 +383,15 @@ def test_a_long_file_name_is_cut_not_fatal(shelf: Shelf, tmp_path: Path) -> None
 def test_who_does_not_keep_the_stock_imports_nothing(
     shelf: Shelf, tmp_path: Path, role: str
 ) -> None:
-    path, before = tmp_path / "stock.csv", _stored()
+    path, before = tmp_path / "stock.csv", received_stock()
     path.write_text(_csv(SOUND))
     with pytest.raises(NotAllowed, match="stock_keeper"):
         import_stock(actor=shelf.actor(role), bottles_file=path)
-    assert _stored() == before
+    assert received_stock() == before
 
 
 def test_the_command_tells_each_error_and_fails(shelf: Shelf, tmp_path: Path) -> None:
-    path, before = tmp_path / "stock.csv", _stored()
+    path, before = tmp_path / "stock.csv", received_stock()
     path.write_text(_csv({**SOUND, "amount": "1,5"}))
     with pytest.raises(CommandError) as failed:
         call_command("import_stock", str(path), person="STOCK_KEEPER", stdout=io.StringIO())
@@ -405,7 +400,7 @@ def test_the_command_tells_each_error_and_fails(shelf: Shelf, tmp_path: Path) ->
     )
     with pytest.raises(CommandError, match="no active person 'NOBODY'"):
         call_command("import_stock", str(path), person="NOBODY", stdout=io.StringIO())
-    assert _stored() == before
+    assert received_stock() == before
 
 
 def test_the_command_says_what_came_in(shelf: Shelf, tmp_path: Path) -> None:
