@@ -14,7 +14,7 @@ logger = logging.getLogger(__name__)
 
 # A queue gets this many messages at most that are not done; the others wait in the database, in
 # their order, where they can still be cancelled.
-IN_FLIGHT = 32
+IN_FLIGHT = 64
 Send = Callable[[OutboxMessage], None]
 
 

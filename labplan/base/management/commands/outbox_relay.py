@@ -16,7 +16,7 @@ from labplan.base.tasks import send_to_workers
 
 logger = logging.getLogger(__name__)
 LOOK_EVERY_S = 1.0  # without a nudge
-BACKLOG_PAUSE_S = 0.02  # while more waits than may be on its way
+BACKLOG_PAUSE_S = 0.1  # after something was sent: there may be more than could go out
 LONGEST_REST_S = 5.0  # while the broker or the database is away
 
 
