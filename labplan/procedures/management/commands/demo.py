@@ -111,10 +111,10 @@ def _leave_files(console: Console, client: ApiClient, procedure: dict[str, Any])
 
 
 def _stay(console: Console, address: str, token: str) -> None:
-    console.print(f"\nServing until Ctrl-C. For another terminal:\n  ADDRESS={address}")
-    console.print(f"  TOKEN={token}", soft_wrap=True)
     stop = threading.Event()
     with asked_to_stop_by_signals(stop):
+        console.print(f"\nServing until Ctrl-C. For another terminal:\n  ADDRESS={address}")
+        console.print(f"  TOKEN={token}", soft_wrap=True)
         while not stop.wait(0.2):
             pass
     console.print("Stopped.")
