@@ -13,7 +13,7 @@ from inventory.quantities import Asked, Quantity, in_words, quantity_of
 from inventory.selectors.shelf import latest_readings
 from inventory.services.book import BookLine, write_lines
 from inventory.services.bottles import find_bottle
-from inventory.services.once import write_once
+from inventory.services.once import again_if_overtaken, write_once
 from inventory.services.receipt import heel_of, is_solvent, least_dispensed_of
 from inventory.services.reservations import invalid
 from inventory.services.using import check_day
@@ -86,7 +86,9 @@ def decant(
             raise StateForbids("This operation id belongs to something else; take a new one.")
         return line.bottle.code
 
-    return write_once(body, operation_id=operation_id, once=once, earlier=earlier)
+    return again_if_overtaken(
+        lambda: write_once(body, operation_id=operation_id, once=once, earlier=earlier)
+    )
 
 
 def _checked(parent: Bottle, order: DecantOrder) -> Place:

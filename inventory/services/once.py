@@ -16,6 +16,12 @@ from labplan.base.idempotency import Claim, Once, Unclaimed
 Result = TypeVar("Result")
 # PostgreSQL names the constraint, SQLite the first of its columns.
 _NAMES = ("movement_operation_once", "inventory_movement.operation")
+# What somebody else may have made since we looked. PostgreSQL only: SQLite has one writer.
+_MADE_MEANWHILE = (
+    "inventory_bottle_code", "inventory_substance_code", "inventory_substance_inchikey",
+    "form_once",
+)  # fmt: skip
+_MOST_TRIES = 3
 _NAMESPACE = uuid.UUID("6f9d4c1e-53c8-4a57-9a5b-8b0d5c1f7e42")
 
 
@@ -46,3 +52,14 @@ def write_once(
 def operation_of(claim: Claim[Any]) -> uuid.UUID:
     """The operation id that belongs to an Idempotency-Key: the same key, the same id."""
     return uuid.uuid5(_NAMESPACE, f"{claim.person_id}/{claim.route}/{claim.key}")
+
+
+def again_if_overtaken(write: Callable[[], Result]) -> Result:
+    """Run it anew when somebody made the same bottle, substance or form: then it is found."""
+    for _ in range(_MOST_TRIES - 1):
+        try:
+            return write()
+        except IntegrityError as error:
+            if not any(name in str(error) for name in _MADE_MEANWHILE):
+                raise
+    return write()

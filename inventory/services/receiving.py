@@ -3,11 +3,9 @@
 import uuid
 from collections.abc import Callable, Mapping, Sequence
 
-from django.db import IntegrityError
-
 from inventory.models import Bottle, Movement, Place
 from inventory.services.csv_rows import Row, RowErrors
-from inventory.services.once import write_once
+from inventory.services.once import again_if_overtaken, write_once
 from inventory.services.receipt import BottleReceipt, receive_bottles
 from inventory.services.stock_row import STOCK_NEEDED, read_receipt
 from inventory.services.substances import SubstanceFinder
@@ -15,13 +13,6 @@ from labplan.base.errors import StateForbids
 from labplan.base.events import record_event
 from labplan.base.idempotency import Once
 from labplan.base.rights import Actor, require
-
-# What somebody else may have made since we looked. PostgreSQL only: SQLite has one writer.
-_MADE_MEANWHILE = (
-    "inventory_bottle_code", "inventory_substance_code", "inventory_substance_inchikey",
-    "form_once",
-)  # fmt: skip
-_MOST_TRIES = 3
 
 
 def read_receipts(
@@ -84,15 +75,4 @@ def receive_bottle(
     def write() -> str:
         return write_once(body, operation_id=operation_id, once=once, earlier=earlier)
 
-    return _again_if_overtaken(write)
-
-
-def _again_if_overtaken(write: Callable[[], str]) -> str:
-    """Run it anew when somebody made the same bottle, substance or form: then it is found."""
-    for _ in range(_MOST_TRIES - 1):
-        try:
-            return write()
-        except IntegrityError as error:
-            if not any(name in str(error) for name in _MADE_MEANWHILE):
-                raise
-    return write()
+    return again_if_overtaken(write)

@@ -12,7 +12,7 @@ from inventory.models import Bottle, Movement, Reading
 from inventory.quantities import Asked
 from inventory.services import DecantOrder, Preparation, decant
 from labplan.base.errors import InvalidValue, NotAllowed, NotFound, StateForbids
-from tests.db.bench import whole_stock
+from tests.db.bench import at_once, codes_of, whole_stock
 from tests.laboratory import Laboratory
 
 
@@ -114,3 +114,15 @@ def test_an_operation_fills_one_bottle(lab: Laboratory) -> None:
         )  # fmt: skip
         assert code == "NEW-1"
     assert Movement.objects.filter(kind="decant_out").count() == 1
+
+
+def test_of_many_decants_to_one_new_code_at_once_one_is_made(live_lab: Laboratory) -> None:
+    parent = a_solvent(live_lab)
+    before = parent.balance
+    results = at_once(*[lambda: fill(live_lab, parent.code, "10", code="NEW-7")] * 4)
+    refused = [result for result in results if isinstance(result, InvalidValue)]
+    assert [codes_of(error.errors) for error in refused] == [[("code", "bottle_exists")]] * 3
+    [made] = [result for result in results if isinstance(result, Bottle)]
+    assert (made.code, made.balance.on_hand) == ("NEW-7", 10_000_000)
+    after = live_lab.bottle(parent.code).balance
+    assert (after.on_hand, after.seq) == (before.on_hand - 10_000_000, before.seq + 1)

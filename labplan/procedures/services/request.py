@@ -7,11 +7,12 @@ from decimal import Decimal
 from django.db import transaction
 
 from labplan.base import clock, outbox
-from labplan.base.errors import FieldProblem, InvalidValue, NotAllowed
+from labplan.base.errors import FieldProblem, InvalidValue
 from labplan.base.events import record_event
 from labplan.base.idempotency import Once, Unclaimed
 from labplan.base.models import Project
-from labplan.base.rights import Actor, may, require
+from labplan.base.projects import get_project_for, require_open
+from labplan.base.rights import Actor
 from labplan.chemistry.errors import TargetProblem
 from labplan.procedures import life
 from labplan.procedures.engine import Target, read_target
@@ -43,8 +44,7 @@ def request_procedure(
     NotAllowed; then nothing is stored. Safe to repeat with the same claim.
     """
     project = require_may_request(actor=actor, project_code=order.project_code)
-    if not project.is_open:
-        raise NotAllowed(f"The project {project.code} is closed; nothing is charged to it.")
+    require_open(project)
     read_wanted_target(order.target_smiles)
     claim = once or Unclaimed()
     with transaction.atomic(durable=True):
@@ -68,24 +68,11 @@ def request_procedure(
 
 
 def require_may_request(*, actor: Actor, project_code: str) -> Project:
-    """The project asked for, if the actor may request procedures in it.
+    """The project asked for, if the actor may request procedures in it; raises as the rule does.
 
-    Raises InvalidValue for a project the actor may not see, as for one that is not there, and
-    NotAllowed.
+    A closed one too: what was answered before it was closed is answered again.
     """
-    project = Project.objects.filter(code=project_code).first()
-    if project is None or not may(actor, "project.view", project_id=project.pk):
-        raise InvalidValue(
-            "Correct the fields listed in errors.",
-            errors=(
-                FieldProblem(
-                    "project", "unknown_project",
-                    f"There is no project {project_code!r} that you belong to.",
-                ),
-            ),
-        )  # fmt: skip
-    require(actor, "procedure.request", project_id=project.pk)
-    return project
+    return get_project_for(actor=actor, code=project_code, operation="procedure.request")
 
 
 def read_wanted_target(smiles: str) -> Target:
